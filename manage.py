@@ -1,0 +1,17 @@
+#!/usr/bin/env python
+"""Command line of the oxygen delivery worksheet."""
+
+import os
+import sys
+
+
+def main() -> None:
+    """Run one command."""
+    os.environ.setdefault("DJANGO_SETTINGS_MODULE", "worksheet.settings")
+    from django.core.management import execute_from_command_line
+
+    execute_from_command_line(sys.argv)
+
+
+if __name__ == "__main__":
+    main()

@@ -1,0 +1,1 @@
+"""What people look at: unit review, patient page, entry form, levers."""

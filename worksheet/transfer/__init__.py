@@ -1,0 +1,1 @@
+"""In and out: CSV, XLSX, FHIR R4, HL7 v2; preview first, then one transaction."""

@@ -1,0 +1,10 @@
+"""Django application of this room."""
+
+from django.apps import AppConfig
+
+
+class TransferConfig(AppConfig):
+    """Registers worksheet.transfer."""
+
+    default_auto_field = "django.db.models.BigAutoField"
+    name = "worksheet.transfer"

@@ -1,0 +1,1 @@
+"""What is stored: units, beds, patients, stays, entries, corrections, audit, and who may see what."""

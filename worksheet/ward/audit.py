@@ -1,0 +1,59 @@
+"""Writing the audit trail and walking it: every event carries the hash of the one before."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+from collections.abc import Iterator
+from datetime import UTC, datetime
+from typing import Any
+
+from django.db import transaction
+from django.utils import timezone
+
+from .models import AuditEvent
+
+
+def digest(event: AuditEvent) -> str:
+    """SHA-256 over the event's content and the hash of the event before it."""
+    content = [
+        event.previous_hash,
+        event.at.astimezone(UTC).isoformat(),
+        event.actor,
+        event.unit,
+        event.subject,
+        event.action,
+        event.detail,
+    ]
+    return hashlib.sha256(json.dumps(content, sort_keys=True, ensure_ascii=False).encode()).hexdigest()
+
+
+def write(
+    actor: str, action: str, *, unit: str = "", subject: str = "", at: datetime | None = None, **detail: Any
+) -> AuditEvent:
+    """Append one event to the trail, in the transaction of the thing it tells of."""
+    with transaction.atomic():
+        last = AuditEvent.objects.select_for_update().order_by("-id").first()
+        event = AuditEvent(
+            at=at or timezone.now(),
+            actor=actor,
+            unit=unit,
+            subject=subject,
+            action=action,
+            detail=detail,
+            previous_hash=last.hash if last else "",
+        )
+        event.hash = digest(event)
+        event.save(force_insert=True)
+    return event
+
+
+def broken_places() -> Iterator[tuple[int, str]]:
+    """Places where the chain does not hold: event number and what is wrong."""
+    previous = ""
+    for event in AuditEvent.objects.order_by("id").iterator(chunk_size=2000):
+        if event.previous_hash != previous:
+            yield event.pk, "an event before this one was removed, inserted or changed"
+        elif digest(event) != event.hash:
+            yield event.pk, "this event was changed"
+        previous = event.hash
