@@ -1,0 +1,42 @@
+"""What every test shares: faster hashing, static files without a collected manifest, and honest skipping."""
+
+import os
+import shutil
+
+import pytest
+from django.conf import settings
+
+REQUIRE_ALL = os.environ.get("WORKSHEET_REQUIRE_ALL") == "1"
+
+
+def pytest_configure():
+    """Test settings: nothing here weakens what is tested; account tests set the real hasher themselves."""
+    settings.PASSWORD_HASHERS = ["django.contrib.auth.hashers.MD5PasswordHasher"]
+    settings.STORAGES = {
+        **settings.STORAGES,
+        "staticfiles": {"BACKEND": "django.contrib.staticfiles.storage.StaticFilesStorage"},
+    }
+    settings.WHITENOISE_AUTOREFRESH = True
+    settings.WHITENOISE_USE_FINDERS = True
+
+
+def need(program: str) -> str:
+    """Path of a system program; without it the test is skipped, or fails where everything is required (CI)."""
+    path = shutil.which(program)
+    if path is None:
+        if REQUIRE_ALL:
+            pytest.fail(f"{program} is required here and not installed")
+        pytest.skip(f"{program} is not installed")
+    return path
+
+
+@pytest.fixture(scope="session")
+def chromium() -> str:
+    """Path of Debian's Chromium."""
+    return need("chromium")
+
+
+@pytest.fixture(scope="session")
+def pdftotext() -> str:
+    """Path of poppler's pdftotext."""
+    return need("pdftotext")
