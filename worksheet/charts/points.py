@@ -1,0 +1,123 @@
+"""From the sheet to points in shown units: what was measured, what was carried, and the words for each."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from worksheet.oxygen.quantities import CATALOGUE
+from worksheet.oxygen.readings import Flag, Floats, Ints, Site
+from worksheet.ward.display import Display, age_words
+from worksheet.ward.sheet import Sheet
+
+Z95 = 1.959964  # two-sided 95 % of the normal distribution
+
+_BASIS_WORDS = (
+    (Flag.HB_CARRIED, "Hb carried"),
+    (Flag.FLOW_CARRIED, "flow carried"),
+    (Flag.SATURATION_CALCULATED, "saturation calculated, not measured"),
+    (Flag.SATURATION_FROM_FINGER, "saturation from the finger"),
+    (Flag.CENTRAL_VENOUS, "central venous: an estimate"),
+)
+_CARRIED_BITS = Flag.HB_CARRIED | Flag.FLOW_CARRIED
+
+
+@dataclass(frozen=True)
+class Points:
+    """Points of one quantity, in shown units, in time order."""
+
+    x: tuple[float, ...]
+    y: tuple[float, ...]
+    carried: tuple[bool, ...] = ()
+    notes: tuple[str, ...] = ()
+
+    def __bool__(self) -> bool:
+        return bool(self.x)
+
+
+def floats(values: Floats) -> tuple[float, ...]:
+    """An array as plain numbers."""
+    return tuple(values.tolist())
+
+
+def shown(display: Display, name: str, canonical: Floats) -> Floats:
+    """Values of a quantity in the unit shown."""
+    return display.unit(name).from_canonical(canonical)
+
+
+def spread(display: Display, name: str, canonical: Floats) -> Floats:
+    """Differences or standard uncertainties of a quantity in the unit shown (no offset)."""
+    return np.asarray(canonical, dtype=np.float64) / display.unit(name).factor
+
+
+def arterial(sheet: Sheet, rows: Ints) -> Ints:
+    """The arterial ones among some rows."""
+    chosen: Ints = rows[sheet.readings.site[rows] == Site.ARTERIAL]
+    return chosen
+
+
+def measured(sheet: Sheet, rows: Ints, name: str, display: Display, sites: Sequence[Site] = ()) -> Points:
+    """What was measured: own values only."""
+    keep = rows[np.isfinite(sheet.readings[name][rows])]
+    if sites:
+        keep = keep[np.isin(sheet.readings.site[keep], sites)]
+    return Points(floats(sheet.readings.time[keep]), floats(shown(display, name, sheet.readings[name][keep])))
+
+
+def known(sheet: Sheet, rows: Ints, name: str, display: Display) -> Points:
+    """What was measured at any row, and what arterial rows carry; carried points say from when."""
+    snap = sheet.snapshots
+    own = (snap.source[name][rows] == rows) & (sheet.readings.site[rows] != Site.VENOUS)
+    carried = ~own & np.isfinite(snap[name][rows]) & snap.arterial[rows]
+    keep, is_carried = rows[own | carried], carried[own | carried]
+    notes = tuple(_carried_words(age) if was else "" for age, was in zip(snap.age[name][keep], is_carried, strict=True))
+    values = floats(shown(display, name, snap[name][keep]))
+    return Points(floats(sheet.readings.time[keep]), values, tuple(is_carried.tolist()), notes)
+
+
+def _carried_words(age: float) -> str:
+    return f"carried {age_words(age)}" if age > 0 else f"read {age_words(age)} later"
+
+
+def derived(sheet: Sheet, rows: Ints, name: str, display: Display) -> Points:
+    """A derived quantity of arterial rows; points resting on a carried value are marked and say on what."""
+    keep = arterial(sheet, rows)
+    keep = keep[np.isfinite(sheet.derived[name][keep])]
+    flags = sheet.derived.flags[keep]
+    return Points(
+        floats(sheet.readings.time[keep]),
+        floats(shown(display, name, sheet.derived[name][keep])),
+        carried(flags),
+        tuple(basis_words(int(bits)) for bits in flags),
+    )
+
+
+def basis_words(bits: int) -> str:
+    """On what a derived number rests, in words."""
+    return ", ".join(words for bit, words in _BASIS_WORDS if bits & bit)
+
+
+def supply_name(sheet: Sheet, rows: Ints) -> str:
+    """The fullest measure of supply these rows have: DO2I, else DO2, else CaO2."""
+    keep = arterial(sheet, rows)
+    for name in ("do2i", "do2"):
+        if np.isfinite(sheet.derived[name][keep]).any():
+            return name
+    return "cao2"
+
+
+def flow_name(sheet: Sheet, rows: Ints) -> str:
+    """Cardiac index if these rows have it, else cardiac output."""
+    return "cardiac_index" if np.isfinite(sheet.snapshots["cardiac_index"][rows]).any() else "cardiac_output"
+
+
+def label(name: str) -> str:
+    """Symbol of a quantity."""
+    return CATALOGUE[name].symbol
+
+
+def carried(flags: Ints) -> tuple[bool, ...]:
+    """Whether rows with these flags rest on a carried haemoglobin or flow."""
+    return tuple((flags & _CARRIED_BITS != 0).tolist())
