@@ -336,7 +336,7 @@ def displacement_from_pair(
     both = so2 + (1.0 - so2) * share
     total = po2 * both / (so2 * (1.0 - share))
     odds = np.log(both / ((1.0 - so2) * (1.0 - share)))
-    a, residual = _displacement_root(_abscissa(total, np.float64(0.0), temperature), odds)
+    a, residual = _displacement_root(_abscissa(total, np.asarray(0.0), temperature), odds)
     return keep(valid & _in_range(a) & (np.abs(residual) < 1e-9), a)
 
 
@@ -357,7 +357,7 @@ def p50_of_displacement(a: ArrayLike, temperature: ArrayLike = 37.0) -> Floats:
         P50 [mmHg], NaN where any input is NaN or the displacement outside -2.5 to 2.5.
     """
     a, temperature = floats(a, temperature)
-    x = _abscissa_of_odds(np.float64(0.0), a)
+    x = _abscissa_of_odds(np.asarray(0.0), a)
     return keep(_in_range(a), _P0 * np.exp(x + a + _PER_KELVIN * (temperature - 37.0)))
 
 
@@ -608,13 +608,13 @@ def _log(value: Floats) -> Floats:
 
 @quiet
 def _abscissa(po2: Floats, a: Floats, temperature: Floats) -> Floats:
-    """x of the tanh model: ln(PO2 / 7 kPa) less displacement and temperature."""
+    """The x of the tanh model: ln(PO2 / 7 kPa) less displacement and temperature."""
     return np.asarray(np.log(po2 / _P0) - a - _PER_KELVIN * (temperature - 37.0))
 
 
 @quiet
 def _odds(x: Floats, a: Floats) -> Floats:
-    """y of the tanh model: ln(S / (1 - S))."""
+    """The y of the tanh model: ln(S / (1 - S))."""
     return np.asarray(_Y0 + x + (_H0 + a) * np.tanh(_K * x))
 
 
@@ -624,7 +624,7 @@ def _expit(odds: Floats) -> Floats:
 
 
 def _abscissa_of_odds(odds: Floats, a: Floats) -> Floats:
-    """x of the tanh model for ln(S / (1 - S)), by Newton: the slope is at least 1 and the start close."""
+    """The x of the tanh model for ln(S / (1 - S)), by Newton: the slope is at least 1 and the start close."""
     height = _H0 + a
     rest = odds - _Y0
     x = np.clip(rest / (1.0 + _K * height), rest - height, rest + height)
