@@ -112,10 +112,10 @@ def _state(story: Story, hours_ago: float) -> dict[str, float]:
 
 def _times(rng: np.random.Generator, story: Story, every: float) -> list[float]:
     """Irregular sampling times [h before now], newest last."""
-    count = int((story.admitted - story.last) / every)
+    count = int((story.admitted - story.last) / every - 0.5)
     regular = story.last + every * np.arange(count, -1, -1)
     shaken = regular + np.append(rng.uniform(-0.25, 0.25, count) * every, 0.0)
-    return [float(t) for t in shaken if t < story.admitted]
+    return [story.admitted - 0.2, *(float(t) for t in shaken)]
 
 
 def _noisy(rng: np.random.Generator, name: str, value: float) -> float:
