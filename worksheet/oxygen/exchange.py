@@ -1,4 +1,6 @@
-"""Gas exchange of the lung: the alveolar gas equation, gradients and ratios, shunt, bands, altitude.
+"""Gas exchange of the lung: the alveolar gas equation, gradients and ratios, shunt and indices.
+
+Altitude and bands are in their own modules and offered here too.
 
 References
 ----------
@@ -16,31 +18,52 @@ References
    1942;4 Suppl 11:1-92.
 .. [8] Roca O et al. Predicting success of high-flow nasal cannula in pneumonia patients with hypoxemic respiratory
    failure: the utility of the ROX index. J Crit Care 2016;35:200-205.
-.. [9] West JB. Prediction of barometric pressures at high altitudes with the use of model atmospheres. J Appl Physiol
-   1996;81:1850-1854. https://doi.org/10.1152/jappl.1996.81.4.1850
-.. [10] Manual of the ICAO standard atmosphere, Doc 7488; ISO 2533:1975.
-.. [11] Buck AL. New equations for computing vapor pressure and enhancement factor. J Appl Meteorol 1981;20:1527-1532;
-   constants as revised 1996.
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from enum import IntEnum
-from types import MappingProxyType
-
 import numpy as np
-from numpy.typing import ArrayLike, NDArray
+from numpy.typing import ArrayLike
 
+from .altitude import (
+    SEA_LEVEL,
+    barometric_pressure_icao,
+    barometric_pressure_west,
+    estimated_fio2_low_flow,
+    water_vapour_pressure,
+)
+from .bands import BAND_WORDS, Band, pf_band, pf_band_global
 from .constants import Constants
 from .content import functional_to_fractional, oxygen_content
 from .curve import saturation
 from .domain import Floats, floats, keep, quiet
-from .quantities import MMHG_PER_KPA
-from .readings import Device
+
+__all__ = [
+    "BAND_WORDS",
+    "SPO2_LIMIT",
+    "Band",
+    "a_a_ratio",
+    "aa_gradient",
+    "alveolar_po2",
+    "alveolar_po2_short",
+    "barometric_pressure_icao",
+    "barometric_pressure_west",
+    "end_capillary_content",
+    "estimated_fio2_low_flow",
+    "expected_aa_gradient",
+    "oxygenation_index",
+    "pf_altitude_corrected",
+    "pf_band",
+    "pf_band_global",
+    "pf_ratio",
+    "rice_sf",
+    "rox_index",
+    "sf_ratio",
+    "shunt_fraction",
+    "water_vapour_pressure",
+]
 
 SPO2_LIMIT = 0.97  # S/F is not reported above: the curve is flat there [5, 6]
-SEA_LEVEL = 760.0
 
 
 @quiet
@@ -182,7 +205,7 @@ def pf_altitude_corrected(pf: ArrayLike, barometric_pressure: ArrayLike) -> Floa
     pf : array_like
         PaO2/FiO2 [mmHg].
     barometric_pressure : array_like
-        Station pressure [mmHg]; 1000 m is where it falls below that of [9]_ at 1000 m, 678 mmHg.
+        Station pressure [mmHg]; 1000 m is where it falls below the one of West 1996 at 1000 m, 678 mmHg.
 
     Returns
     -------
@@ -231,94 +254,6 @@ def rice_sf(pf: ArrayLike) -> Floats:
     """
     (pf,) = floats(pf)
     return keep(pf >= 0.0, 64.0 + 0.84 * pf)
-
-
-class Band(IntEnum):
-    """Bands of oxygenation. They name a range of a ratio under stated conditions, never a diagnosis."""
-
-    NOT_REPORTED = 0
-    ABOVE = 1
-    MILD = 2
-    MODERATE = 3
-    SEVERE = 4
-    NOT_INTUBATED = 5
-
-
-BAND_WORDS: Mapping[int, str] = MappingProxyType(
-    {
-        Band.NOT_REPORTED: "no band: a ratio or its condition is missing or not met",
-        Band.ABOVE: "P/F above 300",
-        Band.MILD: "P/F above 200, up to 300",
-        Band.MODERATE: "P/F above 100, up to 200",
-        Band.SEVERE: "P/F up to 100",
-        Band.NOT_INTUBATED: "P/F up to 300 or S/F up to 315, not intubated",
-    }
-)
-PEEP_LEAST = 5.0  # [4]
-HIGH_FLOW_LEAST = 30.0  # [5]
-
-
-@quiet
-def pf_band(pf: ArrayLike, peep: ArrayLike) -> NDArray[np.int8]:
-    """Band of the Berlin definition [4]_, at a PEEP or CPAP of at least 5 cmH2O.
-
-    Parameters
-    ----------
-    pf : array_like
-        PaO2/FiO2, corrected for altitude [mmHg].
-    peep : array_like
-        PEEP or CPAP [cmH2O].
-
-    Returns
-    -------
-    ndarray of int8
-        Codes of :class:`Band`; ``NOT_REPORTED`` where the ratio or the PEEP is missing or PEEP below 5 [code].
-    """
-    pf, peep = floats(pf, peep)
-    band = _band_of(pf, 300.0, 200.0, 100.0)
-    return np.where(peep >= PEEP_LEAST, band, Band.NOT_REPORTED).astype(np.int8)
-
-
-@quiet
-def pf_band_global(
-    pf: ArrayLike, sf: ArrayLike, peep: ArrayLike, device: ArrayLike, oxygen_flow: ArrayLike
-) -> NDArray[np.int8]:
-    """Band of the global definition of 2023 [5]_: P/F, else S/F at SpO2 up to 97 %.
-
-    Intubated: PEEP at least 5; S/F 315, 235 and 148 stand beside P/F 300, 200 and 100. Not intubated: non-invasive
-    pressure of at least 5 cmH2O or high flow of at least 30 L/min, one band.
-
-    Parameters
-    ----------
-    pf : array_like
-        PaO2/FiO2, corrected for altitude [mmHg].
-    sf : array_like
-        SpO2/FiO2, NaN where SpO2 is above 0.97, as :func:`sf_ratio` gives it [1].
-    peep : array_like
-        PEEP or CPAP [cmH2O].
-    device : array_like of int
-        Codes of :class:`~worksheet.oxygen.readings.Device` [code].
-    oxygen_flow : array_like
-        Flow of the device [L/min].
-
-    Returns
-    -------
-    ndarray of int8
-        Codes of :class:`Band`; ``NOT_REPORTED`` where a ratio or condition is missing or not met [code].
-    """
-    pf, sf, peep, oxygen_flow = floats(pf, sf, peep, oxygen_flow)
-    device = np.asarray(device)
-    band = np.where(np.isnan(pf), _band_of(sf, 315.0, 235.0, 148.0), _band_of(pf, 300.0, 200.0, 100.0))
-    intubated = (device == Device.VENTILATOR) & (peep >= PEEP_LEAST)
-    pressure = (device == Device.NONINVASIVE) & (peep >= PEEP_LEAST)
-    flow = (device == Device.HIGH_FLOW) & (oxygen_flow >= HIGH_FLOW_LEAST)
-    one = np.where(band > Band.ABOVE, Band.NOT_INTUBATED, band)
-    return np.where(intubated, band, np.where(pressure | flow, one, Band.NOT_REPORTED)).astype(np.int8)
-
-
-def _band_of(ratio: Floats, mild: float, moderate: float, severe: float) -> NDArray[np.int_]:
-    steps = Band.ABOVE + (ratio <= mild).astype(int) + (ratio <= moderate) + (ratio <= severe)
-    return np.where(ratio >= 0.0, steps, Band.NOT_REPORTED)
 
 
 @quiet
@@ -423,80 +358,3 @@ def rox_index(spo2: ArrayLike, fio2: ArrayLike, respiratory_rate: ArrayLike) -> 
     spo2, fio2, rate = floats(spo2, fio2, respiratory_rate)
     valid = (spo2 >= 0.0) & (spo2 <= 1.0) & (fio2 > 0.0) & (fio2 <= 1.0) & (rate > 0.0)
     return keep(valid, 100.0 * spo2 / fio2 / rate)
-
-
-@quiet
-def barometric_pressure_west(altitude: ArrayLike) -> Floats:
-    """Barometric pressure from altitude, West 1996 [9]_: exp(6.63268 - 0.1112 h - 0.00149 h²), h in km.
-
-    Parameters
-    ----------
-    altitude : array_like
-        Altitude above sea level [m].
-
-    Returns
-    -------
-    ndarray
-        Barometric pressure [mmHg], NaN where altitude is NaN or outside -500 to 9000 m.
-    """
-    (altitude,) = floats(altitude)
-    h = altitude / 1000.0
-    return keep((altitude >= -500.0) & (altitude <= 9000.0), np.exp(6.63268 - 0.1112 * h - 0.00149 * h * h))
-
-
-@quiet
-def barometric_pressure_icao(altitude: ArrayLike) -> Floats:
-    """Barometric pressure of the standard atmosphere [10]_: 760 (1 - 2.25577e-5 h)^5.25588.
-
-    Parameters
-    ----------
-    altitude : array_like
-        Altitude above sea level [m].
-
-    Returns
-    -------
-    ndarray
-        Barometric pressure [mmHg], NaN where altitude is NaN or outside -500 to 11000 m.
-    """
-    (altitude,) = floats(altitude)
-    valid = (altitude >= -500.0) & (altitude <= 11000.0)
-    return keep(valid, SEA_LEVEL * np.power(1.0 - 2.25577e-5 * altitude, 5.25588))
-
-
-@quiet
-def water_vapour_pressure(temperature: ArrayLike) -> Floats:
-    """Saturated water vapour pressure, Buck [11]_: 6.1121 exp((18.678 - T/234.5) T/(257.14 + T)) hPa.
-
-    Parameters
-    ----------
-    temperature : array_like
-        Temperature [°C].
-
-    Returns
-    -------
-    ndarray
-        Vapour pressure [mmHg], NaN where temperature is NaN or outside 0 to 100 °C.
-    """
-    (t,) = floats(temperature)
-    hpa = 6.1121 * np.exp((18.678 - t / 234.5) * t / (257.14 + t))
-    return keep((t >= 0.0) & (t <= 100.0), hpa * MMHG_PER_KPA / 10.0)
-
-
-@quiet
-def estimated_fio2_low_flow(oxygen_flow: ArrayLike) -> Floats:
-    """FiO2 by nasal cannula, an estimate: 20 % + 4 % per L/min, to 6 L/min (common practice).
-
-    The true value depends on breathing pattern; give it a standard uncertainty of at least 5 points and mark it.
-
-    Parameters
-    ----------
-    oxygen_flow : array_like
-        Oxygen flow [L/min].
-
-    Returns
-    -------
-    ndarray
-        Estimated FiO2 [0-1], at least that of air; NaN where flow is NaN or outside 0 to 6 L/min.
-    """
-    (flow,) = floats(oxygen_flow)
-    return keep((flow >= 0.0) & (flow <= 6.0), np.maximum(0.20 + 0.04 * flow, 0.21))
