@@ -86,6 +86,7 @@
     const { data, layout } = inTheme(figure);
     Plotly.newPlot(box, data, { ...layout, transition: { duration: calm.matches ? 0 : 150 } }, figure.config);
     if (figure.clock) box.on("plotly_relayout", (change) => retick(box, figure, change));
+    box.querySelectorAll("svg.main-svg").forEach((svg) => svg.setAttribute("aria-hidden", "true")); // alt and table say it
     box.dataset.drawn = "yes";
   }
 

@@ -15,7 +15,8 @@ from .description import Axis, Chart, Series, Style
 from .scales import TimeScale, WallClock, value_axis
 from .steps import RESIDUAL, STEPS, Step
 
-HEIGHT = 380
+HEIGHT = 480
+_NONE = "Two arterial gases with haemoglobin are needed for a ledger"
 MOST_BARS = 32  # more intervals are added up in groups: the ledger is additive, so nothing is lost
 
 
@@ -38,23 +39,52 @@ class Changes:
 
 
 def change_ledger(changes: Changes, display: Display, scale: TimeScale | None = None) -> Chart:
-    """Stacked contributions for each interval, a mark at each total, and the sum of the window at the right."""
+    """Stacked contributions of each interval, and below them their running sum: its last bar is the window."""
     scale = scale or WallClock(display)
     grouped = _grouped(changes)
-    columns = _columns(grouped, display)
     n = len(grouped)
-    places = np.append(np.arange(n, dtype=np.float64), n + 0.5) if n else np.zeros(0)
-    series, low, high = _stacked(columns, places, display, grouped.quantity)
-    y_axis = value_axis("change", f"Change of {display.heading(grouped.quantity)}", [low, high, 0.0], display,
-                        decimals=display.decimals(grouped.quantity), most=6,
-                        empty="Two arterial gases with haemoglobin are needed for a ledger")  # fmt: skip
-    words = tuple(zip(places.tolist(), _interval_words(grouped, scale), strict=True))
-    x_axis = Axis("interval", "Interval ending", -0.7, n + 1.1 if n else 1.0, _ticks(grouped, scale, places))
-    total = columns["total"][-1] if n else np.nan
-    return Chart(
-        "ledger", "Change ledger", _alt(changes, n, display), _summary(columns, total, display, grouped.quantity),
-        x_axis, (y_axis,), series, height=HEIGHT, decimal_comma=display.decimal_comma, x_words=words,
+    columns = _columns(grouped, display)
+    running = {name: np.nancumsum(values) for name, values in columns.items()}
+    places = np.arange(n, dtype=np.float64)
+    panels = [_panel(key, got, places, display) for key, got in (("interval", columns), ("window", running))]
+    unit = display.unit(grouped.quantity).label
+    titles = {"interval": f"By interval ({unit})", "window": f"Since the start ({unit})"}
+    axes = tuple(
+        value_axis(key, titles[key], [low, high, 0.0], display, decimals=display.decimals(grouped.quantity),
+                   domain=domain, empty="" if key == "window" else _NONE)
+        for (key, _, low, high), domain in zip(panels, ((0.53, 1.0), (0.0, 0.47)), strict=True)
     )  # fmt: skip
+    words = tuple(zip(places.tolist(), _interval_words(grouped, scale), strict=True))
+    x_axis = Axis("end", "Interval ending", -0.7, max(n - 0.3, 1.0), _ticks(grouped, scale, places))
+    symbol = display.quantity(grouped.quantity).symbol
+    return Chart(
+        "ledger", f"Change ledger of {symbol}", _alt(changes, n, symbol), _summary(running, display, grouped.quantity),
+        x_axis, axes, tuple(s for _, series, _, _ in panels for s in series), height=HEIGHT,
+        decimal_comma=display.decimal_comma, x_words=words,
+    )  # fmt: skip
+
+
+def _panel(
+    key: str, columns: Mapping[str, Floats], places: Floats, display: Display
+) -> tuple[str, tuple[Series, ...], float, float]:
+    """Bars upward from zero for gains and downward for losses, in the order of the steps; a mark at the total."""
+    if not len(places):
+        return key, (), 0.0, 0.0
+    up, down = np.zeros(len(places)), np.zeros(len(places))
+    series = []
+    for step in (*STEPS, RESIDUAL):
+        values = np.nan_to_num(columns[step.name])
+        base = np.where(values >= 0, up, down)
+        up, down = up + np.maximum(values, 0), down + np.minimum(values, 0)
+        series.append(_bar(step, key, columns[step.name], base, places))
+    total = Series("points", "total", key, points.floats(places), points.floats(columns["total"]),
+                   Style("ink", marker="diamond"), legend=key == "interval")  # fmt: skip
+    return key, (*series, total), float(down.min()), float(up.max())
+
+
+def _bar(step: Step, key: str, values: Floats, base: Floats, places: Floats) -> Series:
+    return Series("bar", step.word, key, points.floats(places), points.floats(values), step.style,
+                  points.floats(base), legend=key == "interval")  # fmt: skip
 
 
 def _grouped(changes: Changes) -> Changes:
@@ -70,69 +100,40 @@ def _grouped(changes: Changes) -> Changes:
 
 
 def _columns(changes: Changes, display: Display) -> dict[str, Floats]:
-    """Each drawn thing by interval, with the sum over the window appended, in shown units."""
+    """Each drawn thing by interval, in shown units; the residual stands beside function, not in it."""
     parts = {name: np.asarray(values) for name, values in changes.steps.items()}
     total = np.sum(list(parts.values()), axis=0)
     parts["function"] = parts["function"] - changes.residual
     parts |= {"residual": changes.residual, "total": total}
-    return {name: points.spread(display, changes.quantity, np.append(v, np.nansum(v))) for name, v in parts.items()}
-
-
-def _stacked(
-    columns: Mapping[str, Floats], places: Floats, display: Display, quantity: str
-) -> tuple[tuple[Series, ...], float, float]:
-    """Bars upward from zero for gains and downward for losses, in the order of the steps."""
-    if not len(places):
-        return (), 0.0, 0.0
-    up, down = np.zeros(len(places)), np.zeros(len(places))
-    series = []
-    for step in (*STEPS, RESIDUAL):
-        values = np.nan_to_num(columns[step.name])
-        base = np.where(values >= 0, up, down)
-        up, down = up + np.maximum(values, 0), down + np.minimum(values, 0)
-        series.append(_bar(step, columns[step.name], base, places))
-    total = Series("points", "total", "change", points.floats(places), points.floats(columns["total"]),
-                   Style("ink", marker="diamond"))  # fmt: skip
-    return (*series, total), float(down.min()), float(up.max())
-
-
-def _bar(step: Step, values: Floats, base: Floats, places: Floats) -> Series:
-    return Series("bar", step.word, "change", points.floats(places), points.floats(values), step.style,
-                  points.floats(base))  # fmt: skip
+    return {name: points.spread(display, changes.quantity, values) for name, values in parts.items()}
 
 
 def _ticks(changes: Changes, scale: TimeScale, places: Floats) -> tuple[tuple[float, str], ...]:
-    n = len(changes)
-    if not n:
-        return ()
-    every = max(1, -(-n // 8))
-    marked = range((n - 1) % every, n, every)
-    return (*((float(places[i]), scale.brief(float(changes.end[i]))) for i in marked), (float(places[-1]), "Window"))
+    every = max(1, -(-len(changes) // 7))
+    marked = range((len(changes) - 1) % every, len(changes), every) if len(changes) else ()
+    return tuple((float(places[i]), scale.brief(float(changes.end[i]))) for i in marked)
 
 
 def _interval_words(changes: Changes, scale: TimeScale) -> Iterator[str]:
     for start, end in zip(changes.start, changes.end, strict=True):
         yield f"{scale.text(float(start))} to {scale.text(float(end))}"
-    if len(changes):
-        yield f"window, {scale.text(float(changes.start[0]))} to {scale.text(float(changes.end[-1]))}"
 
 
-def _alt(changes: Changes, bars: int, display: Display) -> str:
+def _alt(changes: Changes, bars: int, symbol: str) -> str:
     if not bars:
-        return "No ledger: two arterial gases with haemoglobin are needed."
-    many = "" if bars == len(changes) else f", {len(changes)} intervals added up in {bars} groups"
+        return f"No ledger: {_NONE[0].lower()}{_NONE[1:]}."
+    many = "" if bars == len(changes) else f" ({len(changes)} intervals added up in {bars} groups)"
     return (
-        f"Stacked bars by interval{many}: what lung, haemoglobin, function and flow added to or took from "
-        f"{display.quantity(changes.quantity).symbol}, with the sum of the window at the right."
+        f"Stacked bars by interval{many}: what lung, haemoglobin, function and flow added to or took from {symbol}; "
+        "below, the same summed from the start, so that the last bar is the window."
     )
 
 
-def _summary(columns: Mapping[str, Floats], total: float, display: Display, quantity: str) -> str:
-    if not np.isfinite(total):
-        return "Two arterial gases with haemoglobin are needed for a ledger."
+def _summary(running: Mapping[str, Floats], display: Display, quantity: str) -> str:
+    if not len(running["total"]):
+        return f"{_NONE}."
     decimals, unit = display.decimals(quantity), display.unit(quantity).label
-    parts = ", ".join(
-        f"{step.word} {display.number(float(columns[step.name][-1]), decimals, signed=True)}"
-        for step in (*STEPS, RESIDUAL)
-    )
-    return f"Window total {display.number(float(total), decimals, signed=True)} {unit}: {parts}."
+    steps = (*STEPS, RESIDUAL)
+    parts = ", ".join(f"{s.word} {display.number(float(running[s.name][-1]), decimals, signed=True)}" for s in steps)
+    total = display.number(float(running["total"][-1]), decimals, signed=True)
+    return f"Window total {total} {unit}: {parts}."

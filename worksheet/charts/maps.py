@@ -16,7 +16,7 @@ from .description import Axis, Chart, Contour, Series, Style
 from .scales import TimeScale, WallClock, round_step, value_axis
 
 HEIGHT = 380
-MOST_NUMBERS = 9  # numbered points on a path; the first and the last always
+MOST_NUMBERS = 7  # numbered points on a path; the first and the last always
 
 
 def content_map(sheet: Sheet, stay: Stay, rows: Ints, display: Display, scale: TimeScale | None = None) -> Chart:
@@ -80,7 +80,7 @@ def _map(
     scale = scale or WallClock(display)
     times = sheet.readings.time[rows]
     value = [display.value(held, float(v), with_unit=True) for v in sheet.derived[held][rows]]
-    basis = [points.basis_words(int(bits)) for bits in sheet.derived.flags[rows]]
+    basis = [points.basis_words(held, int(bits)) for bits in sheet.derived.flags[rows]]
     notes = tuple(
         "; ".join(filter(None, (f"{n + 1}", scale.text(float(t)), f"{points.label(held)} {v}", b)))
         for n, (t, v, b) in enumerate(zip(times, value, basis, strict=True))
@@ -90,7 +90,7 @@ def _map(
     if len(rows):
         series = (
             Series("line", "Samples in time order", y_axis.key, points.floats(x), points.floats(y),
-                   Style("ink", "solid", "circle", width=1.4), carried=points.carried(flags), notes=notes,
+                   Style("ink", "solid", "circle", width=1.4), carried=points.carried(held, flags), notes=notes,
                    marks=path_marks(len(rows))),
         )  # fmt: skip
     summary = f"From {notes[0]} to {notes[-1]}." if len(notes) > 1 else (notes[0] if notes else y_axis.empty)

@@ -11,6 +11,7 @@ from .steps import colour, recolouring
 from .table import number
 
 _FONT = "system-ui, -apple-system, 'Segoe UI', sans-serif"
+_X_DIGITS = 5  # of a position or an hour; the readout finds its words by this text
 _SYMBOL = {"circle": "circle", "square": "square", "diamond": "diamond", "triangle": "triangle-up", "cross": "x"}
 CONFIG = {
     "displaylogo": False,
@@ -58,21 +59,20 @@ def _traces(chart: Chart, series: Series, place: str, theme: str) -> list[dict[s
 
 
 def _base(chart: Chart, series: Series, place: str) -> dict[str, Any]:
-    words = dict(chart.x_words)
     return {
         "name": series.name,
         "x": _times(series.x),
         "yaxis": place,
         "xaxis": "x",
         "showlegend": series.legend,
-        "customdata": [[words.get(x, ""), series.note(i)] for i, x in enumerate(series.x)],
-    }
+        "customdata": [[series.note(i)] for i in range(len(series.x))],
+    } | ({"legend": place.replace("y", "legend")} if _by_panel(chart) else {})
 
 
 def _hover(chart: Chart, series: Series, value: str = "y") -> str:
     decimals = chart.axis(series.axis).decimals
-    said = f"{series.name} <b>%{{{value}:.{decimals}f}}</b>"
-    return f"{said} %{{customdata[1]}}<extra></extra>"
+    said = f"{series.name} %{{{value}:.{decimals}f}}"
+    return f"{said} %{{customdata[0]}}<extra></extra>"
 
 
 def _line(chart: Chart, series: Series, place: str, theme: str) -> list[dict[str, Any]]:
@@ -87,7 +87,7 @@ def _line(chart: Chart, series: Series, place: str, theme: str) -> list[dict[str
     }
     if not series.tabled:
         trace["hoverinfo"] = "skip"
-        del trace["hovertemplate"], trace["customdata"]
+        del trace["hovertemplate"]
     if series.kind != "points":
         shape = "hv" if series.kind == "steps" else "linear"
         trace["line"] = {"color": stroke, "width": style.width, "dash": style.dash, "shape": shape}
@@ -113,9 +113,9 @@ def _marker(series: Series, theme: str) -> dict[str, Any]:
 def _band(chart: Chart, series: Series, place: str, theme: str) -> list[dict[str, Any]]:
     """Two edges; the upper one fills down to the lower. Gaps in either end the band."""
     edge = {"color": colour(series.style.role, theme), "width": 0.5}
-    lower = {
-        "type": "scatter", "mode": "lines", "x": _times(series.x), "y": _numbers(series.low), "xaxis": "x",
-        "yaxis": place, "line": edge, "hoverinfo": "skip", "showlegend": False, "name": f"{series.name}, lower edge",
+    lower = _base(chart, series, place) | {
+        "type": "scatter", "mode": "lines", "y": _numbers(series.low), "line": edge, "hoverinfo": "skip",
+        "showlegend": False, "name": f"{series.name}, lower edge",
     }  # fmt: skip
     upper = lower | {
         "y": _numbers(series.y), "fill": "tonexty", "fillcolor": colour(series.style.role, theme),
@@ -139,7 +139,7 @@ def _bar(chart: Chart, series: Series, place: str, theme: str) -> list[dict[str,
         "base": _numbers(series.low or (0.0,) * len(series.x)),
         "width": 0.7,
         "marker": marker,
-        "hovertemplate": f"{series.name} <b>%{{customdata[2]}}</b> %{{customdata[1]}}<extra></extra>",
+        "hovertemplate": f"{series.name} %{{customdata[1]}} %{{customdata[0]}}<extra></extra>",
     }
     # The readout of a bar would tell where it ends, not how long it is.
     for i, told in enumerate(trace["customdata"]):
@@ -161,13 +161,12 @@ def _layout(chart: Chart, places: dict[str, str], theme: str) -> dict[str, Any]:
     layout: dict[str, Any] = {
         "height": chart.height,
         "autosize": True,
-        "margin": {"l": 74, "r": 16, "t": 46 if chart.events else 34, "b": 52},
+        "margin": {"l": 74, "r": 136 if _by_panel(chart) else 16, "t": 46, "b": 52},
         "font": {"family": _FONT, "size": 13, "color": colour("ink", theme)},
         "paper_bgcolor": colour("paper", theme),
         "plot_bgcolor": colour("paper", theme),
         "separators": ",." if chart.decimal_comma else ".,",
-        "showlegend": len(chart.y) == 1 and len(chart.series) > 1,
-        "legend": {"orientation": "h", "x": 0, "xanchor": "left", "y": 1.0, "yanchor": "bottom"},
+        "showlegend": len(chart.series) > 1,
         "hovermode": "x unified" if linked else "closest",
         "hoverlabel": {"bgcolor": colour("paper", theme), "bordercolor": colour("soft", theme)},
         "dragmode": "zoom" if chart.clock else False,
@@ -179,8 +178,22 @@ def _layout(chart: Chart, places: dict[str, str], theme: str) -> dict[str, Any]:
     if linked:
         layout["hoversubplots"] = "axis"
     for axis in chart.y:
-        layout[places[axis.key].replace("y", "yaxis")] = _y_axis(axis, theme)
-    return layout
+        layout[places[axis.key].replace("y", "yaxis")] = _y_axis(axis, theme, _by_panel(chart))
+    return layout | _legends(chart, places)
+
+
+def _by_panel(chart: Chart) -> bool:
+    """Whether each panel has a legend of its own, beside it."""
+    return len(chart.y) > 2
+
+
+def _legends(chart: Chart, places: dict[str, str]) -> dict[str, Any]:
+    plain = {"bgcolor": "rgba(0,0,0,0)", "itemclick": False, "itemdoubleclick": False, "tracegroupgap": 0,
+             "traceorder": "normal"}  # fmt: skip
+    if not _by_panel(chart):
+        return {"legend": plain | {"orientation": "h", "x": 0, "xanchor": "left", "y": 1.0, "yanchor": "bottom"}}
+    beside = plain | {"x": 1.01, "xanchor": "left", "yanchor": "top", "font": {"size": 12}}
+    return {places[axis.key].replace("y", "legend"): beside | {"y": round(axis.domain[1], 6)} for axis in chart.y}
 
 
 def _x_axis(chart: Chart, theme: str, anchor: str) -> dict[str, Any]:
@@ -197,13 +210,18 @@ def _x_axis(chart: Chart, theme: str, anchor: str) -> dict[str, Any]:
     }
     if chart.clock or chart.x_words:
         axis |= {"showspikes": True, "spikemode": "across", "spikedash": "dot", "spikethickness": 1,
-                 "spikecolor": colour("soft", theme), "unifiedhovertitle": {"text": "%{customdata[0]}"}}  # fmt: skip
+                 "spikecolor": colour("soft", theme), "hoverformat": f".{_X_DIGITS}f",
+                 "labelalias": {f"{x:.{_X_DIGITS}f}": words for x, words in chart.x_words}}  # fmt: skip
     return axis
 
 
-def _y_axis(axis: Axis, theme: str) -> dict[str, Any]:
+def _y_axis(axis: Axis, theme: str, narrow: bool) -> dict[str, Any]:
     return {
-        "title": {"text": axis.title, "standoff": 6, "font": {"size": 12}},
+        "title": {
+            "text": axis.title.replace(" (", "<br>(") if narrow else axis.title,
+            "standoff": 6,
+            "font": {"size": 12},
+        },
         "range": [axis.low, axis.high],
         "domain": [round(d, 6) for d in axis.domain],
         "tickvals": [value for value, _ in axis.ticks],

@@ -14,14 +14,24 @@ from worksheet.ward.sheet import Sheet
 
 Z95 = 1.959964  # two-sided 95 % of the normal distribution
 
-_BASIS_WORDS = (
+_CONTENT_WORDS = (
     (Flag.HB_CARRIED, "Hb carried"),
-    (Flag.FLOW_CARRIED, "flow carried"),
     (Flag.SATURATION_CALCULATED, "saturation calculated, not measured"),
     (Flag.SATURATION_FROM_FINGER, "saturation from the finger"),
-    (Flag.CENTRAL_VENOUS, "central venous: an estimate"),
+    (Flag.DYSHAEMOGLOBINS_ASSUMED, "dyshaemoglobins not measured: usual share assumed"),
+    (Flag.DYSHAEMOGLOBINS_CARRIED, "dyshaemoglobins carried"),
 )
-_CARRIED_BITS = Flag.HB_CARRIED | Flag.FLOW_CARRIED
+_FLOW_WORDS = ((Flag.FLOW_CARRIED, "flow carried"),)
+_VENOUS_WORDS = ((Flag.CENTRAL_VENOUS, "central venous: an estimate"),)
+_LUNG_WORDS = ((Flag.FIO2_ESTIMATED, "FiO2 estimated"),)
+_BASIS_WORDS = {
+    "cao2": _CONTENT_WORDS,
+    "do2": _CONTENT_WORDS + _FLOW_WORDS,
+    "do2i": _CONTENT_WORDS + _FLOW_WORDS,
+    "o2er": _CONTENT_WORDS + _VENOUS_WORDS,
+    "pf_ratio": _LUNG_WORDS,
+}
+_CARRIED_BITS = {"cao2": Flag.HB_CARRIED, "o2er": Flag.HB_CARRIED, "pf_ratio": 0}
 
 
 @dataclass(frozen=True)
@@ -89,14 +99,14 @@ def derived(sheet: Sheet, rows: Ints, name: str, display: Display) -> Points:
     return Points(
         floats(sheet.readings.time[keep]),
         floats(shown(display, name, sheet.derived[name][keep])),
-        carried(flags),
-        tuple(basis_words(int(bits)) for bits in flags),
+        carried(name, flags),
+        tuple(basis_words(name, int(bits)) for bits in flags),
     )
 
 
-def basis_words(bits: int) -> str:
-    """On what a derived number rests, in words."""
-    return ", ".join(words for bit, words in _BASIS_WORDS if bits & bit)
+def basis_words(name: str, bits: int) -> str:
+    """On what a derived quantity rests, in words."""
+    return ", ".join(words for bit, words in _BASIS_WORDS.get(name, ()) if bits & bit)
 
 
 def supply_name(sheet: Sheet, rows: Ints) -> str:
@@ -118,6 +128,7 @@ def label(name: str) -> str:
     return CATALOGUE[name].symbol
 
 
-def carried(flags: Ints) -> tuple[bool, ...]:
-    """Whether rows with these flags rest on a carried haemoglobin or flow."""
-    return tuple((flags & _CARRIED_BITS != 0).tolist())
+def carried(name: str, flags: Ints) -> tuple[bool, ...]:
+    """Whether a derived quantity of rows with these flags rests on a carried haemoglobin or flow."""
+    bits = _CARRIED_BITS.get(name, Flag.HB_CARRIED | Flag.FLOW_CARRIED)
+    return tuple((flags & bits != 0).tolist())

@@ -42,8 +42,20 @@ def _by_x(chart: Chart, listed: list[Series]) -> Table:
             note = s.note(i)
             text = number(chart, s.y[i], decimals)
             cells[x][column] = f"{text} ({note})" if note and text != MISSING else text
-    head = (chart.x.title, *(f"{s.name} ({unit})" if (unit := _unit(chart, s)) else s.name for s in listed))
+    head = (chart.x.title, *(_heading(chart, s, [t.name for t in listed].count(s.name) > 1) for s in listed))
     return Table(chart.title, head, tuple((words.get(x, number(chart, x, 1)), *row) for x, row in cells.items()))
+
+
+def _heading(chart: Chart, series: Series, twice: bool) -> str:
+    """Name and unit; the panel's title where two panels have a series of one name."""
+    if twice:
+        return f"{series.name}, {_lower_first(chart.axis(series.axis).title)}"
+    unit = _unit(chart, series)
+    return f"{series.name} ({unit})" if unit else series.name
+
+
+def _lower_first(text: str) -> str:
+    return text[:1].lower() + text[1:]
 
 
 def _unit(chart: Chart, series: Series) -> str:
