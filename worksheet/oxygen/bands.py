@@ -73,8 +73,8 @@ def pf_band_global(
 ) -> NDArray[np.int8]:
     """Band of the global definition of 2023 [2]_: P/F, else S/F at SpO2 up to 97 %.
 
-    Intubated: PEEP at least 5; S/F 315, 235 and 148 stand beside P/F 300, 200 and 100. Not intubated: non-invasive
-    pressure of at least 5 cmH2O or high flow of at least 30 L/min, one band.
+    Intubated: S/F 315, 235 and 148 stand beside P/F 300, 200 and 100; no least PEEP is named. Not intubated:
+    non-invasive pressure of at least 5 cmH2O or high flow of at least 30 L/min, one band.
 
     Parameters
     ----------
@@ -97,7 +97,7 @@ def pf_band_global(
     pf, sf, peep, oxygen_flow = floats(pf, sf, peep, oxygen_flow)
     device = np.asarray(device)
     band = np.where(np.isnan(pf), _band_of(sf, 315.0, 235.0, 148.0), _band_of(pf, 300.0, 200.0, 100.0))
-    intubated = (device == Device.VENTILATOR) & (peep >= PEEP_LEAST)
+    intubated = device == Device.VENTILATOR
     pressure = (device == Device.NONINVASIVE) & (peep >= PEEP_LEAST)
     flow = (device == Device.HIGH_FLOW) & (oxygen_flow >= HIGH_FLOW_LEAST)
     one = np.where(band > Band.ABOVE, Band.NOT_INTUBATED, band)

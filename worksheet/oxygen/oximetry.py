@@ -27,6 +27,7 @@ _HHB = (0.815, 0.183)
 _COHB = (0.069, 0.001)
 _METHB = (0.945, 0.729)
 GAP_NOISE = 0.044  # 1.96 SD of a gap, SD 0.022-0.023: Ebmeier 2018; Mallat 2015
+COHB_PREDICTED_TO = 0.60
 GAP_ASKS = 0.05  # common practice: above this, send co-oximetry
 
 
@@ -161,7 +162,8 @@ def predicted_spo2(so2: ArrayLike, cohb: ArrayLike, methb: ArrayLike) -> Floats:
 
     R is the ratio of the mixture's absorbances at 660 and 940 nm [1]_, read with the usual empirical calibration
     SpO2 = 110 - 25 R (common practice), capped at 100. MetHb draws it toward 85 % [2]_, COHb leaves it nearly
-    unchanged [3]_. It explains a gap; it never corrects an SpO2.
+    unchanged [3]_. It explains a gap; it never corrects an SpO2. Above a COHb of 0.60 it falls below what was observed
+    [3]_ and is not given.
 
     Parameters
     ----------
@@ -182,7 +184,8 @@ def predicted_spo2(so2: ArrayLike, cohb: ArrayLike, methb: ArrayLike) -> Floats:
         active * (so2 * _O2HB[i] + (1.0 - so2) * _HHB[i]) + cohb * _COHB[i] + methb * _METHB[i] for i in (0, 1)
     )
     shown = np.clip(1.10 - 0.25 * red / infrared, 0.0, 1.0)
-    return keep((so2 >= 0.0) & (so2 <= 1.0) & (active >= 0.0), shown)
+    valid = (so2 >= 0.0) & (so2 <= 1.0) & (active >= 0.0) & (cohb <= COHB_PREDICTED_TO)
+    return keep(valid, shown)
 
 
 @quiet
