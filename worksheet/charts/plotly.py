@@ -18,6 +18,7 @@ CONFIG = {
     "responsive": True,
     "scrollZoom": False,
     "doubleClick": "reset",
+    "showTips": False,
     "modeBarButtons": [["zoom2d", "resetScale2d"]],
 }
 
@@ -205,6 +206,7 @@ def _x_axis(chart: Chart, theme: str, anchor: str) -> dict[str, Any]:
         "gridcolor": colour("grid", theme),
         "linecolor": colour("soft", theme),
         "zeroline": False,
+        "ticklabeloverflow": "allow",
         "anchor": anchor,
         "fixedrange": chart.clock is None,
     }
