@@ -86,7 +86,7 @@ def _map(
         for n, (t, v, b) in enumerate(zip(times, value, basis, strict=True))
     )
     flags = sheet.derived.flags[rows]
-    series = ()
+    series: tuple[Series, ...] = ()
     if len(rows):
         series = (
             Series("line", "Samples in time order", y_axis.key, points.floats(x), points.floats(y),

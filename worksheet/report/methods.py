@@ -43,10 +43,11 @@ METHODS = (
     "Christoforides & Hedley-Whyte 1969). Delivery: DO2I = 10 · CI · CaO2. Consumption and extraction by the Fick "
     "principle (1870). Alveolar gas equation in full form (Fenn, Rahn & Otis 1946). Shunt: Berggren 1942.",
     "Change ledger: exact nested Shapley value (Shapley 1953; Owen 1977; Shorrocks 2013, J Econ Inequal 11:99): the "
-    "steps add up to the change. Lung is PaO2, through saturation and dissolved oxygen; haemoglobin its amount; function "
-    "its dyshaemoglobins, the shift of its curve and what was measured beyond the curve; flow cardiac output or index.",
-    "Uncertainty: first order (JCGM 100:2008) from the standard uncertainties of each measurement; a carried value grows "
-    "more uncertain with its age. Bands and ± are 95 %. Lactate: fitted on its logarithm.",
+    "steps add up to the change. Lung is PaO2, through saturation and dissolved oxygen; haemoglobin its amount; "
+    "function its dyshaemoglobins, the shift of its curve and what was measured beyond the curve; flow cardiac output "
+    "or index.",
+    "Uncertainty: first order (JCGM 100:2008) from the standard uncertainties of each measurement; a carried value "
+    "grows more uncertain with its age. Bands and ± are 95 %. Lactate: fitted on its logarithm.",
 )
 CAUTIONS = (
     "For use by clinicians who check each number against its source; local protocols and licensed practice decide.",

@@ -9,11 +9,12 @@ from __future__ import annotations
 import json
 import sys
 from pathlib import Path
+from typing import Any
 
 import typst
 
 FONTS = Path(__file__).resolve().parent / "fonts"
-STANDARDS = ["a-2a", "ua-1"]  # archival, tagged; universal accessibility
+STANDARDS: list[Any] = ["a-2a", "ua-1"]  # archival, tagged; universal accessibility
 
 
 def compile_document(template: str, payload: str, timestamp: int) -> tuple[bytes, list[str]]:
