@@ -1,0 +1,90 @@
+"""Whose values these are: patients by identifier, never by name alone; who is not found waits."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from datetime import datetime, timedelta
+
+from worksheet.ward.models import Patient, Stay, Unit
+
+from .names import fold
+from .rows import PatientRef
+
+_GRACE = timedelta(hours=24)  # results arrive after a patient has left, and before the bed is booked
+
+
+@dataclass
+class StayFinder:
+    """Finds the stays of one unit; remembers what it found.
+
+    An identifier matches a patient of the same issuing system, or a stay that the unit itself calls by it. A birth
+    date or family name that contradicts the stored one stops the match.
+    """
+
+    unit: Unit
+    create: bool = False
+    made: dict[PatientRef, Stay] = field(default_factory=dict)
+    _known: dict[PatientRef, tuple[list[Stay], str]] = field(default_factory=dict)
+    _by_reference: dict[str, Stay] | None = None
+
+    def find(self, ref: PatientRef, time: datetime) -> tuple[Stay | None, str]:
+        """The stay, or why there is none. A stay to be made has no primary key yet."""
+        if ref not in self._known:
+            self._known[ref] = self._look_up(ref)
+        stays, problem = self._known[ref]
+        if problem:
+            return None, problem
+        if not stays:
+            return self._make(ref)
+        covering = [s for s in stays if _covers(s, time)]
+        if len(covering) == 1:
+            return covering[0], ""
+        if not covering:
+            return None, f"the stay of {ref.identifier} does not cover this time"
+        return None, f"{ref.identifier} has more than one stay that covers this time"
+
+    def _references(self) -> dict[str, Stay]:
+        if self._by_reference is None:
+            self._by_reference = {s.reference: s for s in self.unit.stays.select_related("patient")}
+        return self._by_reference
+
+    def _look_up(self, ref: PatientRef) -> tuple[list[Stay], str]:
+        own = self._references()
+        stays = [s for s in own.values() if s.patient.identifier == ref.identifier and s.patient.system == ref.system]
+        if not stays and ref.identifier in own:
+            stays = [own[ref.identifier]]
+        wrong = next((w for s in stays if (w := _contradiction(ref, s.patient))), "")
+        return stays, wrong
+
+    def _make(self, ref: PatientRef) -> tuple[Stay | None, str]:
+        if not self.create:
+            return None, f"nobody in this unit has the identifier {ref.identifier}"
+        if ref not in self.made:
+            patient = Patient(system=ref.system or f"unit:{self.unit.slug}", identifier=ref.identifier)
+            self.made[ref] = Stay(reference=ref.identifier[:64], unit=self.unit, patient=patient)
+        return self.made[ref], ""
+
+
+def _covers(stay: Stay, time: datetime) -> bool:
+    after = stay.admitted_at is None or time >= stay.admitted_at - _GRACE
+    return after and (stay.discharged_at is None or time <= stay.discharged_at + _GRACE)
+
+
+def _contradiction(ref: PatientRef, patient: Patient) -> str:
+    """Why a patient found by identifier is not the one meant."""
+    if ref.birth_date and patient.birth_date and ref.birth_date[:10].replace("-", "") != f"{patient.birth_date:%Y%m%d}":
+        return f"the birth date of {ref.identifier} differs from the stored one"
+    theirs, ours = (set(fold(n).split()) for n in (ref.name, patient.name))
+    if theirs and ours and not theirs & ours:
+        return f"the name of {ref.identifier} differs from the stored one"
+    return ""
+
+
+def store_new(finder: StayFinder) -> int:
+    """Store the stays that were made, with their patients."""
+    for stay in finder.made.values():
+        if stay.pk is None:
+            found, _ = Patient.objects.get_or_create(system=stay.patient.system, identifier=stay.patient.identifier)
+            stay.patient = found
+            stay.save(force_insert=True)
+    return len(finder.made)
