@@ -1,7 +1,7 @@
 """Alveolar gas equation, table of sample values (Wikipedia): air, 760 mmHg, water vapour 47, PaCO2 36, R 0.8: 107 mmHg.
 
-Martin L, "The four most important equations in clinical practice", gives the same full equation and says that the factor
-on PaCO2 is 1.2 on air and becomes 1.0 at an FiO2 of 1.0.
+Martin L, "The four most important equations in clinical practice", gives the same full equation and says that the
+factor on PaCO2 is 1.2 on air and becomes 1.0 at an FiO2 of 1.0.
 """
 
 import pytest

@@ -1,7 +1,7 @@
 """ARDS Definition Task Force. Acute respiratory distress syndrome: the Berlin definition. JAMA 2012;307:2526-2533.
 
-Mild above 200 to 300, moderate above 100 to 200, severe to 100 mmHg, at a PEEP or CPAP of at least 5 cmH2O; above 1000 m
-P/F times barometric pressure over 760.
+Mild above 200 to 300, moderate above 100 to 200, severe to 100 mmHg, at a PEEP or CPAP of at least 5 cmH2O; above
+1000 m P/F times barometric pressure over 760.
 """
 
 import numpy as np

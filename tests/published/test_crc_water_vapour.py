@@ -1,7 +1,7 @@
 """CRC Handbook of Chemistry and Physics: vapour pressure of water.
 
-0-34 °C in mmHg: 62nd edition (1981), 0.01 mmHg. 35-40 °C in kPa: 73rd edition (1992-93), its steps to 0.0001 kPa. Buck's
-equation is an approximation: its stated error is below 0.1 % in this range.
+0-34 °C in mmHg: 62nd edition (1981), 0.01 mmHg. 35-40 °C in kPa: 73rd edition (1992-93), its steps to 0.0001 kPa.
+Buck's equation is an approximation: its stated error is below 0.1 % in this range.
 """
 
 import pytest

@@ -1,4 +1,4 @@
-"""Workbook for Egan's Fundamentals of Respiratory Care, chapter 12, answers 1, 2 and 4: alveolar pressure, gradients."""
+"""Workbook for Egan's Fundamentals of Respiratory Care, chapter 12, answers 1, 2 and 4: alveolar pressure, A-a."""
 
 import pytest
 

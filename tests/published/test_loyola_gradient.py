@@ -1,4 +1,4 @@
-"""Loyola University Chicago, Stritch School of Medicine, pulmonary case EMB10: A-a gradient of PaO2 80, PaCO2 30 on air.
+"""Loyola University Chicago, Stritch School of Medicine, pulmonary case EMB10: A-a gradient, PaO2 80, PaCO2 30, air.
 
 The full equation at R 0.8 has the factor 0.21 + 0.79/0.8 = 1.2 on PaCO2 that the page uses; printed to 1 mmHg.
 """

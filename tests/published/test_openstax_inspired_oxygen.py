@@ -1,4 +1,4 @@
-"""OpenStax Biology 2e, section 39.2: partial pressure of oxygen in dry and in humidified air at sea level, to 1 mmHg."""
+"""OpenStax Biology 2e, section 39.2: oxygen pressure of dry and of humidified air at sea level, to 1 mmHg."""
 
 import dataclasses
 

@@ -1,8 +1,8 @@
 """Severinghaus JW. Simple, accurate equations for human blood O2 dissociation computations.
 
-J Appl Physiol 1979;46:599-602. Table 1: the standard curve at pH 7.40, PCO2 40 mmHg, 37 °C (51 points). The paper states
-the largest deviation of its equation 1 from the table as 0.0055; equations 3 and 4 are its coefficients of temperature
-and pH.
+J Appl Physiol 1979;46:599-602. Table 1: the standard curve at pH 7.40, PCO2 40 mmHg, 37 °C (51 points). The paper
+states the largest deviation of its equation 1 from the table as 0.0055; equations 3 and 4 are its coefficients of
+temperature and pH.
 """
 
 import numpy as np
@@ -12,13 +12,14 @@ from worksheet.oxygen.acidbase import po2_at
 from worksheet.oxygen.curve import po2_ellis, saturation_severinghaus, saturation_tanh, severinghaus_ph_coefficient
 
 PO2 = [
-    1, 2, 4, 6, 8, 10, 12, 14, 16, 18, 20, 22, 24, 26, 28, 30, 32, 34, 36, 38, 40, 42, 44, 46, 48, 50, 52, 54, 56, 58, 60,
-    65, 70, 75, 80, 85, 90, 95, 100, 110, 120, 130, 140, 150, 175, 200, 225, 250, 300, 400, 500,
+    1, 2, 4, 6, 8, 10, 12, 14, 16, 18, 20, 22, 24, 26, 28, 30, 32, 34, 36, 38, 40, 42, 44, 46, 48, 50, 52, 54, 56, 58,
+    60, 65, 70, 75, 80, 85, 90, 95, 100, 110, 120, 130, 140, 150, 175, 200, 225, 250, 300, 400, 500,
 ]  # fmt: skip
 PERCENT = [
-    0.60, 1.19, 2.56, 4.37, 6.68, 9.58, 12.96, 16.89, 21.40, 26.50, 32.12, 37.60, 43.14, 48.27, 53.16, 57.54, 61.69, 65.16,
-    68.63, 71.94, 74.69, 77.29, 79.55, 81.71, 83.52, 85.08, 86.59, 87.70, 88.93, 89.95, 90.85, 92.73, 94.06, 95.10, 95.84,
-    96.42, 96.88, 97.25, 97.49, 97.91, 98.21, 98.44, 98.62, 98.77, 99.03, 99.20, 99.32, 99.41, 99.53, 99.65, 99.72,
+    0.60, 1.19, 2.56, 4.37, 6.68, 9.58, 12.96, 16.89, 21.40, 26.50, 32.12, 37.60, 43.14, 48.27, 53.16, 57.54, 61.69,
+    65.16, 68.63, 71.94, 74.69, 77.29, 79.55, 81.71, 83.52, 85.08, 86.59, 87.70, 88.93, 89.95, 90.85, 92.73, 94.06,
+    95.10, 95.84, 96.42, 96.88, 97.25, 97.49, 97.91, 98.21, 98.44, 98.62, 98.77, 99.03, 99.20, 99.32, 99.41,
+    99.53, 99.65, 99.72,
 ]  # fmt: skip
 POINTS = list(zip(PO2, PERCENT, strict=True))
 STATED_ERROR = 0.0055

@@ -1,8 +1,8 @@
 """West JB. Prediction of barometric pressures at high altitudes with the use of model atmospheres.
 
-J Appl Physiol 1996;81:1850-1854. The model is used because the standard atmosphere is wrong where people climb: 253 mmHg
-were measured on the summit of Mount Everest (West JB et al. J Appl Physiol 1983;55:688-698), the standard atmosphere
-gives 236.
+J Appl Physiol 1996;81:1850-1854. The model is used because the standard atmosphere is wrong where people climb: 253
+mmHg were measured on the summit of Mount Everest (West JB et al. J Appl Physiol 1983;55:688-698), the standard
+atmosphere gives 236.
 """
 
 import pytest

@@ -36,6 +36,7 @@ from .tanh_model import (
 # Up to this share of the sites two Newton steps stand for the root, within 0.003 points of it (tests); above, the
 # bracketed root is solved. Without carbon monoxide neither costs anything.
 SOLVED_FROM = 0.03
+_NO_OXYGEN = -500.0  # ln-odds below which the saturation is 0 to the last digit, with or without carbon monoxide
 
 
 @quiet
@@ -140,7 +141,7 @@ def po2_with_co(so2: ArrayLike, a: ArrayLike, temperature: ArrayLike = 37.0, sha
 def _odds_beside_co(odds: Floats, x: Floats, a: Floats, share: Floats) -> Floats:
     """ln(S / (1 - S)) in blood with carbon monoxide: Haldane's law, two Newton steps or the bracketed root."""
     odds, x, a, share = (np.array(part) for part in np.broadcast_arrays(odds, x, a, share))
-    usable = np.isfinite(odds) & np.isfinite(a) & (share > 0.0) & (share < 1.0)
+    usable = (odds > _NO_OXYGEN) & (odds < np.inf) & in_range(a) & (share > 0.0) & (share < 1.0)
     few = usable & (share <= SOLVED_FROM)
     many = usable & ~few
     if np.any(few):

@@ -174,7 +174,7 @@ def extractable_oxygen(
     held = capacity(hb, inactive, constants)
     left = end_capillary_saturation(so2, po2, ph, pco2, temperature, cohb, methb, constants)
     dissolved = dissolved_oxygen(po2, constants) - dissolved_oxygen(constants.end_capillary_po2, constants, temperature)
-    return np.maximum(held * (np.asarray(so2, dtype=np.float64) - left) + dissolved, 0.0)
+    return np.asarray(np.maximum(held * (np.asarray(so2, dtype=np.float64) - left) + dissolved, 0.0))
 
 
 @quiet

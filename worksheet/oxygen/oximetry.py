@@ -217,7 +217,7 @@ def methb_explaining(spo2: ArrayLike, so2: ArrayLike, cohb: ArrayLike = 0.0) -> 
     active = so2 * excess(_O2HB) + (1.0 - so2) * excess(_HHB)
     methb = -((1.0 - cohb) * active + cohb * excess(_COHB)) / (excess(_METHB) - active)
     valid = (spo2 > 0.0) & (spo2 < 1.0) & (so2 >= 0.0) & (so2 <= 1.0) & (cohb >= 0.0)
-    return keep(valid & (methb >= 0.0) & (methb <= 1.0 - cohb), methb)
+    return keep(valid & (methb >= -1e-9) & (methb <= 1.0 - cohb), np.maximum(methb, 0.0))
 
 
 def gap_calculated(so2_calculated: ArrayLike, so2_curve: ArrayLike, spo2: ArrayLike) -> Floats:

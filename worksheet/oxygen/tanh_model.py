@@ -34,6 +34,7 @@ DPG_STANDARD = 5.0
 A_RANGE = (-2.5, 2.5)  # the range that the displacement is sought in; no living blood is near its ends
 
 
+@quiet
 def displacement_terms(
     ph: ArrayLike, pco2: ArrayLike, methb: ArrayLike = 0.0, hbf: ArrayLike = 0.0, dpg: ArrayLike = DPG_STANDARD
 ) -> Mapping[str, Floats]:
@@ -69,6 +70,7 @@ def displacement_terms(
     }
 
 
+@quiet
 def displacement(
     ph: ArrayLike, pco2: ArrayLike, methb: ArrayLike = 0.0, hbf: ArrayLike = 0.0, dpg: ArrayLike = DPG_STANDARD
 ) -> Floats:
@@ -121,7 +123,6 @@ def in_range(a: Floats) -> Bools:
     return np.asarray((a >= A_RANGE[0]) & (a <= A_RANGE[1]))
 
 
-@quiet
 def _log(value: Floats) -> Floats:
     return keep(value > 0.0, np.log(value))
 
