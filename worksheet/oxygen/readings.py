@@ -232,3 +232,5 @@ class Flag(IntEnum):
     SPO2_ABOVE_97 = 512  # S/F not reported
     BAROMETRIC_STANDARD = 1024  # site constant, not measured
     VENOUS_HB_SHARED = 2048  # the arterial haemoglobin was used for the venous sample
+    VO2_MEASURED = 4096  # measured, because Fick's could not be had
+    DISSOLVED_NOT_COUNTED = 8192  # a saturation without a PO2: CaO2 or CvO2 is the bound part alone
