@@ -3,7 +3,7 @@
 from .bar import ledger_bar
 from .curve import curve_chart
 from .description import Chart
-from .ledger import Changes, change_ledger
+from .ledger import Changes, change_ledger, changes_of
 from .maps import content_map, delivery_map
 from .strip import time_strip
 from .table import Table, table
@@ -13,6 +13,7 @@ __all__ = [
     "Chart",
     "Table",
     "change_ledger",
+    "changes_of",
     "content_map",
     "curve_chart",
     "delivery_map",

@@ -7,8 +7,10 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from worksheet.oxygen.readings import Floats
+from worksheet.oxygen import ledger as ledgers
+from worksheet.oxygen.readings import Floats, Ints
 from worksheet.ward.display import Display
+from worksheet.ward.sheet import Sheet
 
 from . import points
 from .description import Axis, Chart, Series, Style
@@ -36,6 +38,32 @@ class Changes:
 
     def __len__(self) -> int:
         return len(self.start)
+
+
+_QUANTITY = {ledgers.Level.CAO2: "cao2", ledgers.Level.DO2: "do2", ledgers.Level.DO2I: "do2i"}
+
+
+def changes_of(sheet: Sheet, rows: Ints) -> Changes:
+    """Consecutive ledgers between the arterial rows among ``rows``, all counted alike.
+
+    Counted in what both the first and the last sample know; samples that know less are stepped over, so that the
+    intervals add up to the change of the window.
+    """
+    rows = points.arterial(sheet, rows)
+    derived = sheet.derived
+    found = [np.isfinite(derived[name][rows]) for name in ("do2i", "do2", "cao2")]
+    known = np.select(found, [ledgers.Level.DO2I, ledgers.Level.DO2, ledgers.Level.CAO2], ledgers.Level.NONE)
+    rows, known = rows[known > ledgers.Level.NONE], known[known > ledgers.Level.NONE]
+    if len(rows) < 2:
+        return Changes("cao2", *np.zeros((2, 0)), {step.name: np.zeros(0) for step in STEPS}, np.zeros(0))
+    level = min(known[0], known[-1])
+    rows = rows[known >= level]
+    first, last = rows[:-1], rows[1:]
+    most = np.full(len(first), level, dtype=np.int8)
+    got = ledgers.between(sheet.snapshots, derived, first, last, sheet.constants, level=most)
+    times = sheet.readings.time
+    steps = {step.name: got.step(step.name) for step in STEPS}
+    return Changes(_QUANTITY[ledgers.Level(int(level))], times[first], times[last], steps, got.residual)
 
 
 def change_ledger(changes: Changes, display: Display, scale: TimeScale | None = None) -> Chart:

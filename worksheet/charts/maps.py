@@ -52,12 +52,12 @@ def content_map(sheet: Sheet, stay: Stay, rows: Ints, display: Display, scale: T
 def delivery_map(sheet: Sheet, stay: Stay, rows: Ints, display: Display, scale: TimeScale | None = None) -> Chart:
     """CaO2 against cardiac index (or output), with lines of equal DO2I (or DO2)."""
     rows = points.arterial(sheet, rows)
-    flow = points.flow_name(sheet, rows)
-    supply = "do2i" if flow == "cardiac_index" else "do2"
-    keep = np.isfinite(sheet.derived["cao2"][rows]) & np.isfinite(sheet.snapshots[flow][rows])
-    rows = rows[keep]
-    x = points.shown(display, "cao2", sheet.derived["cao2"][rows])
-    y = points.shown(display, flow, sheet.snapshots[flow][rows])
+    supply = "do2i" if np.isfinite(sheet.derived["do2i"][rows]).any() else "do2"
+    flow = "cardiac_index" if supply == "do2i" else "cardiac_output"
+    rows = rows[np.isfinite(sheet.derived[supply][rows])]
+    content = sheet.derived["cao2"][rows]
+    x = points.shown(display, "cao2", content)
+    y = points.shown(display, flow, sheet.derived[supply][rows] / (10.0 * content))
     x_axis = value_axis("cao2", display.heading("cao2"), x, display, decimals=display.decimals("cao2"), floor=0,
                         least=float(points.spread(display, "cao2", np.array(3.0))))  # fmt: skip
     y_axis = value_axis(flow, display.heading(flow), y, display, decimals=display.decimals(flow), floor=0, least=1.0,

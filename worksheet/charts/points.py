@@ -119,8 +119,43 @@ def supply_name(sheet: Sheet, rows: Ints) -> str:
 
 
 def flow_name(sheet: Sheet, rows: Ints) -> str:
-    """Cardiac index if these rows have it, else cardiac output."""
-    return "cardiac_index" if np.isfinite(sheet.snapshots["cardiac_index"][rows]).any() else "cardiac_output"
+    """Cardiac index if these rows have it or can have it from output and body surface, else cardiac output."""
+    return "cardiac_index" if np.isfinite(_index(sheet, rows)).any() else "cardiac_output"
+
+
+def _index(sheet: Sheet, rows: Ints) -> Floats:
+    """Cardiac index, where not given as output over body surface [L/min/m2]."""
+    index = sheet.snapshots["cardiac_index"][rows]
+    return np.where(np.isnan(index), sheet.snapshots["cardiac_output"][rows] / sheet.derived["bsa"][rows], index)
+
+
+def flow(sheet: Sheet, rows: Ints, display: Display) -> tuple[str, Points]:
+    """Name and points of the flow that supply is made with; an index made from an output says so."""
+    name = flow_name(sheet, rows)
+    if name == "cardiac_output":
+        return name, known(sheet, rows, name, display)
+    given, made = (known(sheet, rows, measured_as, display) for measured_as in ("cardiac_index", "cardiac_output"))
+    if not made:
+        return name, given
+    snap = sheet.snapshots
+    source = np.maximum(snap.source["cardiac_index"][rows], snap.source["cardiac_output"][rows])
+    own = (source == rows) & (sheet.readings.site[rows] != Site.VENOUS)
+    values = _index(sheet, rows)
+    keep = np.isfinite(values) & (own | snap.arterial[rows])
+    age = np.fmax(snap.age["cardiac_index"][rows], snap.age["cardiac_output"][rows])
+    direct = np.isfinite(snap["cardiac_index"][rows])
+    notes = tuple(
+        ", ".join(filter(None, ("" if mine else _carried_words(a), "" if index else _output_words(display, co))))
+        for mine, a, index, co in zip(
+            own[keep], age[keep], direct[keep], snap["cardiac_output"][rows][keep], strict=True
+        )
+    )
+    return name, Points(floats(sheet.readings.time[rows][keep]), floats(shown(display, name, values[keep])),
+                        tuple((~own[keep]).tolist()), notes)  # fmt: skip
+
+
+def _output_words(display: Display, output: float) -> str:
+    return f"from CO {display.value('cardiac_output', float(output), with_unit=True)}"
 
 
 def label(name: str) -> str:

@@ -161,8 +161,7 @@ def _calculated(sheet: Sheet, rows: Ints, display: Display) -> Points:
 
 
 def _flow(sheet: Sheet, rows: Ints, display: Display) -> _Panel:
-    name = points.flow_name(sheet, rows)
-    got = points.known(sheet, rows, name, display)
+    name, got = points.flow(sheet, rows, display)
     series = (_series("line", points.label(name), name, got, STEP["flow"].style),) if got else ()
     empty = "No flow measured: supply is shown as CaO2"
     return _Panel(name, display.heading(name), series, display.decimals(name), empty, 1.0, 0)
