@@ -25,11 +25,12 @@ entries of one stay and time are ranked by their content.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Iterator, Mapping
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
-from typing import Generic, TypeVar
+from typing import Any, Generic, TypeVar
 
 import numpy as np
+from numpy.typing import NDArray
 
 from .constants import CarryLimits
 from .quantities import MEASURED
@@ -184,13 +185,22 @@ def _order(readings: Readings) -> Ints:
     n = len(stay)
     ahead = (stay[1:] > stay[:-1]) | ((stay[1:] == stay[:-1]) & (time[1:] >= time[:-1]))
     order = np.arange(n) if bool(np.all(ahead)) else np.lexsort((time, stay))
-    same = (stay[order][1:] == stay[order][:-1]) & (time[order][1:] == time[order][:-1])
-    if np.any(same):
+    few = [codes for codes in (readings.flow_method, readings.device, readings.event, readings.site) if np.any(codes)]
+    order = _ranked(order, [stay, time], few)
+    rest = [readings[name] for name in MEASURED if not _empty(readings[name])]
+    return _ranked(order, [stay, time, *few], rest)
+
+
+def _ranked(order: Ints, same_by: Sequence[NDArray[Any]], keys: Sequence[NDArray[Any]]) -> Ints:
+    """Rows that agree in ``same_by`` ranked by ``keys``; the others keep their place."""
+    same = np.ones(max(len(order) - 1, 0), dtype=np.bool_)
+    for column in same_by:
+        sorted_column = column[order]
+        same &= sorted_column[1:] == sorted_column[:-1]
+    if keys and np.any(same):
         tied = np.append(same, False) | np.append(False, same)
-        rows, group = order[tied], _starts(same, n)[tied]
-        keys = [readings[name][rows] for name in MEASURED if not _empty(readings[name])]
-        keys += [codes[rows] for codes in (readings.flow_method, readings.device, readings.event, readings.site)]
-        order[tied] = rows[np.lexsort((*keys, group))]
+        rows, group = order[tied], _starts(same, len(order))[tied]
+        order[tied] = rows[np.lexsort((*(key[rows] for key in keys), group))]
     return order
 
 
