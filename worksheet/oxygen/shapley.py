@@ -22,10 +22,12 @@ from functools import lru_cache
 from math import factorial
 
 import numpy as np
+from numpy.typing import ArrayLike
 
 from .constants import Constants
 from .curve import co_share, displacement_terms, saturation_from_displacement, saturation_with_co
-from .domain import Floats, quiet
+from .domain import Bools, Floats, quiet
+from .readings import Ints
 from .severinghaus import kelman_equivalent_po2, saturation_severinghaus
 
 _DL_PER_L = 10.0
@@ -38,6 +40,7 @@ SHIFTS = ("ph", "pco2", "methb", "cohb", "temperature")
 CURVE = ("po2", *SHIFTS)
 
 Ends = tuple[Floats, Floats]
+Convert = Callable[[Floats], Floats]
 
 
 @dataclass(frozen=True)
@@ -72,7 +75,7 @@ class Factors:
     hb: Floats
     active: Floats
     saturation: Floats
-    measured: np.ndarray
+    measured: Bools
     po2: Floats
     ph: Floats
     pco2: Floats
@@ -83,17 +86,20 @@ class Factors:
     held: Floats
 
     @classmethod
-    def of(cls, flow, hb, active, saturation, po2, ph, pco2, cohb=0.0, methb=0.0, temperature=37.0,  # type: ignore[no-untyped-def]
-           measured=True, bound=0.0, held=0.0) -> Factors:  # fmt: skip
-        """Factors from numbers or arrays, broadcast to one shape [units of the attributes]."""
-        given = np.broadcast_arrays(
-            *(np.asarray(v, dtype=np.float64) for v in (flow, hb, active, saturation, po2, ph, pco2, cohb, methb, temperature)),
-            np.asarray(measured, dtype=np.bool_), np.asarray(bound, dtype=np.float64), np.asarray(held, dtype=np.float64),
-        )  # fmt: skip
-        flow, hb, active, saturation, po2, ph, pco2, cohb, methb, temperature, measured, bound, held = given
-        return cls(flow, hb, active, saturation, measured, po2, ph, pco2, cohb, methb, temperature, bound, held)
+    def of(
+        cls, flow: ArrayLike, hb: ArrayLike, active: ArrayLike, saturation: ArrayLike, po2: ArrayLike, ph: ArrayLike,
+        pco2: ArrayLike, cohb: ArrayLike = 0.0, methb: ArrayLike = 0.0, temperature: ArrayLike = 37.0,
+        measured: ArrayLike = True,
+    ) -> Factors:  # fmt: skip
+        """Factors from numbers or arrays, broadcast to one shape [units of the attributes]; nothing held back."""
+        given = (flow, hb, active, saturation, po2, ph, pco2, cohb, methb, temperature, measured)
+        numbers = np.broadcast_arrays(*(np.asarray(value, dtype=np.float64) for value in given))
+        names = ("flow", "hb", "active", "saturation", "po2", "ph", "pco2", "cohb", "methb", "temperature")
+        zero = np.zeros(numbers[0].shape)
+        columns = dict(zip(names, numbers, strict=False))
+        return cls(measured=numbers[-1] != 0.0, bound=zero, held=zero, **columns)
 
-    def take(self, rows: slice | np.ndarray) -> Factors:
+    def take(self, rows: slice | Ints) -> Factors:
         """The factors of some rows."""
         return Factors(**{name: value[rows] for name, value in vars(self).items()})
 
@@ -191,9 +197,7 @@ def bound_terms(start: Factors, end: Factors, hufner: float) -> tuple[Floats, di
         terms["hb"] += flow * active * unloading
         terms["active"] += flow_hb * unloading
     half = 0.5 * _DL_PER_L * hufner
-    return half * weight, {
-        name: half * terms[name] * (b - a) for name, a, b in zip(BOUND[:3], low, high, strict=False)
-    }
+    return half * weight, {name: half * terms[name] * (b - a) for name, a, b in zip(BOUND[:3], low, high, strict=False)}
 
 
 @quiet
@@ -223,12 +227,17 @@ def curve_split(start: Factors, end: Factors, constants: Constants) -> tuple[dic
     return parts, slopes
 
 
-def _blocks(rows: np.ndarray) -> list[np.ndarray]:
+def _blocks(rows: Ints) -> list[Ints]:
     return [rows[i : i + _BLOCK] for i in range(0, len(rows), _BLOCK)]
 
 
 def _split_block(
-    start: Factors, end: Factors, constants: Constants, rows: np.ndarray, parts: dict[str, Floats], slopes: dict[str, Floats]
+    start: Factors,
+    end: Factors,
+    constants: Constants,
+    rows: Ints,
+    parts: dict[str, Floats],
+    slopes: dict[str, Floats],
 ) -> None:
     """Values of the curve for every subset of the inputs that changed, and their Shapley values."""
     shown = SEVERINGHAUS_INPUTS if constants.curve == "severinghaus" else CURVE
@@ -277,19 +286,21 @@ def shapley_coefficients(players: int) -> Floats:
     return matrix
 
 
-def _choose(ends: Mapping[str, Ends], changed: list[str], subsets: np.ndarray) -> Callable[[str, Callable[..., Floats]], Floats]:
+def _choose(
+    ends: Mapping[str, Ends], changed: list[str], subsets: np.ndarray
+) -> Callable[[str, Callable[..., Floats]], Floats]:
     """For an input: its value at the end that each subset says, rows of the table of subsets."""
 
-    def of(name: str, convert: Callable[..., Floats]) -> Floats:
+    def of(name: str, convert: Convert) -> Floats:
         if name not in changed:
-            return convert(ends[name][0])[np.newaxis, :]
+            return np.asarray(convert(ends[name][0])[np.newaxis, :])
         pair = np.stack([convert(ends[name][0]), convert(ends[name][1])])
         return np.asarray(pair[subsets >> changed.index(name) & 1])
 
     return of
 
 
-def _tanh(ends: Mapping[str, Ends], changed: list[str], subsets: np.ndarray, factor: float) -> Floats:
+def _tanh(ends: Mapping[str, Ends], changed: list[str], subsets: Ints, factor: float) -> Floats:
     """Saturation by the tanh model for each subset [0-1]."""
     of = _choose(ends, changed, subsets)
     a = (
@@ -307,12 +318,12 @@ def _tanh(ends: Mapping[str, Ends], changed: list[str], subsets: np.ndarray, fac
 SEVERINGHAUS_INPUTS = ("po2", "ph", "pco2", "temperature")
 
 
-def _severinghaus(ends: Mapping[str, Ends], changed: list[str], subsets: np.ndarray, factor: float) -> Floats:
+def _severinghaus(ends: Mapping[str, Ends], changed: list[str], subsets: Ints, factor: float) -> Floats:
     """Saturation by Severinghaus with Kelman's shifts for each subset [0-1]."""
     of = _choose(ends, changed, subsets)
     same = [of(name, lambda v: v) for name in ("ph", "pco2", "temperature")]
     return _whole(saturation_severinghaus(kelman_equivalent_po2(of("po2", lambda v: v * factor), *same)), subsets)
 
 
-def _whole(values: Floats, subsets: np.ndarray) -> Floats:
+def _whole(values: Floats, subsets: Ints) -> Floats:
     return np.ascontiguousarray(np.broadcast_to(values, (len(subsets), values.shape[-1])))

@@ -1,0 +1,312 @@
+"""The change ledger: what lung, haemoglobin, function and flow each added to or took from supply, and how sure.
+
+Each comparison is between two rows at the same level: DO2I if it is known at both ends, else DO2, else CaO2. The split
+is the exact nested Shapley value of :mod:`.shapley`; **lung** is PO2 (through saturation and dissolved),
+**haemoglobin** its amount, **function** the active share, the curve's displacements and the residual (measured minus
+curve), **flow** output or index. A window is the sum of its consecutive ledgers.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import replace
+
+import numpy as np
+
+from .constants import Constants
+from .domain import Floats
+from .factors import Route, row_factors
+from .footing import Pair
+from .ledger_noise import step_sds
+from .ledger_table import STEPS, UNITS, Ledger, Level, Note
+from .measurement import DEFAULT, Uncertainties
+from .readings import Bools, Codes, Derived, Ints, Snapshots
+from .shapley import SHIFTS, Factors, Split, split
+
+__all__ = [
+    "STEPS", "UNITS", "Factors", "Ledger", "Level", "Note", "between", "consecutive", "extractable", "split",
+    "window", "window_ends",
+]  # fmt: skip
+
+
+def between(
+    snapshots: Snapshots,
+    derived: Derived,
+    start_rows: Ints,
+    end_rows: Ints,
+    constants: Constants,
+    settings: Uncertainties = DEFAULT,
+    level: Codes | None = None,
+) -> Ledger:
+    """Ledgers of the changes between pairs of rows.
+
+    Parameters
+    ----------
+    snapshots, derived : Snapshots, Derived
+        The rows and what follows from them.
+    start_rows, end_rows : ndarray of int64, shape (m,)
+        The two ends; a negative row gives an empty comparison [row number].
+    constants : Constants
+        Constants in force.
+    settings : Uncertainties
+        Standard uncertainties in force.
+    level : ndarray of int8, optional
+        Highest level to count in, see :class:`Level`; by default the highest that both ends know.
+
+    Returns
+    -------
+    Ledger
+        One row for each pair.
+    """
+    return _compare(snapshots, derived, start_rows, end_rows, constants, settings, level, False)
+
+
+def extractable(
+    snapshots: Snapshots,
+    derived: Derived,
+    start_rows: Ints,
+    end_rows: Ints,
+    constants: Constants,
+    settings: Uncertainties = DEFAULT,
+    level: Codes | None = None,
+) -> Ledger:
+    """Ledgers of extractable oxygen in place of content: a loss of function shows its full cost.
+
+    Parameters
+    ----------
+    snapshots, derived : Snapshots, Derived
+        The rows and what follows from them.
+    start_rows, end_rows : ndarray of int64, shape (m,)
+        The two ends [row number].
+    constants : Constants
+        Constants in force.
+    settings : Uncertainties
+        Standard uncertainties in force.
+    level : ndarray of int8, optional
+        Highest level to count in.
+
+    Returns
+    -------
+    Ledger
+        One row for each pair: oxygen that can be unloaded, times flow where it is known [unit of the level].
+    """
+    return _compare(snapshots, derived, start_rows, end_rows, constants, settings, level, True)
+
+
+def consecutive(
+    snapshots: Snapshots, derived: Derived, constants: Constants, settings: Uncertainties = DEFAULT
+) -> Ledger:
+    """Ledger of each arterial row against its stay's previous arterial row.
+
+    Parameters
+    ----------
+    snapshots, derived : Snapshots, Derived
+        The rows and what follows from them.
+    constants : Constants
+        Constants in force.
+    settings : Uncertainties
+        Standard uncertainties in force.
+
+    Returns
+    -------
+    Ledger
+        Row i belongs to snapshot i; NaN for rows that are not arterial or have none before them.
+    """
+    return between(snapshots, derived, snapshots.previous, np.arange(len(snapshots)), constants, settings)
+
+
+def _compare(
+    snapshots: Snapshots, derived: Derived, start_rows: Ints, end_rows: Ints, constants: Constants,
+    settings: Uncertainties, most: Codes | None, unloading: bool,
+) -> Ledger:  # fmt: skip
+    ends = np.asarray(start_rows, dtype=np.int64), np.asarray(end_rows, dtype=np.int64)
+    level = _common_level(derived, *ends, most)
+    kept = np.flatnonzero(level > Level.NONE)
+    rows = row_factors(snapshots, derived)
+    pair = Pair.of(rows, snapshots, derived, ends[0][kept], ends[1][kept], level[kept], constants, unloading)
+    found = split(pair.start, pair.end, constants)
+    sds = step_sds(
+        snapshots, rows, pair.start_row, pair.end_row, level[kept], pair.start, pair.end, found, constants, settings
+    )
+    return _table(ends, level, kept, pair, found, sds, constants)
+
+
+def _common_level(derived: Derived, start_rows: Ints, end_rows: Ints, most: Codes | None) -> Codes:
+    """Highest level whose supply is known at both ends."""
+    level = np.zeros(len(start_rows), dtype=np.int8)
+    there = (start_rows >= 0) & (end_rows >= 0)
+    for code, name in ((Level.CAO2, "cao2"), (Level.DO2, "do2"), (Level.DO2I, "do2i")):
+        known = ~np.isnan(derived[name])
+        both = there.copy()
+        both[there] = known[start_rows[there]] & known[end_rows[there]]
+        level[both if most is None else both & (np.asarray(most) >= code)] = code
+    return level
+
+
+def _table(
+    ends: tuple[Ints, Ints], level: Codes, kept: Ints, pair: Pair, found: Split, sds: Mapping[str, Floats],
+    constants: Constants,
+) -> Ledger:  # fmt: skip
+    """Spread the comparisons that exist over all that were asked for."""
+
+    def spread(values: Floats) -> Floats:
+        result = np.full(len(level), np.nan)
+        result[kept] = values
+        return result
+
+    terms = dict(found.terms)
+    blind = (pair.notes & Note.PO2_MISSING) != 0
+    terms["po2"] = np.where(blind, terms["residual"], terms["po2"])
+    terms["residual"] = np.where(blind, 0.0, terms["residual"])
+    sds = dict(sds) | {"lung": np.where(blind, sds["saturation"], sds["lung"])}
+    shift = sum(terms[name] for name in (*SHIFTS, "active", "unloading"))
+    notes = np.zeros(len(level), dtype=np.int64)
+    notes[kept] = pair.notes
+    return Ledger(
+        np.where(level > 0, ends[0], -1),
+        np.where(level > 0, ends[1], -1),
+        level,
+        spread(terms["po2"] + terms["dissolved"]),
+        spread(terms["hb"]),
+        spread(np.asarray(shift + terms["residual"])),
+        spread(terms["flow"]),
+        spread(found.total),
+        spread(terms["residual"]),
+        spread(pair.start.supply(constants)),
+        spread(pair.end.supply(constants)),
+        {name: spread(values) for name, values in sds.items()},
+        notes,
+        {name: spread(terms[name]) for name in ("po2", "dissolved", "active", *SHIFTS, "unloading")},
+    )
+
+
+def window_ends(
+    snapshots: Snapshots,
+    derived: Derived,
+    since: Floats | float = -np.inf,
+    until: Floats | float = np.inf,
+    rows: Bools | None = None,
+    before: float = 6.0,
+) -> tuple[Ints, Ints, Ints]:
+    """First and last arterial row of a review window in each stay.
+
+    The start is the last row at or before ``since`` if it is no more than ``before`` older, else the first after it.
+
+    Parameters
+    ----------
+    snapshots, derived : Snapshots, Derived
+        The rows and what follows from them.
+    since, until : float or ndarray, one for each stay in ascending order
+        The window [h since the epoch].
+    rows : ndarray of bool, optional
+        Which rows may be ends; by default those with a content.
+    before : float
+        How much older than ``since`` the start may be; common practice [h].
+
+    Returns
+    -------
+    stays, start_rows, end_rows : ndarray of int64
+        Stays in ascending order, and the row numbers; -1 where a stay has no two rows.
+    """
+    stays, own = np.unique(snapshots.readings.stay, return_inverse=True)
+    usable = snapshots.arterial & ~np.isnan(derived["cao2"]) & (True if rows is None else rows)
+    line = snapshots.order[usable[snapshots.order]]
+    stay, time = own[line], snapshots.readings.time[line]
+    since, until = (np.broadcast_to(np.asarray(t, dtype=np.float64), stays.shape) for t in (since, until))
+    first = np.searchsorted(stay, np.arange(len(stays)), "left")
+    upto_since = np.bincount(stay[time <= since[stay]], minlength=len(stays))
+    upto_until = np.bincount(stay[time <= until[stay]], minlength=len(stays))
+    if not len(line):
+        return stays, np.full(len(stays), -1), np.full(len(stays), -1)
+    base = np.clip(first + upto_since - 1, 0, len(line) - 1)
+    old = (upto_since > 0) & (time[base] >= since - before)
+    start, end = np.where(old, base, base + (upto_since > 0)), first + upto_until - 1
+    start = np.where((upto_since == 0), first, start)
+    there = (upto_until > 0) & (end > start)
+    last = len(line) - 1
+    start, end = (line[np.clip(at, 0, last)] for at in (start, end))
+    return stays, np.where(there, start, -1), np.where(there, end, -1)
+
+
+def window(
+    snapshots: Snapshots,
+    derived: Derived,
+    start_rows: Ints,
+    end_rows: Ints,
+    constants: Constants,
+    settings: Uncertainties = DEFAULT,
+    unloading: bool = False,
+) -> Ledger:
+    """Ledger of each window: the sum of its consecutive ledgers, at the highest level that both ends know.
+
+    Rows between that know less than both ends (no flow, no co-oximetry) are passed over, so that nothing falls out of
+    the sum. The uncertainty is that of the two ends; that of the rows between them cancels to second order.
+
+    Parameters
+    ----------
+    snapshots, derived : Snapshots, Derived
+        The rows and what follows from them.
+    start_rows, end_rows : ndarray of int64, shape (m,)
+        The ends of each window, of one stay, see :func:`window_ends` [row number].
+    constants : Constants
+        Constants in force.
+    settings : Uncertainties
+        Standard uncertainties in force.
+    unloading : bool
+        Extractable oxygen in place of content [bool].
+
+    Returns
+    -------
+    Ledger
+        One row for each window.
+    """
+    ends = _compare(snapshots, derived, start_rows, end_rows, constants, settings, None, unloading)
+    owner, low, high = _chain(snapshots, derived, ends)
+    if not len(owner):
+        return ends
+    each = _compare(snapshots, derived, low, high, constants, settings, ends.level[owner], unloading)
+    none = ends.level == Level.NONE
+
+    def summed(values: Floats) -> Floats:
+        return np.where(none, np.nan, np.bincount(owner, values, minlength=len(ends)))
+
+    lung, haemoglobin, function, flow, total, residual = (
+        summed(getattr(each, name)) for name in (*STEPS, "total", "residual")
+    )
+    parts = {name: summed(values) for name, values in each.parts.items()}
+    return replace(
+        ends, lung=lung, haemoglobin=haemoglobin, function=function, flow=flow, total=total, residual=residual,
+        parts=parts,
+    )  # fmt: skip
+
+
+def _chain(snapshots: Snapshots, derived: Derived, ends: Ledger) -> tuple[Ints, Ints, Ints]:
+    """Pairs of consecutive rows that lead from the start to the end of each window: window, earlier, later row."""
+    place = np.empty(len(snapshots), dtype=np.int64)
+    place[snapshots.order] = np.arange(len(snapshots))
+    wanted = np.flatnonzero(ends.level > Level.NONE)
+    first, last = place[ends.start_row[wanted]], place[ends.end_row[wanted]]
+    length = last - first + 1
+    owner = np.repeat(wanted, length)
+    offset = np.arange(len(owner)) - np.repeat(np.cumsum(length) - length, length)
+    row = snapshots.order[np.repeat(first, length) + offset]
+    knows = _knowledge(snapshots, derived)
+    needed = knows[ends.start_row[owner]] & knows[ends.end_row[owner]]
+    kept = snapshots.arterial[row] & ((knows[row] & needed) == needed)
+    owner, row = owner[kept], row[kept]
+    same = owner[1:] == owner[:-1]
+    return owner[1:][same], row[:-1][same], row[1:][same]
+
+
+def _knowledge(snapshots: Snapshots, derived: Derived) -> Ints:
+    """What each row knows, as bits: content, output, index, dyshaemoglobins, measured saturation, PO2, shifts."""
+    rows = row_factors(snapshots, derived)
+    known = (
+        ~np.isnan(derived["cao2"]), ~np.isnan(derived["do2"]), ~np.isnan(derived["do2i"]), rows.dys_known,
+        np.isin(rows.route, (Route.O2HB, Route.SO2)), ~np.isnan(rows.po2), ~np.isnan(rows.ph + rows.pco2),
+        ~np.isnan(derived["extractable_o2"]),
+    )  # fmt: skip
+    bits = np.zeros(len(snapshots), dtype=np.int64)
+    for place, where in enumerate(known):
+        bits |= where.astype(np.int64) << place
+    return bits
