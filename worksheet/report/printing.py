@@ -6,7 +6,6 @@ import json
 import logging
 import subprocess
 import sys
-from datetime import datetime
 from pathlib import Path
 from typing import Any
 
@@ -36,12 +35,14 @@ def cleaned(part: Any) -> Any:
     return part
 
 
-def pdf_of(template: str, payload: dict[str, Any], at: datetime) -> bytes:
-    """Set a document. ``at`` is its date: the same payload at the same time gives the same bytes."""
+def pdf_of(template: str, payload: dict[str, Any], at: int) -> bytes:
+    """Set a document. ``at`` is its date [s since the epoch]: same payload, same date, same bytes."""
     order = {
         "template": str(TEMPLATES / template),
-        "payload": json.dumps(cleaned(payload), ensure_ascii=False, allow_nan=False),
-        "timestamp": int(at.timestamp()),
+        "payload": json.dumps(
+            cleaned(payload) | {"keywords": payload["keywords"]}, ensure_ascii=False, allow_nan=False
+        ),
+        "timestamp": at,
     }
     try:
         done = subprocess.run(  # noqa: S603  our own interpreter and script; user text goes in as data
