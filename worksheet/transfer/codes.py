@@ -60,6 +60,7 @@ class Meaning:
     flow_method: FlowMethod = FlowMethod.UNKNOWN
     problem: str = ""
     conflict: bool = False
+    quiet: bool = False  # a known quantity that the worksheet does not keep
 
 
 @cache
@@ -87,7 +88,8 @@ def meaning(codings: Iterable[Coding], text: str = "", *, method: str = "", on_s
     elif any(c.loinc in _EITHER for c in given):
         return _saturation(known, words, on_sample)
     if not known:
-        return Meaning(problem=_unknown(given, words))
+        problem, quiet = _unknown(given, words)
+        return Meaning(problem=problem, quiet=quiet)
     name, site = known[0]
     other = next((n for n, _ in known if n != name), "") or _contradiction(name, given, text)
     if other:
@@ -96,7 +98,7 @@ def meaning(codings: Iterable[Coding], text: str = "", *, method: str = "", on_s
                        conflict=True)  # fmt: skip
     quantity = CATALOGUE[name]
     if quantity.derived:
-        return Meaning(problem=f"{quantity.label} is computed by the worksheet and not imported.")
+        return Meaning(problem=f"{quantity.label} is computed by the worksheet and not imported", quiet=True)
     sites = {s for n, s in known if n == name}
     if {Site.CENTRAL_VENOUS, Site.VENOUS} <= sites:
         site = Site.VENOUS  # "venous" alone does not say central: never paired unless the sample says so
@@ -135,13 +137,13 @@ def _first(given: list[Coding]) -> str:
     return next((c.code for c in given if c.code), "?")
 
 
-def _unknown(given: list[Coding], words: str) -> str:
+def _unknown(given: list[Coding], words: str) -> tuple[str, bool]:
     for coding in given:
         if coding.loinc in _NOT_KEPT:
-            return f"{_NOT_KEPT[coding.loinc]} ({coding.loinc}) is not a quantity of the worksheet"
+            return f"{_NOT_KEPT[coding.loinc]} ({coding.loinc}) is not a quantity of the worksheet", True
     label = " ".join(words.split())[:60]
     codes = ", ".join(c.code for c in given if c.code)[:60]
-    return f"The code {codes or '(none)'} ({label or 'no name'}) is not in the catalogue"
+    return f"The code {codes or '(none)'} ({label or 'no name'}) is not in the catalogue", False
 
 
 def unit_of(quantity: Quantity, texts: Iterable[str]) -> tuple[UnitOfMeasure | None, str]:

@@ -105,6 +105,7 @@ class Row:
     fate: Fate | None = None
     reason: str = ""
     cautions: tuple[str, ...] = ()
+    quiet: bool = False  # nothing that a person could do about it: reported, not queued
 
     def settle(self, fate: Fate, reason: str = "") -> None:
         """Give the row its fate; the first one stands."""
@@ -184,7 +185,7 @@ class Preview:
 
     def waiting(self) -> Iterator[Row]:
         """Rows that store nothing and need a person."""
-        return (row for row in self.rows if row.fate in WAITING)
+        return (row for row in self.rows if row.fate in WAITING and not row.quiet)
 
     def not_understood(self) -> dict[str, int]:
         """What was not understood, with how often."""

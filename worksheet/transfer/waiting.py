@@ -25,7 +25,9 @@ def _queued(row: Row, unit: Unit, source: str) -> QueuedRow:
     fate = row.fate or Fate.INVALID
     data = as_data(row)
     text = json.dumps([data, row.reason, fate.value], sort_keys=True, ensure_ascii=False)
-    if row.patient is None or row.time is None:
+    if fate is Fate.NOT_UNDERSTOOD and row.cells == {}:
+        text = row.reason  # one example of each code or unit that nobody understands, not thousands
+    elif row.patient is None or row.time is None:
         text += f"{source}|{row.place}"
     return QueuedRow(
         unit=unit, source=source[:160], place=row.place[:120], fate=fate.value, reason=row.reason,

@@ -15,7 +15,7 @@ from django.core.management.base import BaseCommand, CommandError
 
 from worksheet.transfer import limits, people, pipeline
 from worksheet.transfer.mappings import saved_for
-from worksheet.transfer.rows import WAITING, Preview, Refused
+from worksheet.transfer.rows import WAITING, Fate, Preview, Refused
 from worksheet.transfer.times import TimeRules
 from worksheet.ward.models import Unit
 
@@ -71,6 +71,8 @@ class Command(BaseCommand):
             zone = ZoneInfo(options["zone"]) if options["zone"] else None
         except (KeyError, ValueError, OSError):
             raise Refused(f"'{options['zone']}' is not a time zone; write it like Europe/Zurich.") from None
+        if zone is None and kind == "hl7v2":
+            zone = unit.zone  # the standard: times without a zone are the sender's local times
         rules = TimeRules(zone, options["date_order"], options["doubled_hour"], shifted=options["shifted_dates"])
         chosen = pipeline.Options(
             rules, options["unknown_stays"] == "create", options["replace_differing"], options["keep_rest"],
@@ -112,5 +114,5 @@ class Command(BaseCommand):
         stored = ", ".join(f"{count:,} {what}" for what, count in seen.entries.items()) or "nothing to store"
         done = f"stored: {stored}" if seen.stored else "dry run, nothing stored"
         self.stdout.write(f"{seen.source}: {len(seen.rows):,} rows ({fates}); {done}.")
-        if seen.rows and len(waiting) == len(seen.rows):
-            raise CommandError("No row could be stored.")
+        if seen.rows and all(row.fate is Fate.INVALID for row in seen.rows):
+            raise CommandError("No row is valid; nothing was stored.")
