@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+import zlib
 from collections.abc import Iterator
 from dataclasses import dataclass
 from datetime import UTC, datetime
@@ -87,9 +88,8 @@ def check(head: Header, raw: bytes) -> None:
         raise Rejected("AR", f"the message is larger than {MAX_MESSAGE // MEGABYTE} MB")
     if b"\x00" in raw and "UTF-16" not in head.fields[18]:
         raise Rejected("AR", "the message contains NUL bytes")
-    if head.kind.split("^")[0] != "ORU" or head.kind not in ("ORU^R01", "ORU^"):
-        if head.kind != "ORU":
-            raise Rejected("AR", f"messages of type {shortened(head.kind) or '(none)'} are not taken; only ORU^R01")
+    if head.kind not in ("ORU^R01", "ORU^", "ORU"):
+        raise Rejected("AR", f"messages of type {shortened(head.kind) or '(none)'} are not taken; only ORU^R01")
     if head.version not in VERSIONS:
         raise Rejected("AR", f"version {shortened(head.version) or '(none)'} is not taken; 2.3 to 2.8 are")
     if head.processing not in ("P", ""):
@@ -181,7 +181,7 @@ def acknowledge(head: Header, code: str, reason: str = "") -> bytes:
     version = head.version if head.version in VERSIONS else "2.5"
     out = [
         f"MSH|^~\\&|{_bare(fields[5])}|{_bare(fields[6])}|{_bare(fields[3])}|{_bare(fields[4])}|{now}||{kind}"
-        f"|A{now[:14]}{abs(hash(fields[10])) % 10000:04d}|P|{version}||||||UNICODE UTF-8",
+        f"|A{now[:14]}{zlib.crc32(fields[10].encode()) % 10000:04d}|P|{version}||||||UNICODE UTF-8",
         f"MSA|{code}|{_bare(fields[10])}|{clean}",
     ]
     if code != "AA":
@@ -200,10 +200,10 @@ def frames(buffer: bytearray) -> Iterator[bytes]:
         if start < 0:
             buffer.clear()
             return
-        end = buffer.find(END + CR, start)
+        end = buffer.find(END, start)
         if end < 0:
             del buffer[:start]
             return
         frame = bytes(buffer[start + 1 : end])
-        del buffer[: end + 2]
+        del buffer[: end + 1]
         yield frame

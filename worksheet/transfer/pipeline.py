@@ -58,12 +58,15 @@ def parse(kind: str, data: bytes, options: Options) -> Parsed:
     raise Refused(f"'{kind}' is not a format that can be read; use csv, xlsx, fhir or hl7v2.")
 
 
-def preview(unit: Unit, name: str, parsed: Parsed, options: Options) -> tuple[Preview, Matched]:
+def preview(
+    unit: Unit, name: str, parsed: Parsed, options: Options, *, with_findings: bool = True
+) -> tuple[Preview, Matched]:
     """Every row's fate, without storing anything."""
     drafts = drafts_of(parsed.rows, observations=parsed.format in ("fhir", "hl7v2"))
     found = match(drafts, unit, stays.StayFinder(unit, options.create), overwrite=options.overwrite)
     seen = Preview(unit.name, name, parsed, drafts, list(found.finder.made))
-    seen.findings = assess(drafts, unit)
+    if with_findings:
+        seen.findings = assess(drafts, unit)
     return seen, found
 
 

@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+from collections import defaultdict
 from dataclasses import dataclass, field
 from datetime import datetime, timedelta
+
+from django.db.models import Q
 
 from worksheet.ward.models import Patient, Stay, Unit
 
@@ -11,6 +14,7 @@ from .names import fold
 from .rows import PatientRef
 
 _GRACE = timedelta(hours=24)  # results arrive after a patient has left, and before the bed is booked
+_ONE_BY_ONE = 20  # identifiers
 
 
 @dataclass
@@ -25,7 +29,7 @@ class StayFinder:
     create: bool = False
     made: dict[PatientRef, Stay] = field(default_factory=dict)
     _known: dict[PatientRef, tuple[list[Stay], str]] = field(default_factory=dict)
-    _by_reference: dict[str, Stay] | None = None
+    _all: defaultdict[str, list[Stay]] | None = None
 
     def find(self, ref: PatientRef, time: datetime) -> tuple[Stay | None, str]:
         """The stay, or why there is none. A stay to be made has no primary key yet."""
@@ -43,16 +47,22 @@ class StayFinder:
             return None, f"the stay of {ref.identifier} does not cover this time"
         return None, f"{ref.identifier} has more than one stay that covers this time"
 
-    def _references(self) -> dict[str, Stay]:
-        if self._by_reference is None:
-            self._by_reference = {s.reference: s for s in self.unit.stays.select_related("patient")}
-        return self._by_reference
+    def _candidates(self, ref: PatientRef) -> list[Stay]:
+        """Stays called or identified so: asked one by one at first, all at once for a file of many patients."""
+        if len(self._known) < _ONE_BY_ONE:
+            named = Q(reference=ref.identifier) | Q(patient__identifier=ref.identifier)
+            return list(self.unit.stays.select_related("patient").filter(named))
+        if self._all is None:
+            self._all = defaultdict(list)
+            for stay in self.unit.stays.select_related("patient"):
+                for name in {stay.reference, stay.patient.identifier}:
+                    self._all[name].append(stay)
+        return self._all.get(ref.identifier, [])
 
     def _look_up(self, ref: PatientRef) -> tuple[list[Stay], str]:
-        own = self._references()
-        stays = [s for s in own.values() if s.patient.identifier == ref.identifier and s.patient.system == ref.system]
-        if not stays and ref.identifier in own:
-            stays = [own[ref.identifier]]
+        own = self._candidates(ref)
+        stays = [s for s in own if s.patient.identifier == ref.identifier and s.patient.system == ref.system]
+        stays = stays or [s for s in own if s.reference == ref.identifier]
         wrong = next((w for s in stays if (w := _contradiction(ref, s.patient))), "")
         return stays, wrong
 
