@@ -66,7 +66,8 @@ def pytest_collection_modifyitems(items):
 def _table() -> list[str]:
     lines = ["| what | median | against | ratio | goal | rate |", "| --- | ---: | --- | ---: | --- | --- |"]
     lines += [
-        f"| {r.what} | {r.seconds * 1000:.4g} ms | {r.against} ({r.reference * 1000:.4g} ms) | {r.ratio:.3g} | {r.goal} | {r.rate} |"
+        f"| {r.what} | {r.seconds * 1000:.4g} ms | {r.against} ({r.reference * 1000:.4g} ms) | {r.ratio:.3g} "
+        f"| {r.goal} | {r.rate} |"
         for r in _rows
     ]
     return lines
@@ -79,8 +80,8 @@ def pytest_terminal_summary(terminalreporter):
     import numpy
 
     head = (
-        f"{date.today().isoformat()}, {os.cpu_count()} cores ({platform.machine()}), Python {platform.python_version()}, "
-        f"Django {django.__version__}, numpy {numpy.__version__}"
+        f"{date.today().isoformat()}, {os.cpu_count()} cores ({platform.machine()}), "
+        f"Python {platform.python_version()}, Django {django.__version__}, numpy {numpy.__version__}"
     )
     terminalreporter.section("ratios")
     for line in (head, "", *_table()):

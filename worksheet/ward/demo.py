@@ -60,38 +60,38 @@ STORIES: tuple[Story, ...] = (
           {"co": ((72, 3.9), (40, 5.4), (0, 6.1)), "lactate": ((72, 6.8), (48, 3.1), (24, 1.6), (0, 1.1)),
            "pf": ((72, 170), (36, 250), (0, 330)), "fio2": ((72, 0.6), (36, 0.45), (0, 0.35)),
            "temperature": ((72, 38.9), (0, 37.2)), "map": ((72, 61), (0, 78))},
-          flow_every=6, venous_every=12, age=58),
+          flow_every=4, venous_every=8, age=58),
     Story("K-2024", 2, "Pneumonia, gas exchange failing since the evening",
           {"pf": ((72, 290), (16, 270), (9, 150), (0, 62)), "fio2": ((72, 0.45), (14, 0.5), (6, 0.85), (0, 0.95)),
            "pco2": ((72, 39), (10, 42), (0, 52)), "ph": ((72, 7.40), (10, 7.38), (0, 7.29)),
            "lactate": ((72, 1.2), (8, 1.4), (0, 2.6)), "peep": ((72, 8), (8, 10), (0, 14)),
            "temperature": ((72, 38.0), (0, 38.9)), "rr": ((72, 20), (0, 30))},
-          gas_every=3, flow_every=8, venous_every=8, height=181, weight=88, age=49, last=0.4),
+          gas_every=3, flow_every=3, venous_every=6, height=181, weight=88, age=49, last=0.4),
     Story("K-2031", 3, "After an infarct, output falling",
           {"co": ((72, 5.2), (12, 5.0), (0, 2.8)), "lactate": ((72, 1.4), (10, 1.6), (0, 4.6)),
            "map": ((72, 74), (10, 70), (0, 56)), "hr": ((72, 84), (0, 116)), "ph": ((72, 7.41), (8, 7.39), (0, 7.30)),
            "pco2": ((72, 38), (0, 34))},
-          flow_every=3, venous_every=4, height=168, weight=71, age=72, last=0.9),
+          flow_every=4, venous_every=4, height=168, weight=71, age=72, last=0.9),
     Story("K-2041", 4, "Bleeding after bowel surgery",
           {"hb": ((72, 10.6), (11, 10.3), (5, 8.2), (0, 6.7)), "co": ((72, 5.3), (9, 5.4), (0, 5.9)),
            "lactate": ((72, 1.2), (9, 1.5), (0, 3.9)), "hr": ((72, 82), (9, 92), (0, 118)),
            "map": ((72, 78), (9, 72), (0, 60)), "ph": ((72, 7.40), (0, 7.31))},
-          gas_every=3, flow_every=4, venous_every=5, height=176, weight=79, age=66, last=0.7,
+          gas_every=3, flow_every=3, venous_every=6, height=176, weight=79, age=66, last=0.7,
           events=((6.2, Event.BLEED, 600, "drain filled with fresh blood"),)),
     Story("K-2055", 5, "Swallowed paint remover (dichloromethane): carbon monoxide rises while the finger reads 98",
           {"cohb": ((30, 0.02), (16, 0.05), (0, 0.29)), "pf": ((72, 410),), "fio2": ((72, 0.30),),
            "lactate": ((30, 1.1), (0, 2.8)), "hb": ((72, 13.6),)},
-          admitted=30, flow_every=6, venous_every=10, height=164, weight=62, age=34, last=0.5),
+          admitted=30, gas_every=3, flow_every=3, venous_every=9, height=164, weight=62, age=34, last=0.5),
     Story("K-2058", 6, "Methaemoglobin after a topical anaesthetic",
           {"methb": ((72, 0.008), (9, 0.012), (3, 0.21), (0, 0.26)), "pf": ((72, 380),), "fio2": ((72, 0.35),),
            "hb": ((72, 12.4),), "lactate": ((72, 1.0), (0, 2.4))},
-          flow_every=8, venous_every=12, height=170, weight=68, age=45, last=0.8),
+          gas_every=3, flow_every=3, venous_every=9, height=170, weight=68, age=45, last=0.8),
     Story("K-2062", 7, "Sparse data: no haemoglobin since yesterday, no flow, old gas",
           {"pf": ((72, 300), (0, 240))}, gas_every=11, co_oximetry=False, device=Device.NASAL_CANNULA, age=80,
           skip=("hb_late", "lactate"), last=7.5),
     Story("K-2077", 8, "Data that contradict each other", {"pf": ((72, 330), (0, 320)), "fio2": ((72, 0.30),)},
           co_oximetry=False, flow_every=0, spo2_offset=-0.115, age=55, last=0.5),
-    Story("K-2080", 9, "After cardiac surgery, steady", {"co": ((72, 5.0),)}, flow_every=6, venous_every=12, age=69,
+    Story("K-2080", 9, "After cardiac surgery, steady", {"co": ((72, 5.0),)}, flow_every=4, venous_every=8, age=69,
           height=174, weight=82, last=1.1),
     Story("K-2083", 10, "Sepsis: haemoglobin and output fall together",
           {"hb": ((72, 9.6), (12, 9.3), (0, 7.4)), "co": ((72, 6.8), (12, 6.5), (0, 4.6)),
@@ -112,10 +112,17 @@ def _state(story: Story, hours_ago: float) -> dict[str, float]:
 
 def _times(rng: np.random.Generator, story: Story, every: float) -> list[float]:
     """Irregular sampling times [h before now], newest last."""
+    if not every:
+        return []
     count = int((story.admitted - story.last) / every - 0.5)
     regular = story.last + every * np.arange(count, -1, -1)
     shaken = regular + np.append(rng.uniform(-0.25, 0.25, count) * every, 0.0)
     return [story.admitted - 0.2, *(float(t) for t in shaken)]
+
+
+def _beside(gases: list[float], wanted: list[float]) -> list[float]:
+    """The gas nearest to each wanted time, oldest first: people measure flow and draw venous blood with the gas."""
+    return sorted({min(gases, key=lambda gas: abs(gas - time)) for time in wanted}, reverse=True)
 
 
 def _noisy(rng: np.random.Generator, name: str, value: float) -> float:
@@ -172,14 +179,12 @@ def _entries(story: Story, now: datetime) -> Iterator[record.NewEntry]:
     gases = _times(rng, story, story.gas_every)
     for ago in gases:
         yield record.NewEntry(at(ago), Site.ARTERIAL, _gas(rng, story, ago), device=story.device)
-    if story.venous_every:
-        wanted = _times(rng, story, story.venous_every)
-        for ago in sorted({min(gases, key=lambda g: abs(g - w)) for w in wanted}, reverse=True):
-            yield record.NewEntry(at(ago - 0.05), Site.CENTRAL_VENOUS, _venous(rng, story, ago))
-    if story.flow_every:
-        for ago in _times(rng, replace(story, last=story.last - 0.1), story.flow_every):
-            flow = round(_noisy(rng, "cardiac_output", _state(story, ago)["co"]), 1)
-            yield record.NewEntry(at(ago), values={"cardiac_output": flow}, flow_method=FlowMethod.THERMODILUTION)
+    for ago in _beside(gases, _times(rng, story, story.venous_every)):
+        yield record.NewEntry(at(ago - 0.05), Site.CENTRAL_VENOUS, _venous(rng, story, ago))
+    for ago in _beside(gases, _times(rng, story, story.flow_every)):
+        flow = round(_noisy(rng, "cardiac_output", _state(story, ago)["co"]), 1)
+        values = {"cardiac_output": flow}
+        yield record.NewEntry(at(ago + 0.15), values=values, flow_method=FlowMethod.THERMODILUTION)
     for ago, event, amount, note in story.events:
         yield record.NewEntry(at(ago), event=event, event_amount=amount, note=note)
     if story.reference == "K-2077":

@@ -75,8 +75,14 @@ def record(stay: Stay, user: User, new: NewEntry) -> tuple[Entry, bool]:
             return known, False
         entry = build(stay, user, new)
         entry.save(force_insert=True)
-        audit.write(user.username, "recorded", unit=stay.unit.name, subject=stay.reference, entry=entry.pk,
-                    values=described(entry))
+        audit.write(
+            user.username,
+            "recorded",
+            unit=stay.unit.name,
+            subject=stay.reference,
+            entry=entry.pk,
+            values=described(entry),
+        )
     return entry, True
 
 

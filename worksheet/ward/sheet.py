@@ -2,16 +2,17 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
 
-from worksheet.oxygen import align, derive
+from worksheet.oxygen import align, derive, ledger, uncertainty
 from worksheet.oxygen.constants import Constants
+from worksheet.oxygen.measurement import DEFAULT, Uncertainties
 from worksheet.oxygen.quantities import MEASURED
-from worksheet.oxygen.readings import Derived, Ints, Readings, Snapshots
+from worksheet.oxygen.readings import Derived, Floats, Ints, Readings, Snapshots
 
 from .models import Entry, Stay, Unit
 from .models.entries import EntryQuerySet
@@ -31,6 +32,17 @@ class Sheet:
     snapshots: Snapshots
     derived: Derived
     constants: Constants
+    settings: Uncertainties = DEFAULT
+
+    @cached_property
+    def sds(self) -> Mapping[str, Floats]:
+        """Standard uncertainty of the derived quantities that have one, row by row."""
+        return uncertainty.standard_uncertainties(self.snapshots, self.derived, self.constants, self.settings)
+
+    @cached_property
+    def ledger(self) -> ledger.Ledger:
+        """Change ledger of each arterial row against its stay's previous arterial row."""
+        return ledger.consecutive(self.snapshots, self.derived, self.constants, self.settings)
 
     def rows(self, stay: Stay) -> Ints:
         """Row numbers of a stay, in time order."""
@@ -69,4 +81,4 @@ def open_sheet(unit: Unit, stays: Sequence[Stay], entries: EntryQuerySet | None 
     constants = unit.constants_in_force()
     snapshots = align.align(readings, constants.carry)
     derived = derive.derive(snapshots, constants)
-    return Sheet(unit, tuple(stays), ids, readings, snapshots, derived, constants)
+    return Sheet(unit, tuple(stays), ids, readings, snapshots, derived, constants, unit.uncertainties_in_force())

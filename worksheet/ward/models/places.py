@@ -10,6 +10,7 @@ from django.core.exceptions import ValidationError
 from django.db import models
 
 from worksheet.oxygen.constants import CarryLimits, Constants
+from worksheet.oxygen.measurement import Uncertainties
 
 from .accounts import Role
 
@@ -72,6 +73,12 @@ class Unit(models.Model):
         """The defaults with what the unit chose."""
         chosen: dict[str, Any] = dict(self.constants)
         return replace(Constants(**chosen), carry=replace(CarryLimits(), **self.carry))
+
+    def uncertainties_in_force(self) -> Uncertainties:
+        """The default standard uncertainties with what the unit chose: ``{"hb": [0.0, 0.03], …}``."""
+        default = Uncertainties()
+        chosen = {name: (float(pair[0]), float(pair[1])) for name, pair in self.uncertainties.items()}
+        return replace(default, quantities={**default.quantities, **chosen}) if chosen else default
 
 
 class Bed(models.Model):
