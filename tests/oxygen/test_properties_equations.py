@@ -64,7 +64,7 @@ def functions():
     found = {}
     for module in MODULES:
         for name, function in vars(module).items():
-            if not isinstance(function, types.FunctionType) or name.startswith("_") or name in OWN_TESTS:
+            if not isinstance(function, types.FunctionType) or name.startswith(("_", "x_")) or name in OWN_TESTS:
                 continue
             if inspect.unwrap(function).__module__ == module.__name__:
                 found[name] = function
