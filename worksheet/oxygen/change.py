@@ -1,4 +1,4 @@
-"""Is a change larger than the noise of its measurements?
+"""Whether a change is larger than the noise of its measurements.
 
 References
 ----------

@@ -20,7 +20,7 @@ from numpy.typing import ArrayLike
 from .change import Z95, real_change
 from .domain import Floats, floats
 from .measurement import DEFAULT, Uncertainties
-from .readings import Bools, Site
+from .readings import Site
 from .slopes import FEWEST_FOR_RANKS, Line, least_squares, robust_slope
 
 __all__ = ["LactateTrend", "lactate_trend", "robust_slope"]
@@ -124,7 +124,8 @@ def lactate_trend(
     LactateTrend
         Kind, numbers with intervals, or the reason for refusing.
     """
-    time, value, mixed = _samples(*floats(times, values), sites)
+    given = floats(times, values)
+    time, value, mixed = _samples(given[0], given[1], sites)
     if not len(value):
         return LactateTrend("refused", "no lactate")
     if np.any(value <= 0.0):
@@ -167,9 +168,7 @@ def _course(time: Floats, value: Floats, found: LactateTrend, settings: Uncertai
     if peak:
         time, value = time[peak:], value[peak:]
         if len(value) < 3:
-            return replace(
-                found, kind="refused", reason="a peak inside the window and fewer than three samples after it"
-            )
+            return replace(found, kind="refused", reason="a peak inside, fewer than three samples after it")
         found = replace(_outline(time, value, settings), mixed=found.mixed, after_peak=True)
     if found.hours < SHORTEST:
         return replace(found, kind="refused", reason="samples span less than 2 h")
@@ -205,21 +204,3 @@ def _peak(value: Floats, settings: Uncertainties) -> int:
     rise = value[top] - value[0] > Z95 * np.hypot(sd[top], sd[0])
     fall = value[top] - value[-1] > Z95 * np.hypot(sd[top], sd[-1])
     return top if 0 < top < len(value) - 1 and rise and fall else 0
-
-
-def recent(times: Floats, since: float, until: float = np.inf) -> Bools:
-    """Which samples a review looks at.
-
-    Parameters
-    ----------
-    times : ndarray
-        Times [h since the epoch].
-    since, until : float
-        The window [h since the epoch].
-
-    Returns
-    -------
-    ndarray of bool
-        Inside the window, ends included [bool].
-    """
-    return np.asarray((times >= since) & (times <= until))
