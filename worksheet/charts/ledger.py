@@ -83,7 +83,7 @@ def change_ledger(changes: Changes, display: Display, scale: TimeScale | None = 
         for (key, _, low, high), domain in zip(panels, ((0.53, 1.0), (0.0, 0.47)), strict=True)
     )  # fmt: skip
     words = tuple(zip(places.tolist(), _interval_words(grouped, scale), strict=True))
-    x_axis = Axis("end", "Interval ending", -0.7, max(n - 0.3, 1.0), _ticks(grouped, scale, places))
+    x_axis = Axis("end", "Interval ending", -0.7, max(n, 6) - 0.3, _ticks(grouped, scale, places))
     symbol = display.quantity(grouped.quantity).symbol
     return Chart(
         "ledger", f"Change ledger of {symbol}", _alt(changes, n, symbol), _summary(running, display, grouped.quantity),

@@ -21,8 +21,8 @@ _CHAIN = (
     "cardiac_output", "cardiac_index", "cao2", "cvo2", "do2", "do2i", "vo2i", "o2er", "pf_ratio", "aa_gradient",
     "shunt_fraction", "p50", "extractable_o2",
 )  # fmt: skip
-_OF_THE_STAY = ("height", "weight", "age")  # said once at the top
-_MOST_COLUMNS = 18
+_OF_THE_STAY = ("height", "weight", "age", "bsa")  # said once at the top
+_MOST_COLUMNS = 22
 _SITE = {Site.NONE: "reading", Site.ARTERIAL: "arterial", Site.MIXED_VENOUS: "mixed venous",
          Site.CENTRAL_VENOUS: "central ven.", Site.VENOUS: "venous"}  # fmt: skip
 _FROM_CARRIED = {
@@ -60,8 +60,9 @@ def further_tables(order: Order) -> list[dict[str, Any]]:
         name for name in (*MEASURED, *DERIVED)
         if name not in _CHAIN and name not in _OF_THE_STAY and _has_any(order, name)
     ]  # fmt: skip
-    parts = [names[i : i + _MOST_COLUMNS] for i in range(0, len(names), _MOST_COLUMNS)]
-    return [_further(order, part) for part in parts]
+    tables = -(-len(names) // _MOST_COLUMNS)
+    each = -(-len(names) // max(tables, 1))
+    return [_further(order, names[n * each : (n + 1) * each]) for n in range(tables)]
 
 
 def _further(order: Order, names: Sequence[str]) -> dict[str, Any]:

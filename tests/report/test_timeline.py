@@ -1,0 +1,283 @@
+"""The timeline as a document: structure, content, hostile text, hard cases, and the page's edges."""
+
+import io
+import json
+import re
+import subprocess
+import tempfile
+from dataclasses import replace
+from datetime import timedelta
+from pathlib import Path
+
+import pikepdf
+import pytest
+from django.utils import timezone
+from PIL import Image
+
+from tests.report import world
+from worksheet.oxygen.readings import Event, Site
+from worksheet.report.printing import TEMPLATES, cleaned
+from worksheet.report.timeline import timeline, timeline_pdf
+from worksheet.report.typeset import compile_document
+from worksheet.ward import record
+from worksheet.ward.models import AuditEvent
+
+pytestmark = pytest.mark.django_db
+
+
+def words_of(pdf: bytes, pdftotext: str, *options: str) -> str:
+    done = subprocess.run([pdftotext, "-enc", "UTF-8", *options, "-", "-"], input=pdf, capture_output=True, check=True)
+    return done.stdout.decode()
+
+
+def flat(text: str) -> str:
+    return " ".join(text.replace("\u200b", "").split())
+
+
+@pytest.fixture
+def stay():
+    made = world.make_stay()
+    world.add_story(made)
+    return made
+
+
+def test_tagged_with_language_title_and_alternative_texts(stay):
+    pdf = pikepdf.open(io.BytesIO(timeline_pdf(world.order(stay))))
+    assert str(pdf.Root.Lang) == "en"
+    assert bool(pdf.Root.MarkInfo.Marked)
+    assert pdf.Root.ViewerPreferences.DisplayDocTitle
+    with pdf.open_metadata() as meta:
+        assert meta["dc:title"] == "Oxygen delivery timeline · T-100"
+        assert meta["pdfaid:part"] == "2"
+        assert meta["pdfaid:conformance"] == "A"
+        assert meta["pdfuaid:part"] == "1"
+    kinds, alts = [], []
+
+    def walk(node):
+        if isinstance(node, pikepdf.Array):
+            for child in node:
+                walk(child)
+        elif isinstance(node, pikepdf.Dictionary) and "/S" in node:
+            kinds.append(str(node.S))
+            if str(node.S) == "/Figure":
+                alts.append(str(node.get("/Alt", "")))
+            if "/K" in node:
+                walk(node.K)
+
+    walk(pdf.Root.StructTreeRoot.K)
+    assert {"/H1", "/H2", "/H3", "/Table", "/TH", "/TR", "/TD", "/Figure"} <= set(kinds)
+    assert len(alts) == 5
+    assert all(len(alt) > 40 for alt in alts)
+
+
+def test_no_compiler_warning(stay):
+    payload = json.dumps(cleaned(timeline(world.order(stay), "0" * 64)))
+    _, warnings = compile_document(str(TEMPLATES / "timeline.typ"), payload, 0)
+    assert warnings == []
+
+
+def test_only_shipped_fonts_embedded(stay):
+    pdf = pikepdf.open(io.BytesIO(timeline_pdf(world.order(stay))))
+    names = {
+        str(font.BaseFont).split("+")[-1] for page in pdf.pages for font in page.Resources.get("/Font", {}).values()
+    }
+    assert names
+    assert all(name.startswith(("SourceSans3", "DejaVuSans", "NotoEmoji")) for name in names)
+
+
+def test_every_number_of_the_tables_is_found(stay, pdftotext):
+    order = world.order(stay)
+    text = flat(words_of(timeline_pdf(order), pdftotext, "-layout"))
+    payload = timeline(order, "0" * 64)
+    tables = [payload["ledger"], payload["entries"], *payload["other"], payload["constants"],
+              payload["saturations"]["table"], payload["corrections"]]  # fmt: skip
+    numbers = {
+        number
+        for table in tables
+        for row in table["rows"]
+        for cell in row
+        for number in re.findall(r"[−+±]?\d+(?:\.\d+)?", cell if isinstance(cell, str) else cell[0])
+    }
+    assert len(numbers) > 60
+    assert not [number for number in numbers if number not in text]
+
+
+def test_header_on_every_page(stay, pdftotext):
+    order = world.order(stay)
+    data = timeline_pdf(order)
+    count = len(pikepdf.open(io.BytesIO(data)).pages)
+    assert count >= 4
+    for n in range(1, count + 1):
+        page = flat(words_of(data, pdftotext, "-f", str(n), "-l", str(n), "-layout"))
+        assert "T-100 · bed N0 · Unit North" in page
+        assert f"Page {n} of {count}" in page
+        assert "by dr.reader" in page
+        assert "local protocols and licensed practice decide" in page
+
+
+def test_sections_are_all_there_in_order(stay, pdftotext):
+    lines = [line.strip() for line in words_of(timeline_pdf(world.order(stay)), pdftotext).splitlines()]
+    wanted = (
+        "Verdict", "Change ledger", "1 · Time strip", "2 · Change ledger of DO2I", "3 · Content map",
+        "4 · Delivery map", "5 · Dissociation curve", "Saturations reconciled", "All entries", "Findings", "Notes",
+        "Corrected and struck-out entries", "Methods and constants in force", "Cautions", "Fingerprint",
+    )  # fmt: skip
+    places = [lines.index(heading) for heading in wanted]
+    assert places == sorted(places)
+
+
+def test_corrections_and_carried_values_are_marked(stay, pdftotext):
+    order = world.order(stay)
+    payload = timeline(order, "0" * 64)
+    assert ["7.5", "carried"] not in [cell for row in payload["entries"]["rows"] for cell in row]
+    marks = [row[-1] for row in payload["entries"]["rows"]]
+    assert "corrected" in marks
+    assert "bleed 600 mL, note 1" in marks
+    text = flat(words_of(timeline_pdf(order), pdftotext))
+    assert "Hb 9.2 g/dL → 9.1 g/dL" in text
+    assert "read from the wrong slip" in text
+    assert "struck out: " in text
+    assert "sample of the neighbour" in text
+
+
+def test_carried_value_carries_its_mark():
+    stay = world.make_stay("T-101")
+    world.add_gases(stay, 1)
+    later = {k: v for k, v in world.gas(0, 1).items() if k != "hb"}
+    record.record(stay, world.nurse(), record.NewEntry(world.START + timedelta(hours=1), Site.ARTERIAL, later))
+    rows = timeline(world.order(stay), "0" * 64)["entries"]["rows"]
+    assert ["10.5", "carried"] in rows[1]
+    assert "10.5" in rows[0]
+
+
+MARKUP = '#import "x": * #read("/etc/passwd") *bold* _em_ $x^2$ \\ `raw` <tag> "quoted" ‘curly’'
+HOSTILE = MARKUP + " 👍🩺 שלום مرحبا //no /*no*/ = h"
+
+
+def test_hostile_notes_print_as_typed(pdftotext):
+    stay = world.make_stay("T-102")
+    world.add_gases(stay, 2)
+    long_note = HOSTILE + " | " + " ".join(f"word{n}" for n in range(700)) + " " + "x" * 900
+    assert len(long_note) > 5000
+    record.record(stay, world.nurse(), record.NewEntry(world.START, event=Event.OTHER, note=long_note))
+    text = flat(words_of(timeline_pdf(world.order(stay)), pdftotext, "-raw"))
+    for piece in (MARKUP, "//no /*no*/ = h", "word699", "👍"):
+        assert piece in text
+    assert text.count("x") > 900
+
+
+def test_note_of_one_endless_word_stays_on_the_page():
+    stay = world.make_stay("T-103")
+    world.add_gases(stay, 1)
+    record.record(stay, world.nurse(), record.NewEntry(world.START, event=Event.OTHER, note="W" * 5000))
+    assert_inside_the_margins(timeline_pdf(world.order(stay)))
+
+
+def assert_inside_the_margins(pdf: bytes) -> None:
+    """No ink within 8 mm of the right edge, nor below the footer."""
+    with tempfile.TemporaryDirectory() as folder:
+        subprocess.run(["pdftoppm", "-r", "50", "-gray", "-png", "-", f"{folder}/p"], input=pdf, check=True)
+        for file in sorted(Path(folder).glob("*.png")):
+            page = Image.open(file).convert("L")
+            edge = int(8 / 25.4 * 50)
+            width, height = page.size
+            for strip in ((width - edge, 0, width, height), (0, 0, edge, height), (0, height - edge, width, height)):
+                assert page.crop(strip).getextrema()[0] > 200, file.name
+
+
+@pytest.mark.parametrize("case", ["none", "one", "no flow", "story", "many"])
+def test_each_case_gives_a_sensible_document(case, pdftotext):
+    stay = world.make_stay("T-104")
+    if case == "one":
+        world.add_gases(stay, 1)
+    elif case == "no flow":
+        world.add_gases(stay, 6, drop=("cardiac_output",))
+    elif case == "story":
+        world.add_story(stay)
+    elif case == "many":
+        world.add_gases(stay, 300, every=0.5)
+    data = timeline_pdf(world.order(stay))
+    text = flat(words_of(data, pdftotext))
+    assert_inside_the_margins(data)
+    assert not re.search(r"\bnan\b|\bNone\b|\binf\b", text)
+    expected = {
+        "none": "No entries in this span.", "one": "Two arterial gases with haemoglobin are needed",
+        "no flow": "Change ledger of CaO2", "story": "Change ledger of DO2I", "many": "300 in the span",
+    }  # fmt: skip
+    assert expected[case] in text
+
+
+@pytest.mark.slow
+def test_two_thousand_entries():
+    stay = world.make_stay("T-105")
+    world.add_gases(stay, 2000, every=0.25)
+    pdf = pikepdf.open(io.BytesIO(timeline_pdf(world.order(stay))))
+    assert 40 < len(pdf.pages) < 120
+
+
+def test_letter_paper():
+    stay = world.make_stay("T-106", paper="us-letter")
+    pdf = pikepdf.open(io.BytesIO(timeline_pdf(world.order(stay))))
+    assert [round(float(v)) for v in pdf.pages[0].MediaBox] == [0, 0, 612, 792]
+
+
+def test_span_keeps_values_carried_from_before_it():
+    stay = world.make_stay("T-107")
+    world.add_gases(stay, 1)
+    later = {k: v for k, v in world.gas(0, 1).items() if k != "hb"}
+    when = world.START + timedelta(hours=2)
+    record.record(stay, world.nurse(), record.NewEntry(when, Site.ARTERIAL, later))
+    order = world.order(stay, since=world.START + timedelta(hours=1))
+    rows = timeline(order, "0" * 64)["entries"]["rows"]
+    assert len(rows) == 1
+    assert ["10.5", "carried"] in rows[0]
+
+
+def test_same_order_same_bytes(stay):
+    order = world.order(stay)
+    assert timeline_pdf(order) == timeline_pdf(replace(order))
+
+
+def test_printing_is_audited(stay):
+    timeline_pdf(world.order(stay), actor="dr.reader")
+    event = AuditEvent.objects.filter(action="printed").get()
+    assert (event.actor, event.subject, event.unit) == ("dr.reader", "T-100", "Unit North")
+
+
+@pytest.mark.parametrize("deidentify", [False, True])
+def test_decimal_comma_and_kilopascal(pdftotext, deidentify):
+    stay = world.make_stay("T-108", decimal_comma=True, units={"po2": "kPa"})
+    world.add_gases(stay, 3)
+    payload = timeline(world.order(stay, deidentify=deidentify), "0" * 64)
+    head = payload["entries"]["head"]
+    assert "PO2\nkPa" in head
+    column = head.index("PO2\nkPa")
+    assert [row[column] for row in payload["entries"]["rows"]] == ["12,8", "11,5", "10,1"]
+    numbers = json.dumps([row[2:] for row in payload["entries"]["rows"]], ensure_ascii=False)
+    assert not re.search(r"\d\.\d", numbers)
+
+
+class TestDeidentified:
+    def test_nothing_identifies(self, pdftotext):
+        stay = world.make_stay("T-109")
+        world.add_story(stay)
+        data = timeline_pdf(world.order(stay, deidentify=True))
+        text = words_of(data, pdftotext)
+        body = text + data.decode("latin1")
+        year = str(timezone.now().year)
+        for told in ("T-109", "P-T-109", "Unit North", "bed N9", "anna.recorder", "dr.reader", "drain filled",
+                     "wrong slip", "2026-03", "91 years", "Zurich"):  # fmt: skip
+            assert told not in body, told
+        with pikepdf.open(io.BytesIO(data)) as pdf:
+            told = str(dict(pdf.docinfo)) + pdf.open_metadata().__str__()
+        assert year not in told
+        assert "over 89 years" in text
+        assert "Time from admission (h)" in text
+        assert "2.0 h" in text
+
+    def test_corrections_are_still_told(self, pdftotext):
+        stay = world.make_stay("T-110")
+        world.add_story(stay)
+        text = flat(words_of(timeline_pdf(world.order(stay, deidentify=True)), pdftotext))
+        assert "Hb 9.2 g/dL → 9.1 g/dL" in text
+        assert "withheld" in text
