@@ -15,6 +15,7 @@ from worksheet.oxygen.readings import FlowMethod, Site
 
 from .names import contradicts, quantities_in
 
+OWN = "urn:oxygen-delivery-worksheet:"  # code systems of our own begin so
 LOINC = "http://loinc.org"
 _LOINC_SYSTEMS = {LOINC, "ln", "loinc", "l", "", "urn:oid:2.16.840.1.113883.6.1", "2.16.840.1.113883.6.1"}
 _FINGER = {"59408-5", "59417-6"}  # by pulse oximetry, in words of the code itself

@@ -15,7 +15,7 @@ from .rows import PatientRef
 # Specimen types: HL7 v2 table 0487 and SNOMED CT, as printed in public value sets.
 _SPECIMEN_CODES = {
     "BLDA": Site.ARTERIAL, "BLDV": Site.VENOUS, "BLDMV": Site.MIXED_VENOUS, "BLDCV": Site.CENTRAL_VENOUS,
-    "122552005": Site.ARTERIAL, "122555007": Site.VENOUS,
+    **{site.name: site for site in Site if site}, "122552005": Site.ARTERIAL, "122555007": Site.VENOUS,
 }  # fmt: skip
 _CERTAIN_WORDS = (
     ("mixed venous", Site.MIXED_VENOUS), ("central venous", Site.CENTRAL_VENOUS), ("arterial", Site.ARTERIAL),
@@ -91,7 +91,7 @@ class Context:
         if resource is not None:
             listed = resource.get("identifier")
             first = listed[0] if isinstance(listed, list) and listed else resource.get("accessionIdentifier")
-            number = number or _identifier(first)[0] or text_of(resource.get("id"))
+            number = number or _identifier(first)[0]
             concept = resource.get("type")
             words = text_of(concept.get("text")) if isinstance(concept, Mapping) else ""
             site = site_of(codings(concept), words)
@@ -110,7 +110,7 @@ class Context:
         name = text_of(item.get("id"))
         addresses = [f"Observation/{name}"] if name else []
         found = next((self._report_of[a] for a in addresses if a in self._report_of), "")
-        return found or self._report_of.get(self._url_of(item), "")
+        return found or self._report_of.get(self._url_of(item), "") or _reference(item.get("specimen"))
 
     def _url_of(self, item: Mapping[str, Any]) -> str:
         if not self._urls:

@@ -6,13 +6,13 @@ import json
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from datetime import datetime
-from typing import Any
+from typing import Any, TypeVar
 
-from worksheet.oxygen.quantities import CATALOGUE
-from worksheet.oxygen.readings import Site
+from worksheet.oxygen.quantities import CATALOGUE, MEASURED
+from worksheet.oxygen.readings import Device, Event, FlowMethod, Site
 
 from .cells import refusal, shortened
-from .codes import Coding, Meaning, meaning, unit_of
+from .codes import OWN, Coding, Meaning, meaning, unit_of
 from .fhir_context import Context, codings, patient_of, place_of, text_of
 from .limits import MAX_ROWS
 from .rows import Cell, Fate, Parsed, Refused, Row, Status
@@ -22,7 +22,9 @@ _STATUS = {
     "final": Status.FINAL, "amended": Status.CORRECTED, "corrected": Status.CORRECTED,
     "preliminary": Status.PRELIMINARY, "registered": Status.PRELIMINARY, "entered-in-error": Status.ERROR,
 }  # fmt: skip
-_CARRIERS = frozenset({"Patient", "Encounter", "Specimen", "DiagnosticReport", "Device", "Practitioner", "Organization"})
+_CARRIERS = frozenset(
+    {"Patient", "Encounter", "Specimen", "DiagnosticReport", "Device", "Practitioner", "Organization"}
+)
 MAX_PERIOD_HOURS = 1.0  # a period longer than this is not one moment: its start is taken and said
 
 
@@ -52,7 +54,9 @@ def parse(data: bytes, rules: TimeRules, codes: Mapping[str, str]) -> Parsed:
         elif not isinstance(kind, str) or kind not in _CARRIERS:
             others[str(kind)[:40]] = others.get(str(kind)[:40], 0) + 1
             row = Row(place_of(number, resource))
-            row.settle(Fate.NOT_UNDERSTOOD, f"a resource of type {str(kind)[:40]} holds no measurement that is read here")
+            row.settle(
+                Fate.NOT_UNDERSTOOD, f"a resource of type {str(kind)[:40]} holds no measurement that is read here"
+            )
             parsed.rows.append(row)
     if not parsed.rows:
         raise Refused("The file holds no Observation.")
@@ -174,6 +178,8 @@ def _valued(reader: _Reader, row: Row, part: dict[str, Any], whole: dict[str, An
     if row.fate is not None:
         row.raw = _excerpt(part)
         return row
+    if _event(row, part):
+        return row
     found = _meaning(reader, row, part, whole)
     if found.quantity is None:
         row.raw = _excerpt(part)
@@ -185,7 +191,8 @@ def _valued(reader: _Reader, row: Row, part: dict[str, Any], whole: dict[str, An
         row.raw = _excerpt(part)
         row.settle(Fate.CONFLICT, f"the code says {_words(found.site)}, the specimen {_words(row.site)}")
         return row
-    row.flow_method = found.flow_method
+    row.flow_method = _own(whole.get("method"), "flow-method", FlowMethod) or found.flow_method
+    row.device = _own(whole.get("method"), "device", Device) or Device.UNKNOWN
     cell, problem, fate = _cell(part, found, row.status)
     if cell is not None:
         row.cells = {found.quantity.name: cell}
@@ -194,6 +201,30 @@ def _valued(reader: _Reader, row: Row, part: dict[str, Any], whole: dict[str, An
         row.raw = _excerpt(part)
         row.settle(fate, problem)
     return row
+
+
+E_ = TypeVar("E_", Device, FlowMethod, Event)
+
+
+def _own(concept: Any, kind: str, codes: type[E_]) -> E_ | None:
+    """One of our own codes in a concept."""
+    for coding in codings(concept):
+        if coding.system == OWN + kind and coding.code.upper() in codes.__members__:
+            return codes[coding.code.upper()]
+    return None
+
+
+def _event(row: Row, part: dict[str, Any]) -> bool:
+    """Whether the Observation is an event of the worksheet (transfusion, bleed, …)."""
+    event = _own(part.get("code"), "event", Event)
+    if event is None:
+        return False
+    row.event = event
+    value = part.get("valueQuantity")
+    amount = value.get("value") if isinstance(value, dict) else None
+    if isinstance(amount, (int, float)) and not isinstance(amount, bool) and 0 <= amount < 1e6:
+        row.event_amount = float(amount)
+    return True
 
 
 _VEINS = frozenset({Site.MIXED_VENOUS, Site.CENTRAL_VENOUS, Site.VENOUS})
@@ -208,10 +239,14 @@ def _meaning(reader: _Reader, row: Row, part: dict[str, Any], whole: dict[str, A
     given = codings(code)
     text = text_of(code.get("text")) if isinstance(code, dict) else ""
     for coding in given:
+        if coding.system == OWN + "quantity" and coding.code in MEASURED:
+            return Meaning(CATALOGUE[coding.code])
         if coding.code in reader.local:
             return Meaning(CATALOGUE[reader.local[coding.code]])
     on_sample: bool | None = True if row.sample or row.site or whole.get("specimen") else None
-    if on_sample is None and any(c.code == "vital-signs" for cat in _dicts(whole.get("category")) for c in codings(cat)):
+    if on_sample is None and any(
+        c.code == "vital-signs" for cat in _dicts(whole.get("category")) for c in codings(cat)
+    ):
         on_sample = False
     method = " ".join([*(c.display for c in codings(whole.get("method"))), reader.context.device(whole)])
     return meaning(given, text, method=method, on_sample=on_sample)
@@ -235,7 +270,11 @@ def _cell(part: dict[str, Any], found: Meaning, status: Status) -> tuple[Cell | 
     problem, caution = refusal(quantity, canonical, unit)
     comparator = value.get("comparator", "")
     if comparator not in ("", "<", ">", "<=", ">="):
-        return None, f"{quantity.symbol}: the comparator '{shortened(str(comparator))}' is not known", Fate.NOT_UNDERSTOOD
+        return (
+            None,
+            f"{quantity.symbol}: the comparator '{shortened(str(comparator))}' is not known",
+            Fate.NOT_UNDERSTOOD,
+        )
     shown = text_of(value.get("unit")) or unit.label
     cell = Cell(None if problem else canonical, str(number), shown, comparator, problem, caution, status)
     return cell, problem, Fate.INVALID

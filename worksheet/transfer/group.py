@@ -26,7 +26,11 @@ def same(a: float, b: float) -> bool:
 
 def drafts_of(rows: Iterable[Row], *, observations: bool) -> list[DraftEntry]:
     """Drafts from rows that have no fate yet. ``observations``: each row is one value of a sample (FHIR, HL7)."""
-    ready = [r for r in rows if r.fate is None and r.patient is not None and r.time is not None and (r.cells or r.note)]
+    ready = [
+        r
+        for r in rows
+        if r.fate is None and r.patient is not None and r.time is not None and (r.cells or r.event or r.note)
+    ]
     if observations:
         _give_sites(ready)
     last: dict[tuple[object, ...], DraftEntry] = {}

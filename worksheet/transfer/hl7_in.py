@@ -73,9 +73,7 @@ def parse(data: bytes, rules: TimeRules, codes: Mapping[str, str]) -> Parsed:
     return parsed
 
 
-def message_rows(
-    raw: bytes, head: Header, rules: TimeRules, codes: Mapping[str, str]
-) -> tuple[list[Row], list[str]]:
+def message_rows(raw: bytes, head: Header, rules: TimeRules, codes: Mapping[str, str]) -> tuple[list[Row], list[str]]:
     """The rows of one message, and notes; :class:`Rejected` if it cannot be taken at all."""
     check(head, raw)
     found, notes = segments(raw, head)
@@ -138,7 +136,9 @@ def _order_rows(message: _Message, who: PatientRef | None, order: _Order, index:
     group = f"{message.head.sender}:{message.head.control_id}:{index}"
     rows = []
     for n, (obx, notes) in enumerate(order.results, 1):
-        place = f"message {message.head.control_id}, OBX {text(obx, 1, 1) or n}" + (f" of OBR {index}" if index > 1 else "")
+        place = f"message {message.head.control_id}, OBX {text(obx, 1, 1) or n}" + (
+            f" of OBR {index}" if index > 1 else ""
+        )
         row = Row(place, who, site=Site.NONE, sample=sample, group=group, note="; ".join(x for x in notes if x)[:1000])
         _fill(message, row, obx, order, on_sample)
         rows.append(row)

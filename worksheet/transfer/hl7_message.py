@@ -93,7 +93,9 @@ def check(head: Header, raw: bytes) -> None:
     if head.version not in VERSIONS:
         raise Rejected("AR", f"version {shortened(head.version) or '(none)'} is not taken; 2.3 to 2.8 are")
     if head.processing not in ("P", ""):
-        raise Rejected("AR", f"processing {shortened(head.processing)} (training or test) is not stored as patient data")
+        raise Rejected(
+            "AR", f"processing {shortened(head.processing)} (training or test) is not stored as patient data"
+        )
     if not head.control_id:
         raise Rejected("AR", "the message has no control id (MSH-10)")
 

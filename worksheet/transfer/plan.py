@@ -9,7 +9,7 @@ from typing import Any
 
 import numpy as np
 
-from worksheet.oxygen.quantities import CATALOGUE, MEASURED, Quantity, UnitOfMeasure
+from worksheet.oxygen.quantities import CATALOGUE, DERIVED, MEASURED, WITH_SD, Quantity, UnitOfMeasure
 from worksheet.oxygen.readings import Site
 
 from .cells import number, shortened
@@ -18,7 +18,9 @@ from .table import Table
 from .times import Order, order_of
 
 SAMPLE = 400  # rows looked at to recognise units and date order
-CONTRACT = frozenset({"stay", "time", "site", "sample", "note", *MEASURED})
+BEDSIDE = ("device", "flow_method", "event", "event_amount")  # columns of our own export
+CONTRACT = frozenset({"stay", "time", "site", "sample", "note", *BEDSIDE, *MEASURED})
+COMPUTED = frozenset({*DERIVED, *(f"{name}_sd" for name in WITH_SD)})
 _UNIT_IN_HEADER = re.compile(r"[(\[{]\s*([^)\]}]*?(?:\[[^\]]*\])?)\s*[)\]}]\s*$|[,;/_]\s*([^,;(]+)$|\s(\S+)$")
 
 
@@ -208,8 +210,12 @@ def _questions(plan: Plan, texts: list[list[str]], order_sure: bool) -> list[str
 
 
 def _notes(plan: Plan) -> list[str]:
-    ignored = [c.header for c in plan.columns if not c.role]
+    unread = [c.header for c in plan.columns if not c.role]
+    computed = [h for h in unread if h in COMPUTED or h.endswith("_age_h")]
+    ignored = [h for h in unread if h not in computed]
     notes = [f"Columns not read: {', '.join(ignored)}."] if ignored else []
+    if computed:
+        notes.append(f"{len(computed)} columns are computed by the worksheet and not read.")
     if plan.decimal_comma:
         notes.append("Numbers have a decimal comma.")
     return notes

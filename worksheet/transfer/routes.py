@@ -60,7 +60,9 @@ def read(path: Path) -> UnitMap:
 def _route(key: str, value: Any) -> Route:
     given = {"unit": value} if isinstance(value, str) else value
     if not isinstance(given, dict) or not isinstance(given.get("unit"), str) or set(given) - _KEYS:
-        raise Refused(f"The unit map's '{key}' has to name a unit; allowed beside it: {', '.join(sorted(_KEYS - {'unit'}))}.")
+        raise Refused(
+            f"The unit map's '{key}' has to name a unit; allowed beside it: {', '.join(sorted(_KEYS - {'unit'}))}."
+        )
     unit = unit_named(given["unit"])
     try:
         zone = ZoneInfo(given.get("zone") or unit.time_zone)

@@ -6,13 +6,14 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, replace
 from typing import Any
 
-from worksheet.oxygen.readings import Site
+from worksheet.oxygen.readings import Device, Event, FlowMethod, Site
 
 from . import table as tables
 from . import workbook
-from .cells import ColumnReader, shortened
+from .cells import ColumnReader, number, shortened
+from .csv_text import unsafe
 from .names import site_named
-from .plan import Plan, propose
+from .plan import BEDSIDE, Plan, propose
 from .rows import Cell, Fate, Parsed, PatientRef, Row
 from .table import Table
 from .times import TimeRules, looks_shifted, parse
@@ -97,7 +98,7 @@ class _TableReader:
             if c.quantity is not None and c.unit is not None
         ]
         self.unread = [c for c in plan.columns if c.quantity is not None and c.unit is None]
-        roles = ("stay", "time", "date", "clock", "site", "sample", "note")
+        roles = ("stay", "time", "date", "clock", "site", "sample", "note", *BEDSIDE)
         self.at = {role: c.index for role in roles if (c := plan.column(role)) is not None}
         self.refs: dict[str, PatientRef] = {}
         self.times: dict[str, tuple[Any, str]] = {}
@@ -139,18 +140,18 @@ class _TableReader:
             return
         row = self._row(line)
         problems = [p] if (p := tables.oversized(cells)) else []
-        problems += self._who_and_when(row, cells) + self._where(row, cells)
+        problems += self._who_and_when(row, cells) + self._where(row, cells) + self._bedside(row, cells)
         parts = self._values(row, cells, problems)
         if problems:
             row.raw = dict(zip(self.table.header, (shortened(c, 200) for c in cells), strict=False))
             row.settle(Fate.INVALID, "; ".join(problems))
-        elif not parts and not row.note:
+        elif not parts and not row.note and not row.event:
             row.settle(Fate.NOT_UNDERSTOOD, "the row holds no value that can be read")
         yield row
         yield from parts[1:]
 
     def _who_and_when(self, row: Row, cells: list[str]) -> list[str]:
-        stay = self._text("stay", cells)
+        stay = unsafe(self._text("stay", cells))
         problems = [] if stay else ["stay: it is missing"]
         if len(stay) > 64:
             problems.append(f"stay: '{shortened(stay)}' is longer than 64 characters")
@@ -161,8 +162,8 @@ class _TableReader:
         if known is None:
             known = self.times[text] = parse(text, self.options.rules)
         row.time = known[0]
-        row.sample = shortened(self._text("sample", cells), 64)
-        row.note = self._text("note", cells)
+        row.sample = shortened(unsafe(self._text("sample", cells)), 64)
+        row.note = unsafe(self._text("note", cells))
         return [*problems, *([f"time: {known[1]}"] if known[1] else [])]
 
     def _where(self, row: Row, cells: list[str]) -> list[str]:
@@ -174,6 +175,21 @@ class _TableReader:
             return [f"site: '{shortened(text)}' is not known (arterial, mixed_venous, central_venous, venous)"]
         row.site = site if text else (self.options.site or Site.NONE)
         return []
+
+    def _bedside(self, row: Row, cells: list[str]) -> list[str]:
+        """Device, flow method and event of our own export."""
+        problems = []
+        for name, codes in (("device", Device), ("flow_method", FlowMethod), ("event", Event)):
+            text = self._text(name, cells)
+            if text and text.upper() in codes.__members__:
+                setattr(row, name, codes[text.upper()])
+            elif text:
+                problems.append(f"{name}: '{shortened(text)}' is not known ({', '.join(codes.__members__).lower()})")
+        amount = self._text("event_amount", cells)
+        row.event_amount = number(amount)[0] if amount else None
+        if amount and row.event_amount is None:
+            problems.append(f"event_amount: '{shortened(amount)}' is not a number")
+        return problems
 
     def _values(self, row: Row, cells: list[str], problems: list[str]) -> list[Row]:
         """Fill the row; values whose header names another site go to rows of their own."""
