@@ -87,7 +87,7 @@ def align(readings: Readings, limits: CarryLimits | None = None) -> Snapshots:
         Row i belongs to row i of the readings [canonical units, ages in h].
     """
     limits = limits or CarryLimits()
-    line = _Line.of(readings)
+    line = Line.of(readings)
     source = _sources(readings, line, limits)
     venous_row = _venous_rows(readings, line, limits)
     device = _device(readings, source, line, limits)
@@ -126,8 +126,29 @@ def taken(column: Floats, rows: Ints) -> Floats:
     return np.where(rows >= 0, column[rows], np.nan)
 
 
+def earlier(column: Floats, line: Line) -> Ints:
+    """The stay's previous entry that has a value, not the entry itself.
+
+    Parameters
+    ----------
+    column : ndarray of float64
+        Values by row, NaN where there is none [any unit].
+    line : Line
+        The entries in order of stay and time.
+
+    Returns
+    -------
+    ndarray of int64
+        Row of the nearest earlier entry in that order, -1 for none [row number].
+    """
+    n = len(column)
+    seen = np.maximum.accumulate(np.where(np.isnan(column)[line.order], -1, np.arange(n)))
+    before = np.append(-1, seen[:-1])[:n]
+    return line.back(np.where(before >= line.start, before, -1))
+
+
 @dataclass(frozen=True)
-class _Line:
+class Line:
     """All entries on one line: by stay, then time. Positions on the line, not row numbers, unless said."""
 
     order: Ints  # row number at each position
@@ -137,7 +158,7 @@ class _Line:
     upto: Ints  # last position of the same stay and time
 
     @classmethod
-    def of(cls, readings: Readings) -> _Line:
+    def of(cls, readings: Readings) -> Line:
         order = _order(readings)
         stay, time = readings.stay[order], readings.time[order]
         n, same = len(stay), stay[1:] == stay[:-1]
@@ -171,6 +192,13 @@ class _Line:
         """The last valid position whatever its age, else the first later one."""
         old = self.last_position(valid)
         return np.where(old >= 0, old, self.next_position(valid))
+
+    def since(self, happened: Bools) -> Floats:
+        """Hours since the stay's last such event, in row order; NaN for none."""
+        at = self.last_position(happened)
+        hours = np.empty_like(self.time)
+        hours[self.order] = np.where(at >= 0, self.time - self.time[at], np.nan) if len(at) else self.time
+        return hours
 
     def back(self, positions: Ints) -> Ints:
         """Positions as row numbers, in row order."""
@@ -216,7 +244,7 @@ def _stops(same: Bools, n: int) -> Ints:
     return np.minimum.accumulate(np.where(closed, np.arange(n), n)[::-1])[::-1]
 
 
-def _sources(readings: Readings, line: _Line, limits: CarryLimits) -> dict[str, Ints]:
+def _sources(readings: Readings, line: Line, limits: CarryLimits) -> dict[str, Ints]:
     """Row that each value is taken from, for the quantities that may be carried."""
     known = {name: ~np.isnan(readings[name]) for name in CARRIED}
     flow = known["cardiac_output"] | known["cardiac_index"]
@@ -244,24 +272,24 @@ def _sources(readings: Readings, line: _Line, limits: CarryLimits) -> dict[str, 
     return found
 
 
-def _reached(line: _Line, happened: Bools) -> Floats:
+def _reached(line: Line, happened: Bools) -> Floats:
     """Time of the last such event of the stay, not later than each position; -inf for none. In line order."""
     at = line.last_position(happened)
     return np.where(at >= 0, line.time[at], -np.inf) if len(at) else line.time
 
 
-def _before_loss(line: _Line, positions: Ints, lost: Floats) -> Ints:
+def _before_loss(line: Line, positions: Ints, lost: Floats) -> Ints:
     """Without those that a bleed or transfusion lies after; what was read at the same time stays."""
     drawn = line.time[positions]
     return np.where((lost >= drawn) & (drawn < line.time), -1, positions)
 
 
-def _since_change(line: _Line, valid: Bools, changed: Floats, limits: CarryLimits) -> Ints:
+def _since_change(line: Line, valid: Bools, changed: Floats, limits: CarryLimits) -> Ints:
     positions = line.within(line.last_position(valid), limits.settings)
     return np.where(changed > line.time[positions], -1, positions)
 
 
-def _device_changes(readings: Readings, line: _Line) -> Bools:
+def _device_changes(readings: Readings, line: Line) -> Bools:
     """Entries at which the device is not the one recorded last before, or that say so."""
     device = readings.device[line.order]
     known = np.where(device != 0, np.arange(len(device)), -1)
@@ -272,7 +300,7 @@ def _device_changes(readings: Readings, line: _Line) -> Bools:
     return np.asarray(changed)
 
 
-def _device(readings: Readings, source: Mapping[str, Ints], line: _Line, limits: CarryLimits) -> Codes:
+def _device(readings: Readings, source: Mapping[str, Ints], line: Line, limits: CarryLimits) -> Codes:
     """Device of the entry that FiO2 was taken from, else the last one recorded."""
     recorded = readings.device != 0
     changed = _reached(line, _device_changes(readings, line))
@@ -281,7 +309,7 @@ def _device(readings: Readings, source: Mapping[str, Ints], line: _Line, limits:
     return np.where(with_fio2 != 0, with_fio2, _code_of(readings.device, last))
 
 
-def _venous_rows(readings: Readings, line: _Line, limits: CarryLimits) -> Ints:
+def _venous_rows(readings: Readings, line: Line, limits: CarryLimits) -> Ints:
     """Row of the mixed-venous sample nearest to each arterial one, else of the central-venous one."""
     measured = np.zeros(len(readings), dtype=np.bool_)
     for name in _SAMPLE:
@@ -294,13 +322,9 @@ def _venous_rows(readings: Readings, line: _Line, limits: CarryLimits) -> Ints:
     return np.where(readings.site == Site.ARTERIAL, rows, -1)
 
 
-def _previous(readings: Readings, line: _Line) -> Ints:
+def _previous(readings: Readings, line: Line) -> Ints:
     arterial = readings.site == Site.ARTERIAL
-    n = len(arterial)
-    seen = np.maximum.accumulate(np.where(arterial[line.order], np.arange(n), -1))
-    before = np.append(-1, seen[:-1])[:n]
-    rows = line.back(np.where(before >= line.start, before, -1))
-    return np.where(arterial, rows, -1)
+    return np.where(arterial, earlier(np.where(arterial, 0.0, np.nan), line), -1)
 
 
 def _filled(column: Floats, source: Ints | None) -> Floats:
