@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from worksheet.oxygen import ledger as ledgers
+from worksheet.oxygen.ledger_table import Level
 from worksheet.oxygen.readings import Floats, Ints
 from worksheet.ward.display import Display
 from worksheet.ward.sheet import Sheet
@@ -40,30 +41,25 @@ class Changes:
         return len(self.start)
 
 
-_QUANTITY = {ledgers.Level.CAO2: "cao2", ledgers.Level.DO2: "do2", ledgers.Level.DO2I: "do2i"}
+_QUANTITY = {Level.CAO2: "cao2", Level.DO2: "do2", Level.DO2I: "do2i"}
 
 
 def changes_of(sheet: Sheet, rows: Ints) -> Changes:
-    """Consecutive ledgers between the arterial rows among ``rows``, all counted alike.
+    """Consecutive ledgers from the first to the last arterial row among ``rows``, all counted alike.
 
-    Counted in what both the first and the last sample know; samples that know less are stepped over, so that the
-    intervals add up to the change of the window.
+    Counted in what both ends know; samples between that know less are stepped over, so that the intervals add up to
+    the change of the window.
     """
     rows = points.arterial(sheet, rows)
-    derived = sheet.derived
-    found = [np.isfinite(derived[name][rows]) for name in ("do2i", "do2", "cao2")]
-    known = np.select(found, [ledgers.Level.DO2I, ledgers.Level.DO2, ledgers.Level.CAO2], ledgers.Level.NONE)
-    rows, known = rows[known > ledgers.Level.NONE], known[known > ledgers.Level.NONE]
+    rows = rows[np.isfinite(sheet.derived["cao2"][rows])]
     if len(rows) < 2:
-        return Changes("cao2", *np.zeros((2, 0)), {step.name: np.zeros(0) for step in STEPS}, np.zeros(0))
-    level = min(known[0], known[-1])
-    rows = rows[known >= level]
-    first, last = rows[:-1], rows[1:]
-    most = np.full(len(first), level, dtype=np.int8)
-    got = ledgers.between(sheet.snapshots, derived, first, last, sheet.constants, level=most)
+        return Changes("cao2", np.zeros(0), np.zeros(0), {step.name: np.zeros(0) for step in STEPS}, np.zeros(0))
+    first, last = int(rows[0]), int(rows[-1])
+    got = ledgers.intervals(sheet.snapshots, sheet.derived, first, last, sheet.constants, sheet.settings)
     times = sheet.readings.time
     steps = {step.name: got.step(step.name) for step in STEPS}
-    return Changes(_QUANTITY[ledgers.Level(int(level))], times[first], times[last], steps, got.residual)
+    quantity = _QUANTITY[Level(int(got.level[0]))]
+    return Changes(quantity, times[got.start_row], times[got.end_row], steps, got.residual)
 
 
 def change_ledger(changes: Changes, display: Display, scale: TimeScale | None = None) -> Chart:

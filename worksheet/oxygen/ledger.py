@@ -261,10 +261,9 @@ def window(
         One row for each window.
     """
     ends = _compare(snapshots, derived, start_rows, end_rows, constants, settings, None, unloading)
-    owner, low, high = _chain(snapshots, derived, ends)
+    owner, each = _intervals(snapshots, derived, ends, constants, settings, unloading)
     if not len(owner):
         return ends
-    each = _compare(snapshots, derived, low, high, constants, settings, ends.level[owner], unloading)
     none = ends.level == Level.NONE
 
     def summed(values: Floats) -> Floats:
@@ -278,6 +277,45 @@ def window(
         ends, lung=lung, haemoglobin=haemoglobin, function=function, flow=flow, total=total, residual=residual,
         parts=parts,
     )  # fmt: skip
+
+
+def intervals(
+    snapshots: Snapshots,
+    derived: Derived,
+    start_row: int,
+    end_row: int,
+    constants: Constants,
+    settings: Uncertainties = DEFAULT,
+) -> Ledger:
+    """The consecutive ledgers that one window's ledger is the sum of.
+
+    Parameters
+    ----------
+    snapshots, derived : Snapshots, Derived
+        The rows and what follows from them.
+    start_row, end_row : int
+        The ends of the window, of one stay [row number].
+    constants : Constants
+        Constants in force.
+    settings : Uncertainties
+        Standard uncertainties in force.
+
+    Returns
+    -------
+    Ledger
+        One row for each interval, in time order, all at one level; empty without a comparison.
+    """
+    first, last = np.array([start_row]), np.array([end_row])
+    ends = _compare(snapshots, derived, first, last, constants, settings, None, False)
+    return _intervals(snapshots, derived, ends, constants, settings, False)[1]
+
+
+def _intervals(
+    snapshots: Snapshots, derived: Derived, ends: Ledger, constants: Constants, settings: Uncertainties, unloading: bool
+) -> tuple[Ints, Ledger]:
+    """The intervals of each window: whose they are, and their ledgers."""
+    owner, low, high = _chain(snapshots, derived, ends)
+    return owner, _compare(snapshots, derived, low, high, constants, settings, ends.level[owner], unloading)
 
 
 def _chain(snapshots: Snapshots, derived: Derived, ends: Ledger) -> tuple[Ints, Ints, Ints]:
