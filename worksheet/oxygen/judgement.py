@@ -21,7 +21,7 @@ from scipy.special import ndtri
 from .change import Z95
 from .constants import Constants
 from .domain import Floats, quiet
-from .ledger import window, window_ends
+from .ledger import between, window, window_ends
 from .ledger_table import STEPS, Ledger, Level, Note
 from .measurement import DEFAULT, Uncertainties
 from .readings import Bools, Derived, Flag, Ints, Snapshots
@@ -207,8 +207,11 @@ class Review:
     stay : ndarray of int64
         Stays in ascending order.
     ledger : Ledger
-        Window ledger between the first and the last arterial row, one row a stay.
-    flow_ledger, function_ledger : Ledger
+        The window's ledger, one row a stay: the sum of its consecutive ledgers.
+    ends : Ledger
+        First and last arterial row compared directly. Steps are judged from this: what came and went in between is in
+        the sum, but says nothing of now against the start.
+    flow_ends, function_ends : Ledger
         The same between the first and last rows that know flow, and dyshaemoglobins: where the ends of the window do
         not, the step is judged from these.
     judgement : Judgement
@@ -217,8 +220,9 @@ class Review:
 
     stay: Ints
     ledger: Ledger
-    flow_ledger: Ledger
-    function_ledger: Ledger
+    ends: Ledger
+    flow_ends: Ledger
+    function_ends: Ledger
     judgement: Judgement
 
 
@@ -253,8 +257,9 @@ def review(
     tables = []
     for rows in (None, with_flow, with_dys):
         stays, start, end = window_ends(snapshots, derived, since, until, rows)
-        tables.append(window(snapshots, derived, start, end, constants, settings))
+        tables.append(between(snapshots, derived, start, end, constants, settings))
     whole, flow, function = tables
+    summed = window(snapshots, derived, whole.start_row, whole.end_row, constants, settings)
     part, sd = relative_parts(whole)
     for name, other, stale in (
         ("flow", flow, np.isnan(part["flow"])),
@@ -265,4 +270,4 @@ def review(
         part[name] = np.where(better, part_there[name], part[name])
         sd[name] = np.where(better, sd_there[name], sd[name])
     missing = np.isnan(part["flow"]) & use_is_worse(snapshots, derived, whole, settings)
-    return Review(stays, whole, flow, function, conclude(part, sd, missing))
+    return Review(stays, summed, whole, flow, function, conclude(part, sd, missing))

@@ -1,0 +1,335 @@
+"""What a review window says, in one or two sentences: no score, no order, no diagnosis."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from .change import RealChange, real_change
+from .constants import Constants
+from .judgement import MATERIAL, NONE, UNDETERMINED, Judgement, Review, judge, limiting_steps, review
+from .ledger_table import STEPS, UNITS, Ledger, Level, Note
+from .measurement import DEFAULT, Uncertainties
+from .readings import Derived, Flag, Ints, Snapshots
+from .speech import PLAIN, Speech, age, joined
+from .trend import LactateTrend, lactate_trend
+from .uncertainty import standard_uncertainties
+
+__all__ = ["Evidence", "Judgement", "Review", "Use", "Verdict", "judge", "limiting_steps", "review", "verdict"]
+
+QUANTITY = {Level.DO2I: "do2i", Level.DO2: "do2", Level.CAO2: "cao2"}
+_NAMES = {Level.DO2I: "Delivery", Level.DO2: "Delivery", Level.CAO2: "Arterial oxygen content"}
+CRITICAL_EXTRACTION = 0.60  # Ronco 1993, JAMA 270:1724
+
+
+@dataclass(frozen=True)
+class Evidence:
+    """One step's part in the change.
+
+    Attributes
+    ----------
+    step : str
+        Of ``ledger.STEPS``.
+    change, sd : float
+        Contribution in the ledger and its SD [unit of the level].
+    share, sd_share : float
+        The contribution as it is judged and its SD, of the supply at the start [1].
+    real, material : bool
+        Whether a loss is beyond noise, and at least 5 % of the supply at the start.
+    words : str
+        What changed, with the measured values.
+    """
+
+    step: str
+    change: float
+    sd: float
+    share: float
+    sd_share: float
+    real: bool
+    material: bool
+    words: str
+
+
+@dataclass(frozen=True)
+class Use:
+    """What the tissues made of it: extraction at both ends and the course of lactate.
+
+    Attributes
+    ----------
+    extraction : RealChange or None
+        Change of O2ER, None where it is not known at both ends [0-1].
+    now : float
+        O2ER at the end, NaN where not known [0-1].
+    lactate : LactateTrend
+        Course of lactate in the window.
+    worse : bool
+        Whether either worsened beyond noise.
+    words : str
+        Empty where nothing is known.
+    """
+
+    extraction: RealChange | None
+    now: float
+    lactate: LactateTrend
+    worse: bool
+    words: str
+
+
+@dataclass(frozen=True)
+class Verdict:
+    """What a window says of one stay.
+
+    Attributes
+    ----------
+    sentences : tuple of str
+        One or two.
+    limiting_step : str
+        As in :func:`limiting_steps`.
+    total : RealChange or None
+        Change of supply [unit of the level].
+    unit : str
+        Of the change.
+    evidence : tuple of Evidence
+        The four steps.
+    use : Use
+        Extraction and lactate.
+    basis : tuple of str
+        What is assumed, carried, missing or not re-measured.
+    """
+
+    sentences: tuple[str, ...]
+    limiting_step: str
+    total: RealChange | None
+    unit: str
+    evidence: tuple[Evidence, ...]
+    use: Use
+    basis: tuple[str, ...]
+
+    @property
+    def text(self) -> str:
+        """The sentences together."""
+        return " ".join(self.sentences)
+
+
+def verdict(
+    snapshots: Snapshots,
+    derived: Derived,
+    found: Review,
+    stay: int,
+    constants: Constants,
+    settings: Uncertainties = DEFAULT,
+    speech: Speech = PLAIN,
+) -> Verdict:
+    """The verdict on one stay of a review, in words.
+
+    Parameters
+    ----------
+    snapshots, derived : Snapshots, Derived
+        The rows and what follows from them.
+    found : Review
+        Of :func:`review`.
+    stay : int
+        Which stay.
+    constants : Constants
+        Constants in force.
+    settings : Uncertainties
+        Standard uncertainties in force.
+    speech : Speech
+        How numbers and times are said.
+
+    Returns
+    -------
+    Verdict
+        Sentences, evidence and what they rest on.
+    """
+    at = int(np.searchsorted(found.stay, stay))
+    if at >= len(found.stay) or found.stay[at] != stay:
+        raise KeyError(f"no stay {stay} in this review")
+    one, step = found.ledger.take(np.array([at])), str(found.judgement.step[at])
+    if one.level[0] == Level.NONE:
+        use = _use(snapshots, derived, constants, settings, _rows_of(snapshots, stay), speech)
+        return Verdict((_NOTHING,), step, None, "", (), use, ())
+    rows = _rows_of(snapshots, stay, int(one.start_row[0]), int(one.end_row[0]))
+    use = _use(snapshots, derived, constants, settings, rows, speech)
+    evidence = tuple(_evidence(snapshots, derived, found, at, name, speech) for name in STEPS)
+    total = real_change(one.total[0], one.sd["total"][0])
+    sentences = (_supply(one, total, snapshots, speech), _cause(step, evidence, total, use))
+    basis = _basis(snapshots, derived, one, use, speech)
+    return Verdict(sentences, step, total, UNITS[int(one.level[0])], evidence, use, basis)
+
+
+_NOTHING = "Nothing to compare: two arterial gases with haemoglobin are needed."
+
+
+def _rows_of(snapshots: Snapshots, stay: int, first: int | None = None, last: int | None = None) -> Ints:
+    """Rows of a stay in time order, between two of them."""
+    rows: Ints = snapshots.order[snapshots.readings.stay[snapshots.order] == stay]
+    time = snapshots.readings.time
+    if first is None or last is None:
+        return rows
+    within: Ints = rows[(time[rows] >= time[first]) & (time[rows] <= time[last])]
+    return within
+
+
+def _supply(one: Ledger, total: RealChange, snapshots: Snapshots, speech: Speech) -> str:
+    """How supply changed, and whether beyond noise."""
+    level = Level(int(one.level[0]))
+    name, start = QUANTITY[level], float(one.start_supply[0])
+    since = speech.clock(float(snapshots.readings.time[one.start_row[0]]))
+    share, half = 100.0 * float(total.change) / start, 100.0 * 1.96 * float(total.sd) / start
+    if not bool(total.beyond_noise):
+        change = f"{speech.number(share, 0, True)} % ± {speech.number(half, 0)}"
+        return f"{_NAMES[level]} is unchanged beyond measurement noise since {since} ({change})."
+    verb = "fell" if share < 0.0 else "rose"
+    ends = f"{speech.value(name, start)} to {speech.value(name, float(one.end_supply[0]), with_unit=True)}"
+    return f"{_NAMES[level]} {verb} {speech.number(abs(share), 0)} % ± {speech.number(half, 0)} since {since} ({ends})."
+
+
+def _cause(step: str, evidence: tuple[Evidence, ...], total: RealChange, use: Use) -> str:
+    """Which step it was, what made up for it, and what the tissues say."""
+    by_name = {item.step: item for item in evidence}
+    if step == UNDETERMINED:
+        lost = [item for item in evidence if item.real and item.material]
+        said = (
+            f"{joined([item.words for item in lost])} both took supply; which took more cannot be told"
+            if len(lost) > 1
+            else "No step that was measured explains it; flow was not measured and could be the cause"
+        )
+    elif step == NONE:
+        said = "No step lost supply beyond noise"
+    else:
+        said = _named(by_name[step], evidence, bool(total.high < 0.0))
+    return _capital(f"{said}{'; ' + use.words if use.words else ''}.")
+
+
+def _named(worst: Evidence, evidence: tuple[Evidence, ...], fell: bool) -> str:
+    """The step that failed, what else was lost, and what made up for it."""
+    losses = -sum(min(item.share, 0.0) for item in evidence if item.real or item is worst)
+    others = [item.step for item in evidence if item is not worst and item.real and item.material]
+    gains = [item.words for item in evidence if item.share >= MATERIAL and item.share > 2.0 * item.sd_share]
+    if fell:
+        said = f"{_part_words(-worst.share / losses)} of the loss is {worst.words}"
+        said += f", the rest {joined(others)}" if others else ""
+        return said + (f"; {joined(gains)} made up for part of it" if gains else "")
+    said = f"{worst.words} took {-100.0 * worst.share:.0f} % of supply"
+    said += f", {joined(others)} some more" if others else ""
+    return said + (f"; {joined(gains)} made up for it" if gains else "")
+
+
+def _part_words(share: float) -> str:
+    limits = ((0.95, "all"), (0.85, "nearly all"), (0.70, "three quarters"), (0.58, "two thirds"), (0.42, "half"))
+    return next((word for least, word in limits if share >= least), "a third")
+
+
+def _capital(text: str) -> str:
+    return text[:1].upper() + text[1:]
+
+
+def _evidence(snapshots: Snapshots, derived: Derived, found: Review, at: int, step: str, speech: Speech) -> Evidence:
+    """One step: its part and what was measured at both ends."""
+    source = found.ends
+    if step == "flow" and found.ends.level[at] <= Level.CAO2:
+        source = found.flow_ends
+    if step == "function" and found.ends.notes[at] & Note.DYSHAEMOGLOBINS_NOT_REMEASURED:
+        source = found.function_ends
+    ends = int(source.start_row[at]), int(source.end_row[at])
+    judged = found.judgement
+    return Evidence(
+        step, float(found.ledger.step(step)[at]), float(found.ledger.sd[step][at]),
+        float(judged.part[step][at]), float(judged.sd[step][at]),
+        bool(judged.real[step][at]), bool(judged.material[step][at]),
+        _step_words(snapshots, derived, step, ends, speech) if min(ends) >= 0 else f"{step} (not measured)",
+    )  # fmt: skip
+
+
+def _step_words(snapshots: Snapshots, derived: Derived, step: str, ends: tuple[int, int], speech: Speech) -> str:
+    """What was measured for a step, at the start and at the end."""
+    if step == "function":
+        if abs(float(derived.inactive[ends[0]] - derived.inactive[ends[1]])) < 0.01:
+            return "function (shift of the curve)"
+        active = (speech.number(100.0 * (1.0 - float(derived.inactive[row])), 0) for row in ends)
+        return f"function (active haemoglobin {' → '.join(active)} %)"
+    names = {"lung": ("po2",), "haemoglobin": ("hb",), "flow": ("cardiac_index", "cardiac_output")}[step]
+    said = {"lung": "the lung (PaO2", "haemoglobin": "haemoglobin (", "flow": "flow ("}[step]
+    for name in names:
+        values = [float(snapshots[name][row]) for row in ends]
+        if np.all(np.isfinite(values)):
+            first = speech.value(name, values[0])
+            return f"{said.rstrip()} {first} → {speech.value(name, values[1], with_unit=True)})".replace("( ", "(")
+    return {"lung": "the lung"}.get(step, step)
+
+
+def _use(
+    snapshots: Snapshots, derived: Derived, constants: Constants, settings: Uncertainties, rows: Ints, speech: Speech
+) -> Use:
+    """Extraction at both ends, lactate over the window."""
+    readings = snapshots.readings
+    lactate = lactate_trend(readings.time[rows], readings["lactate"][rows], readings.site[rows], settings)
+    known = rows[~np.isnan(derived["o2er"][rows])]
+    extraction, now = None, np.nan
+    if len(known):
+        now = float(derived["o2er"][known[-1]])
+    if len(known) > 1:
+        sds = standard_uncertainties(snapshots, derived, constants, settings)["o2er"]
+        change = now - float(derived["o2er"][known[0]])
+        extraction = real_change(change, float(np.hypot(sds[known[0]], sds[known[-1]])))
+    rising = lactate.kind == "rising" or (lactate.kind == "change" and lactate.beyond_noise and lactate.decrease < 0.0)
+    worse = rising or (extraction is not None and bool(extraction.low > 0.0))
+    said = [text for text in (_extraction_words(extraction, now, speech), _lactate_words(lactate, speech)) if text]
+    return Use(extraction, now, lactate, worse, ", ".join(said))
+
+
+def _extraction_words(extraction: RealChange | None, now: float, speech: Speech) -> str:
+    if not np.isfinite(now):
+        return ""
+    value = speech.value("o2er", now, with_unit=True)
+    beyond = " (near the critical range)" if now >= CRITICAL_EXTRACTION else ""
+    if extraction is None or not bool(extraction.beyond_noise):
+        return f"extraction is {value}{beyond}"
+    return f"extraction {'rose' if extraction.change > 0.0 else 'fell'} to {value}{beyond}"
+
+
+def _lactate_words(lactate: LactateTrend, speech: Speech) -> str:
+    now = speech.value("lactate", lactate.last, with_unit=True)
+    if lactate.kind in ("rising", "falling"):
+        verb = "doubling" if lactate.kind == "rising" else "halving"
+        span = f"{speech.number(lactate.time_low, 0)}–{speech.number(lactate.time_high, 0)}"
+        return f"lactate is {lactate.kind} ({now}, {verb} in {speech.number(lactate.time, 0)} h, {span})"
+    if lactate.kind == "normal":
+        return f"lactate is normal ({now})"
+    if lactate.kind == "change" and lactate.beyond_noise:
+        return f"lactate {'fell' if lactate.decrease > 0.0 else 'rose'} to {now}"
+    return f"lactate is {now}" if np.isfinite(lactate.last) else ""
+
+
+_NOTE_WORDS = (
+    (Note.FLOW_MISSING, "flow not measured at both ends: judged on content"),
+    (Note.FLOW_NOT_REMEASURED, "flow not re-measured"),
+    (Note.HB_NOT_REMEASURED, "haemoglobin not re-measured"),
+    (Note.DYSHAEMOGLOBINS_ASSUMED, "dyshaemoglobins not measured: usual share assumed"),
+    (Note.DYSHAEMOGLOBINS_NOT_REMEASURED, "dyshaemoglobins not re-measured: taken as unchanged"),
+    (Note.SATURATION_CALCULATED, "saturation calculated, not measured"),
+    (Note.SATURATION_BY_TWO_WAYS, "saturation obtained in two ways"),
+    (Note.HB_BY_TWO_METHODS, "haemoglobin by two methods"),
+    (Note.FLOW_BY_TWO_METHODS, "flow by two methods"),
+    (Note.FLOW_METHOD_UNKNOWN, "method of flow not recorded: taken as one method"),
+    (Note.SHIFT_UNKNOWN, "pH or PCO2 missing at one end: curve taken as unshifted"),
+    (Note.PO2_MISSING, "PO2 missing at one end: saturation counted for the lung as a whole"),
+)
+
+
+def _basis(snapshots: Snapshots, derived: Derived, one: Ledger, use: Use, speech: Speech) -> tuple[str, ...]:
+    """What is assumed, carried, missing or not re-measured."""
+    notes, last = int(one.notes[0]), int(one.end_row[0])
+    said = [words for bit, words in _NOTE_WORDS if notes & bit]
+    for name, words in (("hb", "haemoglobin"), ("cardiac_output", "flow"), ("cardiac_index", "flow")):
+        source, hours = int(snapshots.source[name][last]), float(snapshots.age[name][last])
+        if source >= 0 and source != last and abs(hours) > 1.0 / 60.0:
+            when = speech.clock(float(snapshots.readings.time[source]))
+            said.append(f"{words} from {when} ({age(hours)} {'old' if hours > 0.0 else 'later'})")
+    if np.isfinite(use.now) and int(derived.flags[last]) & Flag.CENTRAL_VENOUS:
+        said.append("central venous sample: extraction is an estimate")
+    if use.lactate.mixed:
+        said.append("arterial and venous lactate taken together")
+    return tuple(dict.fromkeys(said))
