@@ -16,6 +16,8 @@ from .description import Axis, Chart, Contour, Series, Style
 from .scales import TimeScale, WallClock, round_step, value_axis
 
 HEIGHT = 380
+_SHORTEST = 0.15  # of the panel: a contour that only cuts a corner says nothing
+_LABEL_WIDTH, _LABEL_HEIGHT = 0.05, 0.04  # of the panel, what a number takes
 MOST_NUMBERS = 7  # numbered points on a path; the first and the last always
 
 
@@ -91,9 +93,13 @@ def _map(
         series = (
             Series("line", "Samples in time order", y_axis.key, points.floats(x), points.floats(y),
                    Style("ink", "solid", "circle", width=1.4), carried=points.carried(held, flags), notes=notes,
-                   marks=path_marks(len(rows))),
+                   marks=_uncrowded(path_marks(len(rows)), x_axis, y_axis, x, y)),
         )  # fmt: skip
-    summary = f"From {notes[0]} to {notes[-1]}." if len(notes) > 1 else (notes[0] if notes else y_axis.empty)
+    ends = dict.fromkeys((0, len(rows) - 1)) if len(rows) else ()
+    summary = (
+        " ".join(f"Sample {n + 1}, {scale.text(float(times[n]))}: {points.label(held)} {value[n]}." for n in ends)
+        or f"{y_axis.empty}."
+    )
     return Chart(key, title, alt, summary, x_axis, (y_axis,), series, (), lines, (), HEIGHT, display.decimal_comma)
 
 
@@ -102,6 +108,19 @@ def path_marks(count: int) -> tuple[str, ...]:
     every = max(1, -(-count // MOST_NUMBERS))
     numbered = {0, count - 1, *range(0, max(count - every // 2 - 1, 0), every)}
     return tuple(str(n + 1) if n in numbered else "" for n in range(count))
+
+
+def _uncrowded(marks: tuple[str, ...], x_axis: Axis, y_axis: Axis, x: Floats, y: Floats) -> tuple[str, ...]:
+    """The marks without those that would print over another; the first and the last stay."""
+    across = (np.asarray(x) - x_axis.low) / (x_axis.high - x_axis.low)
+    up = (np.asarray(y) - y_axis.low) / (y_axis.high - y_axis.low)
+    last = len(marks) - 1
+    kept: list[int] = []
+    for i in dict.fromkeys((last, 0, *range(1, last))):
+        apart = all(abs(across[i] - across[j]) > _LABEL_WIDTH or abs(up[i] - up[j]) > _LABEL_HEIGHT for j in kept)
+        if marks[i] and (apart or i == 0):
+            kept.append(i)
+    return tuple(mark if i in kept else "" for i, mark in enumerate(marks))
 
 
 def _middle_dissolved(sheet: Sheet, rows: Ints) -> float:
@@ -139,5 +158,7 @@ def _clipped(grid: Floats, line: Floats, y: Axis, label: str) -> Iterator[Contou
     inside = np.unique(np.concatenate([grid[(line >= lo) & (line <= hi)], edges]))
     values = np.interp(inside, grid, line)
     ok = (values >= lo - 1e-6 * abs(hi)) & (values <= hi + 1e-6 * abs(hi))
-    if ok.sum() >= 2:
+    wide = np.ptp(inside[ok]) / (grid[-1] - grid[0]) if ok.any() else 0.0
+    tall = np.ptp(values[ok]) / (hi - lo) if ok.any() else 0.0
+    if wide + tall > _SHORTEST:
         yield Contour(y.key, label, points.floats(inside[ok]), points.floats(values[ok]))
