@@ -33,21 +33,21 @@ def at_the_end(so2=0.97, po2=95.0, **changed):
 
 
 @pytest.mark.parametrize(
-    ("found", "by_hand"),
+    ("function", "given", "by_hand"),
     [
-        (functional_to_fractional(0.98, 0.02), 0.9604),
-        (functional_to_fractional(1.0, 0.0), 1.0),
-        (capacity(15.0, 0.0, DEFAULT), 20.85),
-        (capacity(15.0, 0.2, DEFAULT), 16.68),
-        (dissolved_oxygen(100.0, DEFAULT), 0.31),
-        (dissolved_oxygen(100.0, DEFAULT, 27.0), 0.31 * np.exp(0.12)),
-        (oxygen_content(10.0, 0.95, 100.0, DEFAULT), 13.205 + 0.31),
-        (oxygen_content(0.0, 0.0, 100.0, DEFAULT), 0.31),
-        (co2_content_plasma(0.0, 7.4), 0.0),
+        (functional_to_fractional, (0.98, 0.02), 0.9604),
+        (functional_to_fractional, (1.0, 0.0), 1.0),
+        (capacity, (15.0, 0.0, DEFAULT), 20.85),
+        (capacity, (15.0, 0.2, DEFAULT), 16.68),
+        (dissolved_oxygen, (100.0, DEFAULT), 0.31),
+        (dissolved_oxygen, (100.0, DEFAULT, 27.0), 0.31 * np.exp(0.12)),
+        (oxygen_content, (10.0, 0.95, 100.0, DEFAULT), 13.205 + 0.31),
+        (oxygen_content, (0.0, 0.0, 100.0, DEFAULT), 0.31),
+        (co2_content_plasma, (0.0, 7.4), 0.0),
     ],
 )
-def test_worked_by_hand(found, by_hand):
-    assert found == pytest.approx(by_hand, rel=1e-9)
+def test_worked_by_hand(function, given, by_hand):
+    assert function(*given) == pytest.approx(by_hand, rel=1e-9)
 
 
 def test_plasma_content_worked_by_hand():
@@ -67,35 +67,32 @@ def test_blood_content_worked_by_hand():
 
 
 @pytest.mark.parametrize(
-    ("inside", "outside"),
+    ("function", "inside", "outside"),
     [
-        (functional_to_fractional(0.0, 0.1), functional_to_fractional(BELOW, 0.1)),
-        (functional_to_fractional(1.0, 0.1), functional_to_fractional(ABOVE, 0.1)),
-        (functional_to_fractional(0.9, 0.0), functional_to_fractional(0.9, BELOW)),
-        (functional_to_fractional(0.9, 1.0), functional_to_fractional(0.9, ABOVE)),
-        (capacity(0.0, 0.1, DEFAULT), capacity(BELOW, 0.1, DEFAULT)),
-        (capacity(0.5, 0.1, DEFAULT), capacity(-0.5, 0.1, DEFAULT)),
-        (capacity(15.0, 0.0, DEFAULT), capacity(15.0, BELOW, DEFAULT)),
-        (capacity(15.0, 1.0, DEFAULT), capacity(15.0, ABOVE, DEFAULT)),
-        (dissolved_oxygen(0.0, DEFAULT), dissolved_oxygen(BELOW, DEFAULT)),
-        (oxygen_content(0.0, 0.9, 90.0, DEFAULT), oxygen_content(BELOW, 0.9, 90.0, DEFAULT)),
-        (oxygen_content(15.0, 0.0, 90.0, DEFAULT), oxygen_content(15.0, BELOW, 90.0, DEFAULT)),
-        (oxygen_content(15.0, 1.0, 90.0, DEFAULT), oxygen_content(15.0, ABOVE, 90.0, DEFAULT)),
-        (oxygen_content(15.0, 0.9, 0.0, DEFAULT), oxygen_content(15.0, 0.9, BELOW, DEFAULT)),
-        (co2_content_plasma(0.0, 7.4), co2_content_plasma(BELOW, 7.4)),
-        (co2_content_blood(40.0, 7.8, 15.0, 0.9), co2_content_blood(40.0, 8.142, 15.0, 0.9)),
-        (co2_content_blood(40.0, 7.4, 0.0, 0.9), co2_content_blood(40.0, 7.4, BELOW, 0.9)),
-        (co2_content_blood(40.0, 7.4, 15.0, 0.0), co2_content_blood(40.0, 7.4, 15.0, BELOW)),
-        (co2_content_blood(40.0, 7.4, 15.0, 1.0), co2_content_blood(40.0, 7.4, 15.0, ABOVE)),
-        (
-            co2_content_blood(40.0, 8.0, 12.0, 0.9),
-            co2_content_blood(40.0, 8.0, 15.0, 0.9),
-        ),  # cells would hold less than 0
+        (functional_to_fractional, (0.0, 0.1), (BELOW, 0.1)),
+        (functional_to_fractional, (1.0, 0.1), (ABOVE, 0.1)),
+        (functional_to_fractional, (0.9, 0.0), (0.9, BELOW)),
+        (functional_to_fractional, (0.9, 1.0), (0.9, ABOVE)),
+        (capacity, (0.0, 0.1, DEFAULT), (BELOW, 0.1, DEFAULT)),
+        (capacity, (0.5, 0.1, DEFAULT), (-0.5, 0.1, DEFAULT)),
+        (capacity, (15.0, 0.0, DEFAULT), (15.0, BELOW, DEFAULT)),
+        (capacity, (15.0, 1.0, DEFAULT), (15.0, ABOVE, DEFAULT)),
+        (dissolved_oxygen, (0.0, DEFAULT), (BELOW, DEFAULT)),
+        (oxygen_content, (0.0, 0.9, 90.0, DEFAULT), (BELOW, 0.9, 90.0, DEFAULT)),
+        (oxygen_content, (15.0, 0.0, 90.0, DEFAULT), (15.0, BELOW, 90.0, DEFAULT)),
+        (oxygen_content, (15.0, 1.0, 90.0, DEFAULT), (15.0, ABOVE, 90.0, DEFAULT)),
+        (oxygen_content, (15.0, 0.9, 0.0, DEFAULT), (15.0, 0.9, BELOW, DEFAULT)),
+        (co2_content_plasma, (0.0, 7.4), (BELOW, 7.4)),
+        (co2_content_blood, (40.0, 7.8, 15.0, 0.9), (40.0, 8.142, 15.0, 0.9)),
+        (co2_content_blood, (40.0, 7.4, 0.0, 0.9), (40.0, 7.4, BELOW, 0.9)),
+        (co2_content_blood, (40.0, 7.4, 15.0, 0.0), (40.0, 7.4, 15.0, BELOW)),
+        (co2_content_blood, (40.0, 7.4, 15.0, 1.0), (40.0, 7.4, 15.0, ABOVE)),
+        (co2_content_blood, (40.0, 8.0, 12.0, 0.9), (40.0, 8.0, 15.0, 0.9)),  # cells would hold less than 0
     ],
 )
-def test_edges_of_the_domain(inside, outside):
-    assert np.isfinite(inside)
-    assert np.isnan(outside)
+def test_edges_of_the_domain(function, inside, outside):
+    assert np.isfinite(function(*inside))
+    assert np.isnan(function(*outside))
 
 
 def test_extractable_oxygen_worked_by_hand():
@@ -164,8 +161,21 @@ def test_severinghaus_site_scales_the_curve_through_the_pair():
     assert found == pytest.approx(curve.saturation_severinghaus(at_38), abs=1e-12)
     modelled = at_the_end(0.99, 70.0, ph=7.3, pco2=50.0, constants=SEVERINGHAUS)
     assert modelled == pytest.approx(curve.saturation_severinghaus_kelman(38.0, 7.3, 50.0), abs=1e-12)
+    cold = at_the_end(0.90, 70.0, temperature=33.0, constants=SEVERINGHAUS)
+    body = po2_at(70.0, 33.0), ph_at(7.4, 33.0), pco2_at(40.0, 33.0), 33.0
+    scale = curve.po2_ellis(0.90) / curve.kelman_equivalent_po2(*body)
+    assert cold == pytest.approx(
+        curve.saturation_severinghaus(curve.kelman_equivalent_po2(38.0, *body[1:]) * scale), abs=1e-12
+    )
     assert np.isnan(at_the_end(cohb=np.nan, constants=SEVERINGHAUS))
     assert np.isnan(at_the_end(methb=np.nan, constants=SEVERINGHAUS))
+
+
+def test_a_saturation_out_of_range_has_no_end():
+    assert np.isfinite(at_the_end(so2=1.0))
+    assert np.isfinite(at_the_end(so2=0.0))
+    assert np.isnan(at_the_end(so2=1.0 + 1e-9))
+    assert np.isnan(at_the_end(so2=-1e-9))
 
 
 def test_end_capillary_pressure_follows_the_site():

@@ -140,23 +140,23 @@ def test_predicted_reading(so2, cohb, methb, spo2):
 
 
 @pytest.mark.parametrize(
-    ("inside", "outside"),
+    ("function", "inside", "outside"),
     [
-        (predicted_spo2(0.0, 0.0, 0.0), predicted_spo2(-1e-9, 0.0, 0.0)),
-        (predicted_spo2(1.0, 0.0, 0.0), predicted_spo2(1.0 + 1e-9, 0.0, 0.0)),
-        (predicted_spo2(0.9, 0.5, 0.5), predicted_spo2(0.9, 0.5, 0.5 + 1e-9)),
-        (predicted_spo2(0.9, 0.6, 0.0), predicted_spo2(0.9, 0.6 + 1e-9, 0.0)),
-        (methb_explaining(0.85, 0.98), methb_explaining(0.60, 0.98)),
-        (methb_explaining(0.77, 0.0), methb_explaining(0.77, -1e-9)),
-        (methb_explaining(0.80, 1.0), methb_explaining(0.80, 1.0 + 1e-9)),
-        (methb_explaining(0.85, 0.98, 0.0), methb_explaining(0.85, 0.98, -1e-9)),
-        (methb_explaining(0.85, 0.98), methb_explaining(1.0, 1.0)),
-        (methb_explaining(0.92, 0.95), methb_explaining(0.99, 0.95)),
+        (predicted_spo2, (0.0, 0.0, 0.0), (-1e-9, 0.0, 0.0)),
+        (predicted_spo2, (1.0, 0.0, 0.0), (1.0 + 1e-9, 0.0, 0.0)),
+        (predicted_spo2, (0.9, 0.5, 0.5), (0.9, 0.5, 0.5 + 1e-9)),
+        (predicted_spo2, (0.9, 0.6, 0.0), (0.9, 0.6 + 1e-9, 0.0)),
+        (methb_explaining, (0.85, 0.98), (0.60, 0.98)),
+        (methb_explaining, (0.77, 0.0), (0.77, -1e-9)),
+        (methb_explaining, (0.80, 1.0), (0.80, 1.0 + 1e-9)),
+        (methb_explaining, (0.85, 0.98, 0.0), (0.85, 0.98, -1e-9)),
+        (methb_explaining, (0.85, 0.98), (1.0, 1.0)),
+        (methb_explaining, (0.92, 0.95), (0.99, 0.95)),
     ],
 )
-def test_edges_of_the_domain(inside, outside):
-    assert np.isfinite(inside)
-    assert np.isnan(outside)
+def test_edges_of_the_domain(function, inside, outside):
+    assert np.isfinite(function(*inside))
+    assert np.isnan(function(*outside))
 
 
 @pytest.mark.parametrize("cohb", [0.0, 0.1, 0.3])

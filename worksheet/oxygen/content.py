@@ -171,10 +171,11 @@ def extractable_oxygen(
         Extractable oxygen [mL/dL, STPD], 0 where the arterial PO2 is no higher than the end-capillary one, NaN where
         any input is NaN or out of domain.
     """
+    (so2,) = floats(so2)
     held = capacity(hb, inactive, constants)
     left = end_capillary_saturation(so2, po2, ph, pco2, temperature, cohb, methb, constants)
     dissolved = dissolved_oxygen(po2, constants) - dissolved_oxygen(constants.end_capillary_po2, constants, temperature)
-    return np.asarray(np.maximum(held * (np.asarray(so2, dtype=np.float64) - left) + dissolved, 0.0))
+    return np.asarray(np.maximum(held * (so2 - left) + dissolved, 0.0))
 
 
 @quiet
@@ -213,22 +214,23 @@ def end_capillary_saturation(
     ndarray
         Functional saturation [0-1], NaN where any input is NaN or out of domain.
     """
-    (so2, temperature, methb) = floats(so2, temperature, methb)
-    body = po2_at(po2, temperature), ph_at(ph, temperature), pco2_at(pco2, temperature)
-    trust = _trust_of_pair(so2)
-    end = constants.end_capillary_po2
+    so2, temperature, cohb, methb = floats(so2, temperature, cohb, methb)
+    po2, ph, pco2 = po2_at(po2, temperature), ph_at(ph, temperature), pco2_at(pco2, temperature)
+    valid = (so2 >= 0.0) & (so2 <= 1.0) & ~np.isnan(po2 + cohb + methb)
+    end, trust = constants.end_capillary_po2, _trust_of_pair(so2)
     if constants.curve == "severinghaus":
-        known = ~np.isnan(np.add(cohb, methb))
-        measured = np.log(po2_ellis(so2) / kelman_equivalent_po2(*body, temperature))
-        rest = np.where(trust > 0.0, trust * measured, 0.0 * so2)
-        at_end = kelman_equivalent_po2(end, body[1], body[2], temperature) * np.exp(rest)
-        return keep(known, saturation_severinghaus(at_end))
+        scale = np.log(po2_ellis(so2) / kelman_equivalent_po2(po2, ph, pco2, temperature))
+        at_end = kelman_equivalent_po2(end, ph, pco2, temperature) * np.exp(_trusted(trust, scale))
+        return keep(valid, saturation_severinghaus(at_end))
     share = co_share(cohb, methb)
-    modelled = displacement(body[1], body[2], np.maximum(methb, 0.0))
-    measured = displacement_from_pair(body[0], so2, temperature, share)
-    rest = np.where(trust > 0.0, trust * (measured - modelled), 0.0 * so2 * body[0])
-    rest = np.where(np.isnan(measured), 0.0 * so2 * body[0], rest)
-    return saturation_with_co(end, modelled + rest, temperature, share)
+    modelled = displacement(ph, pco2, np.maximum(methb, 0.0))
+    rest = displacement_from_pair(po2, so2, temperature, share) - modelled
+    return keep(valid, saturation_with_co(end, modelled + _trusted(trust, rest), temperature, share))
+
+
+def _trusted(trust: Floats, rest: Floats) -> Floats:
+    """What a pair adds to the modelled curve; nothing where no curve passes through it."""
+    return np.where((trust > 0.0) & np.isfinite(rest), trust * rest, 0.0)
 
 
 def _trust_of_pair(so2: Floats) -> Floats:
