@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+import time
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import cached_property
 
 import numpy as np
 
-from worksheet.oxygen import align, derive, ledger, uncertainty
+from worksheet.oxygen import align, derive, judgement, ledger, plausibility, uncertainty
 from worksheet.oxygen.constants import Constants
 from worksheet.oxygen.measurement import DEFAULT, Uncertainties
 from worksheet.oxygen.quantities import MEASURED
@@ -33,6 +34,7 @@ class Sheet:
     derived: Derived
     constants: Constants
     settings: Uncertainties = DEFAULT
+    refused: plausibility.Refused = field(default_factory=dict)  # stored values that cannot be, kept out of the pass
 
     @cached_property
     def sds(self) -> Mapping[str, Floats]:
@@ -43,6 +45,21 @@ class Sheet:
     def ledger(self) -> ledger.Ledger:
         """Change ledger of each arterial row against its stay's previous arterial row."""
         return ledger.consecutive(self.snapshots, self.derived, self.constants, self.settings)
+
+    @cached_property
+    def findings(self) -> plausibility.Findings:
+        """Everything implausible about these entries."""
+        return plausibility.findings(
+            self.snapshots, self.derived, self.constants, time.time() / 3600, self._admitted(), self.refused
+        )
+
+    def review(self, since: float, until: float = np.inf) -> judgement.Review:
+        """Each stay judged over a window [h since the epoch]."""
+        return judgement.review(self.snapshots, self.derived, self.constants, self.settings, since, until)
+
+    def _admitted(self) -> Floats:
+        known = {s.pk: s.admitted_at.timestamp() / 3600 for s in self.stays if s.admitted_at}
+        return np.array([known.get(int(pk), np.nan) for pk in self.readings.stay])
 
     def rows(self, stay: Stay) -> Ints:
         """Row numbers of a stay, in time order."""
@@ -79,6 +96,9 @@ def open_sheet(unit: Unit, stays: Sequence[Stay], entries: EntryQuerySet | None 
     chosen = entries if entries is not None else Entry.objects.filter(stay__in=[s.pk for s in stays]).current()
     readings, ids = readings_of(chosen, stays)
     constants = unit.constants_in_force()
+    readings, refused = plausibility.without_impossible(readings)
     snapshots = align.align(readings, constants.carry)
     derived = derive.derive(snapshots, constants)
-    return Sheet(unit, tuple(stays), ids, readings, snapshots, derived, constants, unit.uncertainties_in_force())
+    return Sheet(
+        unit, tuple(stays), ids, readings, snapshots, derived, constants, unit.uncertainties_in_force(), refused
+    )
