@@ -23,10 +23,10 @@ def check(
     """Add every notice to the slip; the trial derivation where there is enough to derive."""
     _offer_estimate(slip)
     for each in slip.fields.values():
-        _limits(each, display)
-    _codes(slip)
-    _texts(slip)
-    _time(slip, stay, now)
+        check_limits(each, display)
+    check_codes(slip)
+    check_texts(slip)
+    check_time(slip, stay, now)
     _site(slip)
     _twice(slip, user, stay, display, replacing)
     return _derived(slip, user, stay, replacing)
@@ -40,7 +40,7 @@ def _say(slip: Slip, level: Level, field: str, code: str, words: str, about: str
 # --- single values ---
 
 
-def _limits(field: ValueField, display: Display) -> None:
+def check_limits(field: ValueField, display: Display) -> None:
     """Limits of the catalogue, said in the unit that was typed."""
     if field.value is None:
         return
@@ -85,7 +85,8 @@ def _shown(canonical: float, unit: UnitOfMeasure, display: Display) -> str:
 # --- the slip's other inputs ---
 
 
-def _codes(slip: Slip) -> None:
+def check_codes(slip: Slip) -> None:
+    """Choices that are not of their list."""
     lists: tuple[tuple[str, str, type[IntEnum], str], ...] = (
         ("site", slip.site, Site, "sampling site"),
         ("device", slip.device, Device, "device"),
@@ -98,7 +99,8 @@ def _codes(slip: Slip) -> None:
             )
 
 
-def _texts(slip: Slip) -> None:
+def check_texts(slip: Slip, *, may_be_empty: bool = False) -> None:
+    """Texts too long, and a slip with nothing on it."""
     if len(slip.sample) > 64:
         _say(
             slip,
@@ -110,11 +112,12 @@ def _texts(slip: Slip) -> None:
     if len(slip.note) > NOTE_LONGEST:
         words = f"The note has {len(slip.note)} characters; at most {NOTE_LONGEST}."
         _say(slip, Level.IMPOSSIBLE, "note", "too_long", words)
-    if slip.empty and not slip.note.strip():
+    if slip.empty and not slip.note.strip() and not may_be_empty:
         _say(slip, Level.IMPOSSIBLE, "", "empty", "Nothing is typed yet: an entry needs at least one value or a note.")
 
 
-def _time(slip: Slip, stay: Stay, now: datetime) -> None:
+def check_time(slip: Slip, stay: Stay, now: datetime) -> None:
+    """A time that cannot be, and one outside the stay."""
     moment, about = slip.moment, f"{slip.date} {slip.clock} {slip.fold}"
     if moment.at is None:
         _say(slip, Level.IMPOSSIBLE, moment.field, "time", moment.problem)

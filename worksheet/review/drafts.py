@@ -13,10 +13,11 @@ from django.urls import reverse
 from django.utils import timezone
 from django.views.decorators.http import require_http_methods, require_safe
 
+from worksheet.ward.access import person
 from worksheet.ward.display import Display
 from worksheet.ward.models import Draft, Entry, Role, Stay, User
 
-from .people import recorder, stay_for
+from .people import stay_for
 
 LARGEST = 20_000  # characters of one draft
 _FORM = re.compile(r"entry|event|correct-\d{1,18}", re.ASCII)
@@ -26,13 +27,13 @@ _NOT_KEPT = {"csrfmiddlewaretoken", "form_name", "action"}
 @require_safe
 def form_token(request: HttpRequest) -> HttpResponse:
     """Who is logged in, and a fresh form token: a form that outlived its session goes on with it."""
-    return JsonResponse({"user": recorder(request).get_username(), "token": get_token(request)})
+    return JsonResponse({"user": person(request).get_username(), "token": get_token(request)})
 
 
 @require_http_methods(["POST"])
 def draft_save(request: HttpRequest, slug: str, ref: str) -> HttpResponse:
     """Keep what is typed; answers with the time on the reader's clock, or with a sentence."""
-    user, stay = recorder(request), stay_for(request, slug, ref, Role.RECORDER)
+    user, stay = person(request), stay_for(request, slug, ref, Role.RECORDER)
     name, data = request.POST.get("form_name", ""), _kept(request)
     if not _FORM.fullmatch(name) or len(json.dumps(data)) > LARGEST:
         return _refused(400, "This draft cannot be kept: the form is unknown or the text too long.")

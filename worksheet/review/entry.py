@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+import uuid
+from dataclasses import dataclass, replace
 from typing import Any
 
 from django.contrib import messages
@@ -13,16 +14,17 @@ from django.urls import reverse
 from django.utils import timezone
 from django.views.decorators.http import require_http_methods
 
+from worksheet.oxygen.readings import Event, Site
 from worksheet.ward import record
+from worksheet.ward.access import person
 from worksheet.ward.display import Display
 from worksheet.ward.models import Entry, Stay, User
 
-from . import checks, drafts, entry_form, pasted
+from . import checks, drafts, entry_form, moments, pasted
 from .entry_form import Level, Notice, Slip
 from .entry_page import conflict_rows, page_parts
-from .people import patient_page, recorder, stay_for
-
-REASON_LONGEST = 500
+from .people import patient_page, stay_for
+from .versions import lead_to_newest, need_reason, newest
 
 
 @dataclass
@@ -38,7 +40,7 @@ class Desk:
     @classmethod
     def of(cls, request: HttpRequest, slug: str, ref: str, entry_id: int | None = None) -> Desk:
         """The desk, or 404 for who may not record here."""
-        user, stay = recorder(request), stay_for(request, slug, ref)
+        user, stay = person(request), stay_for(request, slug, ref)
         entries = Entry.objects.visible_to(user).filter(stay=stay).select_related("recorded_by", "stay__unit")
         replacing = get_object_or_404(entries, pk=entry_id) if entry_id else None
         return cls(request, user, stay, Display.of(user, stay.unit), replacing)
@@ -61,15 +63,12 @@ class Desk:
 @require_http_methods(["GET", "HEAD", "POST"])
 def entry_new(request: HttpRequest, slug: str, ref: str) -> HttpResponse:
     """Type a slip for a stay."""
-    desk = Desk.of(request, slug, ref)
-    return _save(desk) if request.method == "POST" else _open(desk)
+    return serve(Desk.of(request, slug, ref))
 
 
-@require_http_methods(["GET", "HEAD", "POST"])
-def entry_correct(request: HttpRequest, slug: str, ref: str, entry_id: int) -> HttpResponse:
-    """Correct an entry: the old one stays readable, the new one says why."""
-    desk = Desk.of(request, slug, ref, entry_id)
-    return _save(desk) if request.method == "POST" else _open(desk)
+def serve(desk: Desk) -> HttpResponse:
+    """Open the form, or take what was sent; with an entry to replace it is a correction."""
+    return _save(desk) if desk.request.method == "POST" else _open(desk)
 
 
 @require_http_methods(["POST"])
@@ -79,7 +78,9 @@ def entry_live(request: HttpRequest, slug: str, ref: str) -> HttpResponse:
     desk = Desk.of(request, slug, ref, int(number) if number.isdigit() else None)
     slip = desk.posted()
     trial = desk.check(slip)
-    return render(request, "review/_entry_live.html", page_parts(desk, slip, trial) | {"live": True})
+    response = render(request, "review/_entry_live.html", page_parts(desk, slip, trial) | {"live": True})
+    response["X-Worksheet-Form"] = "live"
+    return response
 
 
 def _open(desk: Desk) -> HttpResponse:
@@ -89,28 +90,17 @@ def _open(desk: Desk) -> HttpResponse:
     if draft:
         slip = entry_form.from_post(*drafts.texts(draft), desk.display, zone, now)
     elif desk.replacing and newest(desk.replacing) != desk.replacing:
-        return _lead_to_newest(desk, newest(desk.replacing))
+        return lead_to_newest(desk.request, desk.stay, newest(desk.replacing))
     elif desk.replacing:
         slip = entry_form.from_entry(desk.replacing, desk.display, desk.user.get_username(), zone)
-        slip.moment = entry_form.moments.read(slip.date, slip.clock, slip.fold, zone, now)
+        slip.moment = moments.read(slip.date, slip.clock, slip.fold, zone, now)
     else:
         units = desk.user.preferences.get("entry_units", {})
         slip = entry_form.blank(desk.display, units, desk.user.get_username(), zone, now)
         slip.date, slip.clock = (desk.request.GET.get(k, v) for k, v in (("date", slip.date), ("clock", slip.clock)))
-        slip.moment = entry_form.moments.read(slip.date, slip.clock, slip.fold, zone, now)
+        slip.moment = moments.read(slip.date, slip.clock, slip.fold, zone, now)
     trial = desk.check(slip)
     return _show(desk, slip, trial, restored=draft)
-
-
-def _lead_to_newest(desk: Desk, latest: Entry) -> HttpResponse:
-    """An entry that was replaced is not corrected again; the one in its place is."""
-    at = latest.recorded_at.astimezone(desk.stay.unit.zone)
-    did = "struck out" if latest.struck else "corrected"
-    words = f"This entry was {did} by {latest.recorded_by.get_username()} at {at:%Y-%m-%d %H:%M}: {latest.reason}"
-    messages.info(desk.request, words if latest.struck else f"{words}. This is the corrected entry.")
-    if latest.struck:
-        return redirect(patient_page(desk.stay))
-    return redirect("entry_correct", desk.stay.unit.slug, desk.stay.reference, latest.pk)
 
 
 def _show(desk: Desk, slip: Slip, trial: Any, *, refused: bool = False, **more: Any) -> HttpResponse:
@@ -129,16 +119,15 @@ def _save(desk: Desk) -> HttpResponse:
         )
         return _show(desk, slip, desk.check(slip), filled=filled)
     trial = desk.check(slip)
-    _who(desk, slip)
-    if desk.replacing and not 0 < len(slip.reason.strip()) <= REASON_LONGEST:
-        words = f"Say in a few words why the entry is corrected (at most {REASON_LONGEST} characters)."
-        slip.notices.append(Notice(Level.IMPOSSIBLE, "reason", "reason", words))
+    refuse_other_person(desk, slip)
+    if desk.replacing:
+        need_reason(slip)
     if slip.blocking() or slip.unanswered():
         return _show(desk, slip, trial, refused=True)
     return _correct(desk, slip, trial) if desk.replacing else _record(desk, slip, trial)
 
 
-def _who(desk: Desk, slip: Slip) -> None:
+def refuse_other_person(desk: Desk, slip: Slip) -> None:
     """A form begun by one person and sent by another is stored only when the other says so."""
     me = desk.user.get_username()
     if slip.begun_by not in {"", me} and not desk.request.POST.get("take_over"):
@@ -150,44 +139,41 @@ def _record(desk: Desk, slip: Slip, trial: Any) -> HttpResponse:
     new = slip.new_entry()
     with transaction.atomic():
         entry, is_new = record.record(desk.stay, desk.user, new)
-        if is_new or _same(entry, desk, new):
+        if is_new or same(entry, desk, new):
             drafts.drop(desk.user, desk.stay, desk.form_name)
             _remember_units(desk.user, slip)
             return _done(desk, entry, "Recorded")
-    slip.key = entry_form.uuid.uuid4().hex
+    slip.key = uuid.uuid4().hex
     words = "This form was already recorded with other values. Save again to record what is typed now as another entry."
     slip.notices.append(Notice(Level.IMPOSSIBLE, "", "key_used", words))
     return _show(desk, slip, trial, refused=True)
 
 
-def _same(entry: Entry, desk: Desk, new: record.NewEntry) -> bool:
+def same(entry: Entry, desk: Desk, new: record.NewEntry) -> bool:
     """Whether the stored entry with this key is what is sent again."""
     again = record.build(desk.stay, desk.user, new)
-    names = ("stay_id", "device", "flow_method", "sample", "note")
+    names = ("stay_id", "device", "flow_method", "event", "event_amount", "sample", "note")
     alike = all(getattr(entry, name) == getattr(again, name) for name in names)
     return alike and record.described(entry) == record.described(again)
 
 
 def _correct(desk: Desk, slip: Slip, trial: Any) -> HttpResponse:
     assert desk.replacing is not None  # noqa: S101 - the caller looked
+    new = _with_event(desk.replacing, slip.new_entry())
     try:
         with transaction.atomic():
-            entry = record.correct(desk.replacing, desk.user, slip.new_entry(), slip.reason)
+            entry = record.correct(desk.replacing, desk.user, new, slip.reason)
             drafts.drop(desk.user, desk.stay, desk.form_name)
     except record.AlreadyReplaced as told:
         return _conflict(desk, slip, trial, told.by)
-    if not _same(entry, desk, slip.new_entry()):  # the same form, sent from another tab with other values
+    if not same(entry, desk, new):  # the same form, sent from another tab with other values
         return _conflict(desk, slip, trial, entry)
     return _done(desk, entry, "Corrected")
 
 
-def newest(entry: Entry) -> Entry:
-    """The entry that stands in for this one now."""
-    while (
-        after := Entry.objects.filter(replaces=entry).select_related("recorded_by", "stay__unit").first()
-    ) is not None:
-        entry = after
-    return entry
+def _with_event(before: Entry, new: record.NewEntry) -> record.NewEntry:
+    """An entry that marks an event too (as files may bring) keeps it through a correction of its values."""
+    return replace(new, event=Event(before.event), event_amount=before.event_amount)
 
 
 def _conflict(desk: Desk, slip: Slip, trial: Any, by: Entry | None) -> HttpResponse:
@@ -198,7 +184,7 @@ def _conflict(desk: Desk, slip: Slip, trial: Any, by: Entry | None) -> HttpRespo
     rows = conflict_rows(desk.display, desk.replacing, theirs, mine)
     drafts.drop(desk.user, desk.stay, desk.form_name)
     desk.replacing = None if theirs.struck else theirs
-    slip.key = entry_form.uuid.uuid4().hex
+    slip.key = uuid.uuid4().hex
     return _show(desk, slip, trial, refused=True, conflict=theirs, conflict_rows=rows)
 
 
@@ -213,9 +199,7 @@ def _remember_units(user: User, slip: Slip) -> None:
 
 def _done(desk: Desk, entry: Entry, verb: str) -> HttpResponse:
     at = entry.time.astimezone(desk.stay.unit.zone)
-    messages.success(
-        desk.request, f"{verb}: {entry_form.SITE_WORDS[entry_form.Site(entry.site)]}, {at:%Y-%m-%d %H:%M}."
-    )
+    messages.success(desk.request, f"{verb}: {entry_form.SITE_WORDS[Site(entry.site)]}, {at:%Y-%m-%d %H:%M}.")
     target = patient_page(desk.stay)
     if desk.request.POST.get("action") == "save_next":
         target = reverse("entry_new", args=[desk.stay.unit.slug, desk.stay.reference])

@@ -19,8 +19,16 @@ from .trial import Trial
 if TYPE_CHECKING:
     from .entry import Desk
 
-OTHER_INPUTS = ("date", "clock", "fold", "site", "device", "flow_method", "sample", "note", "reason", "begun_by")
-_FOCUS = {"date": "date", "clock": "clock", "fold": "fold-0", "site": "site-1", "begun_by": "take-over"}
+OTHER_INPUTS = ("date", "clock", "fold", "site", "device", "flow_method", "sample", "note", "reason", "begun_by",
+                "kind", "amount", "bed")  # fmt: skip
+_FOCUS = {
+    "date": "date",
+    "clock": "clock",
+    "fold": "fold-0",
+    "site": "site-1",
+    "begun_by": "take-over",
+    "kind": "kind-1",
+}
 
 
 @dataclass(frozen=True)
@@ -62,24 +70,31 @@ class Line:
 
 
 def page_parts(desk: Desk, slip: Slip, trial: Trial | None) -> dict[str, Any]:
-    """The context of the whole page and of its live part."""
+    """The context of the entry form, and of its live part."""
     where = [desk.stay.unit.slug, desk.stay.reference]
-    lines = {name: Line(f, _said(slip, f.notices)) for name, f in slip.fields.items()}
+    address = reverse("entry_correct", args=[*where, desk.replacing.pk]) if desk.replacing else ""
+    parts = form_parts(desk, slip, desk.form_name, address or reverse("entry_new", args=where))
+    by_name = {line.field.name: line for line in parts["lines"]}
+    return parts | {
+        "groups": [(key, title, [by_name[n] for n in group]) for key, title, group in GROUPS],
+        "rare": [by_name[n] for n in RARE], "rare_open": any(slip.fields[n].text for n in RARE),
+        "sites": SITE_WORDS.items(), "devices": DEVICE_WORDS.items(), "methods": METHOD_WORDS.items(),
+        "estimate": None if slip.fields["fio2"].text.strip() else checks.estimate(slip),
+        "live_url": reverse("entry_live", args=where),
+        **(_follows(trial, desk.display) if trial else {}),
+    }  # fmt: skip
+
+
+def form_parts(desk: Desk, slip: Slip, form_name: str, address: str) -> dict[str, Any]:
+    """What every form of a stay shows: where it goes, who types, and what is said at each input."""
     return {
         "stay": desk.stay, "unit": desk.stay.unit, "slip": slip, "display": desk.display, "replacing": desk.replacing,
-        "groups": [(key, title, [lines[n] for n in group]) for key, title, group in GROUPS],
-        "rare": [lines[n] for n in RARE], "rare_open": any(slip.fields[n].text for n in RARE),
-        "lines": lines.values(),
+        "lines": [Line(f, _said(slip, f.notices)) for f in slip.fields.values()],
         "said": {name: _said(slip, _about(slip, name)) for name in OTHER_INPUTS},
         "said_slip": _said(slip, _about(slip, "")),
         "summary": _said(slip, [*slip.blocking(), *slip.unanswered()]),
-        "sites": SITE_WORDS.items(), "devices": DEVICE_WORDS.items(), "methods": METHOD_WORDS.items(),
-        "estimate": None if slip.fields["fio2"].text.strip() else checks.estimate(slip),
-        "form_name": desk.form_name, "me": desk.user.get_username(), "page": patient_page(desk.stay),
-        "form_url": reverse("entry_correct", args=[*where, desk.replacing.pk]) if desk.replacing
-        else reverse("entry_new", args=where),
-        "live_url": reverse("entry_live", args=where), "draft_url": reverse("draft_save", args=where),
-        **(_follows(trial, desk.display) if trial else {}),
+        "form_name": form_name, "me": desk.user.get_username(), "page": patient_page(desk.stay), "form_url": address,
+        "draft_url": reverse("draft_save", args=[desk.stay.unit.slug, desk.stay.reference]),
     }  # fmt: skip
 
 

@@ -1,4 +1,4 @@
-"""A date and a clock time as people type them in the unit: never in the future, never in an hour that does not exist."""
+"""A date and a clock time as people type them: never in the future, never in an hour that does not exist."""
 
 from __future__ import annotations
 

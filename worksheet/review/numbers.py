@@ -64,10 +64,8 @@ def read(text: str, quantity: Quantity, unit: UnitOfMeasure, decimal_comma: bool
     thousands = two_readings(text, decimal_comma)
     low, high = quantity.impossible
     if thousands is not None and low <= float(unit.to_canonical(thousands)) <= high:
-        whole = f"{thousands:.0f}"
-        return Number(
-            problem=f"'{text.strip()}' can be read in two ways; write {whole} or {_signed(number.value, decimal_comma)}."
-        )
+        either = f"{thousands:.0f} or {_signed(number.value, decimal_comma)}"
+        return Number(problem=f"'{text.strip()}' can be read in two ways; write {either}.")
     return number
 
 

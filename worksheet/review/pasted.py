@@ -64,7 +64,7 @@ def _problem(text: str, lines: Sequence[Sequence[str]]) -> str:
     if len(text) > LONGEST:
         return f"The pasted text has {len(text)} characters; one row has at most {LONGEST}."
     if len(lines) > 2 or (len(lines) == 2 and not _is_head(lines[0])):
-        return f"{len(lines)} rows were pasted, but a slip is one row (with or without its head). Files are read under Import."
+        return f"{len(lines)} rows were pasted, but a slip is one row, with or without its head. Import reads files."
     if len(lines) == 1 and _is_head(lines[0]):
         return "Only the head of a table was pasted; copy the row of values too."
     if len(lines[-1]) == 1:

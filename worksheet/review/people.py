@@ -2,29 +2,16 @@
 
 from __future__ import annotations
 
-from django.http import Http404, HttpRequest
-from django.shortcuts import get_object_or_404
+from django.http import HttpRequest
 from django.urls import NoReverseMatch, reverse
 
-from worksheet.ward.models import Role, Stay, Unit, User
-
-
-def recorder(request: HttpRequest) -> User:
-    """The logged-in person."""
-    if not isinstance(request.user, User):
-        raise Http404
-    return request.user
-
-
-def unit_for(request: HttpRequest, slug: str, role: Role = Role.RECORDER) -> Unit:
-    """The unit, if this person has the role in it."""
-    return get_object_or_404(Unit.objects.visible_to(request.user, role), slug=slug)
+from worksheet.ward.access import stay_or_404, unit_or_404
+from worksheet.ward.models import Role, Stay, Unit
 
 
 def stay_for(request: HttpRequest, slug: str, ref: str, role: Role = Role.RECORDER) -> Stay:
     """The stay, if this person has the role in its unit."""
-    stays = Stay.objects.visible_to(request.user, role).select_related("unit", "bed", "patient")
-    return get_object_or_404(stays, unit__slug=slug, reference=ref)
+    return stay_or_404(request, unit_or_404(request, slug, role), ref, role)
 
 
 def patient_page(stay: Stay) -> str:

@@ -17,6 +17,13 @@ from .models import Unit, User
 
 MISSING = "–"
 MINUS = "−"
+# Quantities that are shown in the unit chosen for another one: a page never mixes mmHg and kPa of gas pressures.
+_OWN = frozenset({"po2", "mean_arterial_pressure", "cao2"})
+FOLLOWERS: Mapping[str, str] = {
+    q.name: "po2" if q.unit.ucum == "mm[Hg]" else "cao2"
+    for q in CATALOGUE.values()
+    if q.name not in _OWN and (q.unit.ucum == "mm[Hg]" or (q.derived and q.unit.ucum == "mL/dL"))
+}
 
 
 @dataclass(frozen=True)
@@ -42,9 +49,7 @@ class Display:
     def unit(self, name: str) -> UnitOfMeasure:
         """The unit in which a quantity is shown."""
         quantity = CATALOGUE[name]
-        wanted = self.units.get(name)
-        if wanted is None and quantity.units[0].ucum == "mm[Hg]":
-            wanted = self.units.get("po2") if name != "mean_arterial_pressure" else None
+        wanted = self.units.get(name, self.units.get(FOLLOWERS.get(name, "")))
         return next((u for u in quantity.units if u.ucum == wanted), quantity.unit)
 
     def decimals(self, name: str) -> int:

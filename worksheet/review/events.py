@@ -1,0 +1,134 @@
+"""Events between samples: recorded like an entry, corrected like an entry."""
+
+from __future__ import annotations
+
+import uuid
+from datetime import datetime
+
+from django.contrib import messages
+from django.db import transaction
+from django.http import HttpRequest, HttpResponse
+from django.shortcuts import render
+from django.urls import reverse
+from django.utils import timezone
+from django.views.decorators.http import require_http_methods
+
+from worksheet.oxygen.readings import Event
+from worksheet.ward import audit, record
+from worksheet.ward.models import Entry, Stay
+
+from . import drafts, event_form
+from .entry import Desk, go, refuse_other_person, same
+from .entry_form import DEVICE_WORDS
+from .entry_page import facts, form_parts
+from .event_form import KIND_WORDS, SETTINGS, EventForm
+from .people import patient_page
+from .versions import lead_to_newest, need_reason, newest
+
+
+@require_http_methods(["GET", "HEAD", "POST"])
+def event_new(request: HttpRequest, slug: str, ref: str) -> HttpResponse:
+    """Record an event of a stay."""
+    return serve(Desk.of(request, slug, ref))
+
+
+def serve(desk: Desk) -> HttpResponse:
+    """Open the form, or take what was sent; with an entry to replace it is a correction."""
+    now = timezone.now()
+    if desk.request.method == "POST":
+        post = desk.request.POST
+        return _take(desk, event_form.read(post, post.getlist("confirm"), desk.stay, desk.display, now), now)
+    draft = drafts.find(desk.user, desk.stay, form_name(desk))
+    if draft:
+        form = event_form.read(*drafts.texts(draft), desk.stay, desk.display, now)
+    elif desk.replacing and newest(desk.replacing) != desk.replacing:
+        return lead_to_newest(desk.request, desk.stay, newest(desk.replacing))
+    elif desk.replacing:
+        form = event_form.of_entry(desk.replacing, desk.stay, desk.display, desk.user.get_username())
+    else:
+        form = event_form.blank(desk.stay, desk.display, desk.user.get_username(), desk.stay.unit.zone, now)
+    return _show(desk, form, restored=draft)
+
+
+def form_name(desk: Desk) -> str:
+    """Under which name the draft is kept."""
+    return desk.form_name if desk.replacing else "event"
+
+
+def _take(desk: Desk, form: EventForm, now: datetime) -> HttpResponse:
+    event_form.check(form, desk.stay, desk.display, now, correcting=desk.replacing is not None)
+    refuse_other_person(desk, form.slip)
+    if desk.replacing:
+        need_reason(form.slip)
+    if form.slip.blocking() or form.slip.unanswered():
+        return _show(desk, form, refused=True)
+    stored = _correct(desk, form) if desk.replacing else _record(desk, form)
+    if stored is None:
+        return _show(desk, form, refused=True)
+    at = stored.time.astimezone(desk.stay.unit.zone)
+    verb = "Corrected" if desk.replacing else "Recorded"
+    messages.success(desk.request, f"{verb}: {KIND_WORDS[Event(stored.event)]}, {at:%Y-%m-%d %H:%M}.")
+    return go(desk.request, patient_page(desk.stay))
+
+
+def _record(desk: Desk, form: EventForm) -> Entry | None:
+    with transaction.atomic():
+        stored, is_new = record.record(desk.stay, desk.user, form.new_entry())
+        if is_new and form.kind is Event.BED_MOVE and form.bed and not _move(desk, form):
+            transaction.set_rollback(True)
+            form.say("bed", "bed_taken", f"Bed {form.bed.name} was taken a moment ago.")
+            return None
+        if not is_new and not same(stored, desk, form.new_entry()):
+            form.slip.key = uuid.uuid4().hex
+            words = "This form was already recorded with other values. Save again to record this as another event."
+            form.say("", "key_used", words)
+            return None
+        drafts.drop(desk.user, desk.stay, form_name(desk))
+    return stored
+
+
+def _correct(desk: Desk, form: EventForm) -> Entry | None:
+    assert desk.replacing is not None  # noqa: S101 - the caller looked
+    try:
+        with transaction.atomic():
+            stored = record.correct(desk.replacing, desk.user, form.new_entry(), form.slip.reason)
+            drafts.drop(desk.user, desk.stay, form_name(desk))
+            return stored
+    except record.AlreadyReplaced:
+        latest = newest(desk.replacing)
+        did = "struck this event out" if latest.struck else "corrected this event"
+        theirs = "; ".join(f"{label} {text}" for label, text in facts(desk.display, latest))
+        who = latest.recorded_by.get_username()
+        words = f"{who} {did} in the meantime ({latest.reason}): {theirs}. Yours was not saved."
+        form.say("", "replaced", f"{words} Save again to correct their version." if not latest.struck else words)
+        desk.replacing = desk.replacing if latest.struck else latest
+        form.slip.key = uuid.uuid4().hex
+        return None
+
+
+def _move(desk: Desk, form: EventForm) -> bool:
+    """Put the stay into the bed, unless somebody lies there by now."""
+    stay = Stay.objects.select_for_update().select_related("bed").get(pk=desk.stay.pk)
+    if Stay.objects.filter(bed=form.bed).present().exclude(pk=stay.pk).exists():
+        return False
+    before, stay.bed = stay.bed, form.bed
+    stay.save(update_fields=["bed"])
+    audit.write(
+        desk.user.username, "moved", unit=desk.stay.unit.name, subject=stay.reference,
+        before=before.name if before else "", after=form.bed.name if form.bed else "",
+    )  # fmt: skip
+    return True
+
+
+def _show(desk: Desk, form: EventForm, *, refused: bool = False, restored: object = None) -> HttpResponse:
+    where = [desk.stay.unit.slug, desk.stay.reference]
+    correct = reverse("entry_correct", args=[*where, desk.replacing.pk]) if desk.replacing else ""
+    parts = form_parts(desk, form.slip, form_name(desk), correct or reverse("event_new", args=where))
+    context = parts | {
+        "form": form, "kinds": KIND_WORDS.items(), "devices": DEVICE_WORDS.items(),
+        "settings": [line for line in parts["lines"] if line.field.name in SETTINGS],
+        "refused": refused, "restored": restored,
+    }  # fmt: skip
+    response = render(desk.request, "review/event.html", context, status=422 if refused else 200)
+    response["X-Worksheet-Form"] = "refused" if refused else "shown"
+    return response
