@@ -1,11 +1,14 @@
-"""The first page: the units a person may see."""
+"""The first page: straight to the unit where there is one, a choice where there are several."""
 
 from django.http import HttpRequest, HttpResponse
-from django.shortcuts import render
+from django.shortcuts import redirect, render
 
 from worksheet.ward.models import Unit
 
 
 def home(request: HttpRequest) -> HttpResponse:
     """Units of this person."""
-    return render(request, "review/home.html", {"units": Unit.objects.visible_to(request.user).order_by("name")})
+    units = list(Unit.objects.visible_to(request.user).order_by("name"))
+    if len(units) == 1:
+        return redirect("unit_review", slug=units[0].slug)
+    return render(request, "review/home.html", {"units": units})
