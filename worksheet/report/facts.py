@@ -17,18 +17,10 @@ from .order import Order
 _OLDEST_TOLD = 89  # years; above it an age identifies: 45 CFR 164.514(b)(2)(i)(C)
 _SATURATIONS = ("so2", "o2hb", "so2_calculated", "spo2", "cohb", "methb", "sulfhb")
 _COMPARED = ("so2_from_po2", "predicted_spo2", "gap_calculated", "gap_measured")
-_BASIS = (
-    (Flag.DYSHAEMOGLOBINS_ASSUMED, "Dyshaemoglobins were not measured: the usual inactive share was assumed."),
+_BASIS = (  # what the verdict does not say itself
     (Flag.DYSHAEMOGLOBINS_CARRIED, "Dyshaemoglobins were carried from an earlier sample."),
-    (Flag.SATURATION_CALCULATED, "The saturation was calculated from PO2, not measured."),
-    (
-        Flag.SATURATION_FROM_FINGER,
-        "The saturation came from the pulse oximeter: there was no gas saturation and no PO2.",
-    ),
-    (Flag.HB_CARRIED, "Haemoglobin was carried from an earlier sample."),
-    (Flag.FLOW_CARRIED, "Flow was carried from an earlier or a later measurement."),
+    (Flag.SATURATION_FROM_FINGER, "The saturation came from the pulse oximeter: no gas saturation and no PO2."),
     (Flag.FIO2_ESTIMATED, "FiO2 of a low-flow device is an estimate."),
-    (Flag.CENTRAL_VENOUS, "The venous sample was central venous: extraction, consumption and shunt are estimates."),
     (Flag.TEMPERATURE_ASSUMED, "37 °C was taken for the blood in the body."),
     (Flag.BAROMETRIC_STANDARD, "The barometric pressure was the unit's constant, not measured."),
 )
@@ -73,27 +65,22 @@ def facts(order: Order) -> list[list[str]]:
     body = [told.value("height", stay.height, with_unit=True), told.value("weight", stay.weight, with_unit=True)]
     row = latest_arterial(order)
     surface = told.value("bsa", float(order.sheet.derived["bsa"][row]), with_unit=True) if row is not None else MISSING
-    corrected = sum(1 for entry in order.entries.values() if entry.replaces_id)
     return [
         *found,
-        ["Span", span_words(order)],
         ["Age", age_text],
         ["Height, weight", ", ".join(body)],
         ["Body surface", surface],
-        ["Entries", f"{len(order.rows)} in the span, {corrected} corrections or strike-outs in the stay"],
+        ["Entries", f"{len(order.rows)} in the span"],
     ]
 
 
 def _identity(order: Order) -> Iterator[list[str]]:
     stay = order.stay
     yield ["Patient", f"{stay.patient.identifier} ({stay.patient.system})"]
-    yield ["Stay", stay.reference]
     yield ["Unit", stay.unit.name]
     yield ["Bed", stay.bed.name if stay.bed else MISSING]
     yield ["Admitted", order.display.stamp(stay.admitted_at) if stay.admitted_at else MISSING]
     yield ["Discharged", order.display.stamp(stay.discharged_at) if stay.discharged_at else MISSING]
-    yield ["Printed", order.display.stamp(order.printed_at)]
-    yield ["By", order.printed_by]
 
 
 def basis(order: Order) -> list[str]:

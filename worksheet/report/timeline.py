@@ -7,13 +7,12 @@ from typing import Any
 from worksheet import charts
 from worksheet.charts.ledger import Changes
 from worksheet.charts.printed import printed
-from worksheet.charts.steps import RESIDUAL, STEPS
 
 from . import facts, history, methods
 from .archive import remember
 from .entry_tables import entries_table, further_tables
 from .fingerprint import fingerprint
-from .judgement import findings_table, verdict_words
+from .judgement import Judged
 from .order import Order
 from .printing import pdf_of
 
@@ -33,6 +32,7 @@ def timeline(order: Order, mark: str) -> dict[str, Any]:
     """Everything that stands in the document."""
     notes = history.noted(order)
     changes = charts.changes_of(order.sheet, order.rows)
+    judged = Judged(order)
     return {
         "paper": order.stay.unit.paper,
         "flipped": False,
@@ -42,14 +42,14 @@ def timeline(order: Order, mark: str) -> dict[str, Any]:
         "header": facts.header(order),
         "footer": methods.FOOTER,
         "facts": facts.facts(order),
-        "verdict": verdict_words(order),
-        "basis": facts.basis(order),
-        "ledger": ledger_table(order, changes),
+        "verdict": judged.sentences(),
+        "basis": [*judged.basis(), *facts.basis(order)],
+        "ledger": judged.ledger_table(),
         "charts": _charts(order, changes),
         "saturations": facts.saturations(order),
         "entries": entries_table(order, notes),
         "other": further_tables(order),
-        "findings": findings_table(order),
+        "findings": judged.findings_table(),
         "notes": history.notes(order, notes),
         "no-notes": history.WITHHELD if order.deidentify else "No notes in this span.",
         "corrections": history.corrections(order),
@@ -70,40 +70,6 @@ def _charts(order: Order, changes: Changes) -> dict[str, Any]:
         charts.curve_chart(sheet, stay, rows, display, scale),
     )
     return {chart.key: printed(chart) for chart in drawn}
-
-
-def ledger_table(order: Order, changes: Changes) -> dict[str, Any]:
-    """What each step added or took over the span: the sum of the intervals."""
-    display, name = order.display, changes.quantity
-    unit = display.unit(name).label
-    table: dict[str, Any] = {
-        "head": ["Step", f"Change of {display.quantity(name).symbol} ({unit})", "What it holds"],
-        "widths": ["auto", "auto", "1"],
-        "sides": ["l", "r", "l"],
-        "rows": [],
-        "empty": "Two arterial gases with haemoglobin are needed for a ledger.",
-    }
-    if not len(changes):
-        return table
-    parts = {step.name: float(changes.steps[step.name].sum()) for step in STEPS}
-    residual = float(changes.residual.sum())
-    for step in STEPS:
-        value = parts[step.name] - (residual if step.name == "function" else 0.0)
-        table["rows"].append([step.word, display.value(name, value, signed=True), _HOLDS[step.name]])
-    table["rows"].append([RESIDUAL.word, display.value(name, residual, signed=True), _HOLDS["residual"]])
-    total = display.value(name, sum(parts.values()), signed=True)
-    words = f"{order.scale.text(float(changes.start[0]))} to {order.scale.text(float(changes.end[-1]))}"
-    table["rows"].append([["total", "strong"], [total, "strong"], words])
-    return table
-
-
-_HOLDS = {
-    "lung": "PaO2, through saturation and dissolved oxygen",
-    "haemoglobin": "its amount",
-    "function": "dyshaemoglobins and the shift of the curve",
-    "flow": "cardiac output or index",
-    "residual": "measured saturation beyond the curve; belongs to function",
-}
 
 
 def _fingerprint_words(order: Order, mark: str) -> list[str]:

@@ -1,5 +1,9 @@
 """Addresses of this room."""
 
-from django.urls import URLPattern
+from django.urls import URLPattern, path
 
-urlpatterns: list[URLPattern] = []
+from . import views
+
+urlpatterns: list[URLPattern] = [
+    path("u/<slug:slug>/stay/<str:reference>/timeline.pdf", views.timeline, name="report_timeline"),
+]
