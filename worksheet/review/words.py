@@ -1,0 +1,73 @@
+"""Numbers as words of the pages: only the digits that their uncertainty supports."""
+
+from __future__ import annotations
+
+import math
+
+from worksheet.oxygen.readings import Site
+from worksheet.oxygen.trend import LactateTrend
+from worksheet.ward.display import MISSING, Display, age_words
+
+Z95 = 1.959964  # two-sided 95 % of the normal distribution
+SITE_WORDS = {
+    Site.NONE: "bedside",
+    Site.ARTERIAL: "arterial",
+    Site.MIXED_VENOUS: "mixed venous",
+    Site.CENTRAL_VENOUS: "central venous",
+    Site.VENOUS: "peripheral venous",
+}
+
+
+def plus_minus(display: Display, name: str, value: float, sd: float, *, signed: bool = False, unit: bool = False) -> str:
+    """A value with its 95 % half-width, both with the digits that the half-width supports."""
+    if not math.isfinite(value):
+        return MISSING
+    shown = display.unit(name)
+    number = value / shown.factor if signed else float(shown.from_canonical(value))
+    half = Z95 * sd / shown.factor
+    tail = f" {shown.label}".rstrip() if unit else ""
+    if not math.isfinite(half) or half <= 0:
+        return display.value(name, value, signed=signed) + tail
+    decimals = supported(half, display.decimals(name))
+    return f"{rounded(display, number, decimals, signed)} ± {rounded(display, half, decimals)}{tail}"
+
+
+def supported(half: float, most: int) -> int:
+    """Decimals that an uncertainty supports: two figures of it, never more than ``most``; negative rounds to tens."""
+    return min(most, 1 - math.floor(math.log10(half))) if half > 0 else most
+
+
+def rounded(display: Display, number: float, decimals: int, signed: bool = False) -> str:
+    """A number with that many decimals, or rounded to tens and hundreds where they are negative."""
+    return display.number(round(number, decimals), max(0, decimals), signed)
+
+
+def percent(display: Display, share: float, signed: bool = True) -> str:
+    """A share as whole percent."""
+    return f"{display.number(100 * share, 0, signed)} %" if math.isfinite(share) else MISSING
+
+
+def hours(display: Display, value: float) -> str:
+    """Hours with one decimal below ten."""
+    return display.number(value, 0 if value >= 10 else 1)
+
+
+def span(display: Display, low: float, high: float) -> str:
+    """The interval of a time in hours; very long ends say so."""
+    top = "more than 96" if high > 96 else hours(display, high)
+    return f"{hours(display, low)}–{top}" if high <= 96 else f"{hours(display, low)} to {top}"
+
+
+def lactate_course(trend: LactateTrend, display: Display) -> str:
+    """The course of lactate in a few words; empty where there is none."""
+    if trend.kind in ("falling", "rising"):
+        verb = "halving" if trend.kind == "falling" else "doubling"
+        return f"{verb} in {hours(display, trend.time)} h ({span(display, trend.time_low, trend.time_high)})"
+    if trend.kind == "change":
+        beyond = "beyond noise" if trend.beyond_noise else "within noise"
+        return f"{percent(display, -trend.decrease)} in {age_words(trend.hours)}, {beyond}"
+    if trend.kind == "normal":
+        return "below 2 throughout" if trend.n > 1 else ""
+    if trend.kind == "unclear":
+        return "no clear course"
+    return "" if trend.reason in ("no lactate", "a single lactate") else f"no course: {trend.reason}"
