@@ -5,6 +5,8 @@ from __future__ import annotations
 from datetime import datetime, timedelta
 from enum import IntEnum
 
+from worksheet.oxygen import plausibility
+from worksheet.oxygen.finding_kinds import Severity
 from worksheet.oxygen.quantities import UnitOfMeasure
 from worksheet.oxygen.readings import Device, FlowMethod, Site
 from worksheet.ward.display import Display
@@ -14,6 +16,26 @@ from .entry_form import NOTE_LONGEST, SAMPLE_ONLY, Level, Notice, Slip, ValueFie
 from .trial import Trial, others, try_out
 
 LONG_AGO = timedelta(hours=12)
+LEVELS = {
+    Severity.IMPOSSIBLE: Level.IMPOSSIBLE,
+    Severity.UNLIKELY: Level.UNLIKELY,
+    Severity.NOTE: Level.NOTE,
+}
+# Which input a finding about the whole slip is shown at.
+PLACES = {
+    "po2-above-alveolar": "po2", "po2-looks-like-kpa": "po2", "po2-looks-like-mmhg": "po2",
+    "pco2-looks-like-kpa": "pco2", "pco2-looks-like-mmhg": "pco2", "so2-against-curve": "so2",
+    "arterial-looks-venous": "site", "fractions-do-not-add": "o2hb", "venous-above-arterial": "so2", "hb-jump": "hb",
+    "ph-pco2-hco3-disagree": "bicarbonate", "calculated-as-measured": "so2", "co-and-ci-disagree": "cardiac_index",
+    "p50-out-of-range": "so2", "room-air-with-oxygen": "fio2", "gap-reading-false": "spo2", "gap-dyshaemoglobin": "spo2",
+    "gap-send-co-oximetry": "spo2", "cohb-hidden": "cohb", "hypoxaemia-agreed": "spo2", "hypoxaemia-occult": "spo2",
+    "pf-from-estimated-fio2": "fio2", "spo2-above-97": "spo2", "duplicate-sample": "clock",
+}  # fmt: skip
+# These tell of the patient, not of a slip of the key: said at once, without asking whether the value was checked.
+TELLS = frozenset({"gap-reading-false", "gap-dyshaemoglobin", "gap-send-co-oximetry", "cohb-hidden", "hypoxaemia-agreed",
+                   "hypoxaemia-occult", "o2er-out-of-range"})  # fmt: skip
+SAID_ALREADY = ("-impossible", "-unlikely", "time-in-future", "before-admission", "site-not-stated",
+                "saturation-without-site", "fio2-fraction-or-percent", "saturation-like-fraction")  # fmt: skip
 CANNULA_TOP = 6.0  # L/min; the rule holds up to here (common practice)
 
 
@@ -29,7 +51,7 @@ def check(
     check_time(slip, stay, now)
     _site(slip)
     _twice(slip, user, stay, display, replacing)
-    return _derived(slip, user, stay, replacing)
+    return _derived(slip, user, stay, display, replacing)
 
 
 def _say(slip: Slip, level: Level, field: str, code: str, words: str, about: str = "") -> None:
@@ -45,14 +67,18 @@ def check_limits(field: ValueField, display: Display) -> None:
     if field.value is None:
         return
     about = f"{field.text.strip()} {field.unit.ucum}"
-    for level, code, limits in (
-        (Level.IMPOSSIBLE, "impossible", field.quantity.impossible),
-        (Level.UNLIKELY, "unlikely", field.quantity.unlikely),
-    ):
-        if not limits[0] <= field.value <= limits[1]:
-            words = _outside(field, code, limits, display)
-            field.notices.append(Notice(level, field.name, code, words, about))
-            return
+    if field.name in plausibility.SATURATIONS and field.value <= plausibility.LIKE_FRACTION:
+        words = f"{field.quantity.symbol} {field.text.strip()} {field.unit.label} is no saturation of living blood."
+        words += _other_units(field)
+        field.notices.append(Notice(Level.IMPOSSIBLE, field.name, "saturation-like-fraction", words))
+        return
+    found = plausibility.check_value(field.quantity, field.value)
+    if found is not None:
+        level = LEVELS[found.severity]
+        limits = field.quantity.impossible if level is Level.IMPOSSIBLE else field.quantity.unlikely
+        words = _outside(field, "impossible" if level is Level.IMPOSSIBLE else "unlikely", limits, display)
+        field.notices.append(Notice(level, field.name, found.code, words, about))
+        return
     if field.comparator:
         words = (
             f"{field.quantity.symbol} is kept as {field.text.strip()}; calculations use the number without the sign."
@@ -65,10 +91,10 @@ def _outside(field: ValueField, code: str, limits: tuple[float, float], display:
     label = f" {field.unit.label}" if field.unit.label else ""
     usual = "possible" if code == "impossible" else "usual"
     words = f"{field.quantity.symbol} {field.text.strip()}{label} is {code} ({usual}: {low} to {high}{label})."
-    return words + _other_units(field, limits)
+    return words + _other_units(field)
 
 
-def _other_units(field: ValueField, limits: tuple[float, float]) -> str:
+def _other_units(field: ValueField) -> str:
     """Units in which the number would be ordinary: a mix-up is named, never mended by itself."""
     assert field.value is not None  # noqa: S101 - for the type checker; the caller looked
     typed = float(field.unit.from_canonical(field.value))
@@ -202,7 +228,15 @@ def estimate(slip: Slip) -> tuple[float, str] | None:
     return None
 
 
-def _derived(slip: Slip, user: User, stay: Stay, replacing: Entry | None) -> Trial | None:
+def _derived(slip: Slip, user: User, stay: Stay, display: Display, replacing: Entry | None) -> Trial | None:
     if slip.moment.at is None or not slip.values:
         return None
-    return try_out(user, stay, slip.new_entry(), replacing)
+    trial = try_out(user, stay, slip.new_entry(), replacing)
+    for found in trial.findings(display):
+        asked_twice = found.code == "duplicate-sample" and any(n.code == "same_sample" for n in slip.notices)
+        if not found.code.endswith(SAID_ALREADY) and not asked_twice:
+            level = Level.NOTE if found.code in TELLS else LEVELS[found.severity]
+            _say(
+                slip, level, PLACES.get(found.code, ""), found.code, f"{found.sentence} {found.settle}", found.sentence
+            )
+    return trial

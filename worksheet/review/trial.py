@@ -9,12 +9,13 @@ from typing import Any
 
 import numpy as np
 
-from worksheet.oxygen import align, derive
+from worksheet.oxygen.plausibility import Finding
 from worksheet.oxygen.readings import Readings, Site
+from worksheet.ward.display import Display
 from worksheet.ward.models import Entry, Stay, User
 from worksheet.ward.models.entries import EntryQuerySet
 from worksheet.ward.record import NewEntry
-from worksheet.ward.sheet import Sheet, readings_of
+from worksheet.ward.sheet import Sheet, derived_sheet, readings_of
 
 REACH = timedelta(hours=96)  # older entries cannot reach a snapshot (the longest carry is 12 h); keeps typing fast
 SHOWN = ("cao2", "cvo2", "do2i", "do2", "o2er", "pf_ratio", "sf_ratio", "aa_gradient", "so2_from_po2", "gap_measured",
@@ -44,6 +45,14 @@ class Trial:
                 found.append((name, value, age))
         return found
 
+    def findings(self, display: Display) -> tuple[Finding, ...]:
+        """What is implausible about the slip beside everything known of the stay."""
+
+        def show(name: str, value: float) -> str:
+            return display.value(name, value, with_unit=True) if np.isfinite(value) else "not measured"
+
+        return self.sheet.findings.of_row(self.row, show)
+
     def missing(self) -> list[str]:
         """What an arterial slip lacks, in words that say what it would add."""
         if self.sheet.readings.site[self.row] != Site.ARTERIAL:
@@ -70,11 +79,7 @@ def try_out(user: User, stay: Stay, new: NewEntry, replacing: Entry | None = Non
     near = others(user, stay, replacing).filter(time__gte=new.time - REACH, time__lte=new.time + REACH)
     before, ids = readings_of(near, [stay])
     readings = _joined(before, _one(stay, new))
-    constants = stay.unit.constants_in_force()
-    snapshots = align.align(readings, constants.carry)
-    derived = derive.derive(snapshots, constants)
-    sheet = Sheet(stay.unit, (stay,), np.append(ids, 0), readings, snapshots, derived, constants)
-    return Trial(sheet, len(readings) - 1)
+    return Trial(derived_sheet(stay.unit, [stay], readings, np.append(ids, 0)), len(readings) - 1)
 
 
 def _one(stay: Stay, new: NewEntry) -> Readings:

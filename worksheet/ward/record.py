@@ -69,6 +69,16 @@ def build(stay: Stay, user: User, new: NewEntry, **more: Any) -> Entry:
 
 def record(stay: Stay, user: User, new: NewEntry) -> tuple[Entry, bool]:
     """Store an entry; the same key again returns the stored one. Second value: whether it is new."""
+    try:
+        return _insert(stay, user, new)
+    except IntegrityError:  # the same form sent twice at the same moment: the other one was first
+        known = Entry.objects.filter(key=new.key).first()
+        if known is None:
+            raise
+        return known, False
+
+
+def _insert(stay: Stay, user: User, new: NewEntry) -> tuple[Entry, bool]:
     with transaction.atomic():
         known = Entry.objects.filter(key=new.key).first()
         if known:

@@ -94,7 +94,11 @@ def readings_of(entries: EntryQuerySet, stays: Iterable[Stay] = ()) -> tuple[Rea
 def open_sheet(unit: Unit, stays: Sequence[Stay], entries: EntryQuerySet | None = None) -> Sheet:
     """Derive the current entries of some stays of a unit (or the given entries of them)."""
     chosen = entries if entries is not None else Entry.objects.filter(stay__in=[s.pk for s in stays]).current()
-    readings, ids = readings_of(chosen, stays)
+    return derived_sheet(unit, stays, *readings_of(chosen, stays))
+
+
+def derived_sheet(unit: Unit, stays: Sequence[Stay], readings: Readings, ids: Ints) -> Sheet:
+    """Derive readings, stored or still being typed: the one way from raw values to a sheet."""
     constants = unit.constants_in_force()
     readings, refused = plausibility.without_impossible(readings)
     snapshots = align.align(readings, constants.carry)
