@@ -180,7 +180,7 @@ def _supply(one: Ledger, total: RealChange, snapshots: Snapshots, speech: Speech
     share, half = 100.0 * float(total.change) / start, 100.0 * 1.96 * float(total.sd) / start
     if not bool(total.beyond_noise):
         change = f"{speech.number(share, 0, True)} % ± {speech.number(half, 0)}"
-        return f"{_NAMES[level]} is unchanged beyond measurement noise since {since} ({change})."
+        return f"The change of {_NAMES[level].lower()} since {since} is inside measurement noise ({change})."
     verb = "fell" if share < 0.0 else "rose"
     ends = f"{speech.value(name, start)} to {speech.value(name, float(one.end_supply[0]), with_unit=True)}"
     return f"{_NAMES[level]} {verb} {speech.number(abs(share), 0)} % ± {speech.number(half, 0)} since {since} ({ends})."
