@@ -13,7 +13,7 @@ from django.db import connection
 from django.utils import timezone
 
 from worksheet.oxygen.quantities import MEASURED
-from worksheet.oxygen.readings import Site
+from worksheet.oxygen.readings import Device, Event, FlowMethod, Site
 from worksheet.ward import record
 from worksheet.ward.models import Entry, Stay, User
 
@@ -26,7 +26,7 @@ _ROW_FIELDS = ("device", "flow_method", "event", "event_amount")
 def insert(drafts: Iterable[DraftEntry], stays: dict[int, Stay], user: User, source: str) -> int:
     """Store new entries. Column lists and one prepared statement: models of 45 columns cost several times as much."""
     fields = [f for f in Entry._meta.concrete_fields if not f.primary_key]
-    columns = ", ".join(connection.ops.quote_name(f.column) for f in fields)
+    columns = ", ".join(connection.ops.quote_name(str(f.column)) for f in fields)
     marks = ", ".join(["%s"] * len(fields))
     statement = f"INSERT INTO {connection.ops.quote_name(Entry._meta.db_table)} ({columns}) VALUES ({marks})"  # noqa: S608
     makers = [_maker(f.attname, f.get_default(), user, source) for f in fields]
@@ -126,8 +126,8 @@ def _merged(entry: Entry, draft: DraftEntry, source: str) -> record.NewEntry:
             values[name] = cell.value if cell.value is not None else values.get(name, float("nan"))
             typed[name] = cell.typed()
     return record.NewEntry(
-        time=entry.time, site=Site(entry.site), values=values, typed=typed, device=entry.device or draft.first.device,
-        flow_method=entry.flow_method or draft.first.flow_method, event=entry.event, event_amount=entry.event_amount,
+        time=entry.time, site=Site(entry.site), values=values, typed=typed, device=Device(entry.device or draft.first.device),
+        flow_method=FlowMethod(entry.flow_method or draft.first.flow_method), event=Event(entry.event), event_amount=entry.event_amount,
         sample=entry.sample or draft.sample, note="; ".join(n for n in (entry.note, note_of(draft)) if n), key=draft.key,
         source=source,
     )  # fmt: skip

@@ -13,8 +13,8 @@ import hl7
 from worksheet.oxygen.quantities import CATALOGUE
 from worksheet.oxygen.readings import Site
 
-from .cells import refusal, shortened
 from .cells import number as number_in
+from .cells import refusal, shortened
 from .codes import Coding, Meaning, meaning, unit_of
 from .fhir_context import site_of
 from .hl7_message import Header, Rejected, at, check, header, repetitions, segments, split_file, text

@@ -7,12 +7,11 @@ from typing import Any
 
 from worksheet.ward.models import Unit, User
 
-from . import table as tables
-from . import workbook
 from .models import ColumnMapping
 from .names import fold
 from .plan import Plan, as_saved
 from .rows import Refused
+from .tabular import first_table
 
 
 def digest_of(header: list[str]) -> str:
@@ -25,7 +24,7 @@ def saved_for(unit: Unit, kind: str, data: bytes) -> dict[str, Any] | None:
     if kind not in ("csv", "xlsx") or not unit.column_mappings.exists():
         return None
     try:
-        table = tables.read(data) if kind == "csv" else workbook.read(data)[0][0]
+        table = first_table(kind, data)
     except Refused:
         return None
     found = unit.column_mappings.filter(headers=digest_of(table.header)).first()

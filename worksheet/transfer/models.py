@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Self
 from django.conf import settings
 from django.db import models
 
+from worksheet.ward.display import Display
 from worksheet.ward.models import Role, Unit
 
 if TYPE_CHECKING:
@@ -74,6 +75,7 @@ class Upload(models.Model):
     total = models.PositiveIntegerField(default=0)
     message = models.TextField(blank=True)
     report = models.JSONField(default=dict)
+    details = models.BinaryField(null=True)  # every row with its fate, compressed
     created_at = models.DateTimeField(auto_now_add=True)
     touched_at = models.DateTimeField(auto_now=True)
 
@@ -84,6 +86,10 @@ class Upload(models.Model):
 
     def __str__(self) -> str:
         return f"{self.name} ({self.get_state_display()})"
+
+    def unit_display(self) -> Display:
+        """How numbers and times are shown to the person who sent the file."""
+        return Display.of(self.user, self.unit)
 
 
 class MessageState(models.TextChoices):

@@ -70,7 +70,7 @@ def preview(
     return seen, found
 
 
-def store(unit: Unit, user: User, seen: Preview, found: Matched, options: Options) -> Preview:
+def store(unit: Unit, user: User, seen: Preview, found: Matched, options: Options, *, queue: bool = True) -> Preview:
     """Store a preview in one transaction; the fates are settled once more inside it."""
     if seen.parsed.questions and not options.confirmed:
         raise Refused("Not stored: " + " ".join(seen.parsed.questions))
@@ -78,7 +78,7 @@ def store(unit: Unit, user: User, seen: Preview, found: Matched, options: Option
         with transaction.atomic():
             Unit.objects.select_for_update().get(pk=unit.pk)
             found = match(found.drafts, unit, stays.StayFinder(unit, options.create), overwrite=options.overwrite)
-            _store(unit, user, seen, found)
+            _store(unit, user, seen, found, queue)
     except IntegrityError:
         raise Interrupted(
             "Somebody stored for the same samples at the same moment. Nothing was stored; send it again."
@@ -87,7 +87,7 @@ def store(unit: Unit, user: User, seen: Preview, found: Matched, options: Option
     return seen
 
 
-def _store(unit: Unit, user: User, seen: Preview, found: Matched) -> None:
+def _store(unit: Unit, user: User, seen: Preview, found: Matched, queue: bool) -> None:
     kind = seen.parsed.format
     needed = {id(found.stays[id(d)]) for d in found.drafts if d.fate is Fate.NEW}
     found.finder.made = {ref: stay for ref, stay in found.finder.made.items() if id(stay) in needed}
@@ -95,7 +95,7 @@ def _store(unit: Unit, user: User, seen: Preview, found: Matched) -> None:
     new = commit.insert((d for d in found.drafts if d.fate is Fate.NEW), found.stays, user, kind)
     changing = [d for d in found.drafts if d.replaces or d.after]
     changes = list(commit.correct(changing, user, kind))
-    queued = waiting.put(seen.waiting(), unit, seen.source)
+    queued = waiting.put(seen.waiting(), unit, seen.source) if queue else 0
     seen.entries = Counter({"new": new, "corrected": len(changes), "new stays": made, "queued rows": queued})
     seen.entries = Counter({k: v for k, v in seen.entries.items() if v})
     if seen.entries:

@@ -37,13 +37,16 @@ class Column:
     why: str = ""  # where the unit comes from
     sure: bool = True
 
-    def shown(self) -> dict[str, str]:
+    def shown(self) -> dict[str, Any]:
         """The column for a preview."""
         reads_as = self.quantity.label if self.quantity else self.role or "not read"
         unit = (self.unit.label or "no unit") if self.unit else ("unit not known" if self.quantity else "")
         site = self.site.name.lower().replace("_", " ") if self.site else ""
-        return {"header": self.header, "reads_as": reads_as, "unit": unit, "site": site, "why": self.why,
-                "confirm": "" if self.sure else "please confirm"}  # fmt: skip
+        return {
+            "header": self.header, "reads_as": reads_as, "unit": unit, "site": site, "why": self.why,
+            "confirm": "" if self.sure else "please confirm", "role": self.role, "site_code": int(self.site),
+            "quantity": self.quantity.name if self.quantity else "", "ucum": self.unit.ucum if self.unit else "",
+        }  # fmt: skip
 
 
 @dataclass(frozen=True)

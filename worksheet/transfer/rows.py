@@ -154,7 +154,7 @@ class Parsed:
 
     format: str
     rows: list[Row]
-    columns: list[dict[str, str]] = field(default_factory=list)  # how each column of a table was understood
+    columns: list[dict[str, Any]] = field(default_factory=list)  # how each column of a table was understood
     questions: list[str] = field(default_factory=list)  # what a person has to confirm before anything is stored
     notes: list[str] = field(default_factory=list)
     shifted_dates: bool = False

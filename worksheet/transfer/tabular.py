@@ -227,3 +227,8 @@ class _TableReader:
             for site, found in sorted(apart.items())
         ]
         return [row, *more]
+
+
+def first_table(kind: str, data: bytes) -> Table:
+    """The first readable table of a file."""
+    return tables.read(data) if kind == "csv" else workbook.read(data)[0][0]

@@ -1,0 +1,382 @@
+"""The batch file on its way in: header, records, numbers, times; every refusal names line, column and reason.
+
+A block of the file is read by pyarrow; where that refuses or doubts anything, the same block is read cell by cell, to
+say what is wrong and where, or to accept what is merely unusual (blanks around a number).
+"""
+
+from __future__ import annotations
+
+import csv
+import io
+import math
+import re
+from collections.abc import Callable, Iterator, Sequence
+from dataclasses import dataclass, field
+from datetime import datetime
+
+import numpy as np
+import pyarrow as pa
+from pyarrow import csv as arrow_csv
+
+from worksheet.oxygen.quantities import CATALOGUE, MEASURED
+from worksheet.oxygen.readings import Codes, Device, Event, Floats, FlowMethod, Ints, Readings, Site
+
+NUMBERS = tuple(name for name in MEASURED if name != "oxygen_flow")
+SITES = {"": Site.NONE, "arterial": Site.ARTERIAL, "mixed_venous": Site.MIXED_VENOUS,
+         "central_venous": Site.CENTRAL_VENOUS, "venous": Site.VENOUS}  # fmt: skip
+WORDS: dict[str, type[Device | FlowMethod | Event]] = {"device": Device, "flow_method": FlowMethod, "event": Event}
+KNOWN = ("stay", "time", "site", *NUMBERS)
+_GAS = ("ph", "pco2", "po2")
+_BLOOD_SATURATIONS = ("so2", "o2hb", "so2_calculated")
+_DECIMAL_COMMA = re.compile(r"-?\d+,\d+")
+_MICROSECONDS = 3.6e9  # in an hour
+
+
+@dataclass(frozen=True)
+class Problem:
+    """One reason why a file cannot be derived."""
+
+    line: int
+    column: str
+    reason: str
+
+    def __str__(self) -> str:
+        column = f", column {self.column}" if self.column else ""
+        return f"line {self.line}{column}: {self.reason}"
+
+
+class BatchError(Exception):
+    """The file cannot be derived; ``problems`` say why (the first of them), ``count`` how many there are."""
+
+    def __init__(self, problems: Sequence[Problem], count: int | None = None) -> None:
+        self.problems = list(problems)
+        self.count = len(self.problems) if count is None else count
+        super().__init__("; ".join(map(str, self.problems)))
+
+
+@dataclass(frozen=True)
+class Header:
+    """The header row: names as given, and which columns are read."""
+
+    text: bytes
+    names: tuple[str, ...]
+
+    @property
+    def places(self) -> dict[str, int]:
+        """Place of each known column."""
+        return {name: i for i, name in enumerate(self.names) if name in KNOWN or name in WORDS}
+
+    @property
+    def unread(self) -> tuple[str, ...]:
+        """Columns that pass through without being read."""
+        return tuple(name for name in self.names if name not in KNOWN and name not in WORDS)
+
+    @property
+    def serial(self) -> bool:
+        """Whether rows belong together: without stay and time each row stands alone."""
+        return "stay" in self.names and "time" in self.names
+
+
+@dataclass(frozen=True)
+class Block:
+    """Some records of a file: their bytes as given, and the line each starts at."""
+
+    records: list[bytes]
+    lines: Ints
+
+
+@dataclass
+class Table:
+    """A block that was read: the readings, and what was assumed on the way."""
+
+    readings: Readings
+    site_assumed: np.ndarray
+    site_unknown: np.ndarray
+    stays: list[bytes] = field(default_factory=list)
+
+
+def header_of(line: bytes, taken: Sequence[str]) -> Header:
+    """The header row, or a :class:`BatchError`; ``taken`` are the names that the output needs for itself."""
+    if line.startswith((b"\xff\xfe", b"\xfe\xff")) or b"\x00" in line:
+        raise BatchError([Problem(1, "", "the file is UTF-16 or binary; save it as CSV in UTF-8")])
+    text = line.removeprefix(b"\xef\xbb\xbf").rstrip(b"\r\n")
+    if not text.strip():
+        raise BatchError([Problem(1, "", "the file is empty: a header row with column names is needed")])
+    cells = next(csv.reader([text.decode("utf-8", "surrogateescape")]), [])
+    names = tuple(cell.strip() for cell in cells)
+    if not any(name in KNOWN for name in names):
+        raise BatchError([Problem(1, "", _no_known_column(text.decode("utf-8", "replace"), names))])
+    doubled = sorted({name for name in names if name and names.count(name) > 1})
+    if doubled:
+        raise BatchError([Problem(1, name, "this column is there twice") for name in doubled])
+    clash = [name for name in names if name in taken]
+    if clash:
+        raise BatchError(
+            [Problem(1, name, "the output has a column of this name; rename or drop it") for name in clash]
+        )
+    return Header(text, names)
+
+
+def _no_known_column(text: str, names: Sequence[str]) -> str:
+    for sign, word in ((";", "semicolons"), ("\t", "tabs"), ("|", "bars")):
+        if sign in text and len(names) == 1:
+            return f"the columns look separated by {word}; commas are needed"
+    return f"no known column name in the header row '{text[:60]}': for example stay, time, site, ph, pco2, po2, hb, so2"
+
+
+def records_of(data: bytes, first_line: int) -> Block:
+    """Bytes as records with their line numbers; a record goes on over a line break inside quotes, blank ones go."""
+    lines = data.split(b"\n")
+    if lines and not lines[-1]:
+        lines.pop()
+    numbers = np.arange(first_line, first_line + len(lines))
+    if b'"' in data and any(line.count(b'"') & 1 for line in lines):
+        lines, numbers = _joined(lines, first_line)
+    kept = [i for i, line in enumerate(lines) if not line.strip()]
+    if kept:
+        full = np.ones(len(lines), dtype=np.bool_)
+        full[kept] = False
+        lines, numbers = [line for line in lines if line.strip()], numbers[full]
+    return Block([line[:-1] if line.endswith(b"\r") else line for line in lines], numbers)
+
+
+def _joined(lines: list[bytes], first_line: int) -> tuple[list[bytes], Ints]:
+    records: list[bytes] = []
+    numbers: list[int] = []
+    open_record = False
+    for number, line in enumerate(lines, first_line):
+        if open_record:
+            records[-1] += b"\n" + line
+        else:
+            records.append(line)
+            numbers.append(number)
+        open_record ^= bool(line.count(b'"') & 1)
+    return records, np.array(numbers, dtype=np.int64)
+
+
+def cell_of(record: bytes, place: int) -> bytes:
+    """One cell of a record, empty where there is none."""
+    if b'"' not in record:
+        cells = record.split(b",", place + 1)
+        return cells[place] if place < len(cells) else b""
+    row = next(csv.reader([record.decode("utf-8", "surrogateescape")], strict=False), [])
+    return row[place].encode("utf-8", "surrogateescape") if place < len(row) else b""
+
+
+def table_of(header: Header, block: Block) -> Table:
+    """The readings of a block, or a :class:`BatchError` with every problem in it."""
+    try:
+        columns = _fast(header, block)
+    except (pa.ArrowInvalid, _Doubt):
+        columns = _slow(header, block)
+    return _table(header, columns, len(block.records))
+
+
+class _Doubt(Exception):
+    """Something that only reading cell by cell can judge."""
+
+
+@dataclass
+class _Columns:
+    stay: pa.Array | None
+    time: Floats | None
+    words: dict[str, Ints]
+    numbers: dict[str, Floats]
+
+
+def _fast(header: Header, block: Block) -> _Columns:
+    places = header.places
+    names = [f"{i}" for i in range(len(header.names))]
+    types = {names[place]: _arrow_type(name) for name, place in places.items()}
+    data = b"\n".join(block.records) + b"\n"
+    table = arrow_csv.read_csv(
+        io.BytesIO(data),
+        read_options=arrow_csv.ReadOptions(column_names=names, use_threads=False, block_size=len(data) + 1),
+        parse_options=arrow_csv.ParseOptions(newlines_in_values=b'"' in data),
+        convert_options=arrow_csv.ConvertOptions(
+            column_types=types, include_columns=[names[p] for p in places.values()], null_values=[""],
+            strings_can_be_null=False, quoted_strings_can_be_null=True,
+        ),
+    )  # fmt: skip
+    if table.num_rows != len(block.records):
+        raise _Doubt
+    column = {name: table[names[place]].combine_chunks() for name, place in places.items()}
+    stay, time = column.get("stay"), column.get("time")
+    if time is not None and time.null_count:
+        raise _Doubt
+    if stay is not None and any(not text.strip() for text in stay.unique().to_pylist()):
+        raise _Doubt
+    hours = None if time is None else time.cast(pa.int64()).to_numpy() / _MICROSECONDS
+    return _Columns(
+        stay,
+        hours,
+        {name: _coded(column[name], name) for name in ("site", *WORDS) if name in column},
+        {name: _number(column[name]) for name in NUMBERS if name in column},
+    )
+
+
+def _arrow_type(name: str) -> pa.DataType:
+    if name == "time":
+        return pa.timestamp("us", tz="UTC")
+    return pa.float64() if name in NUMBERS else pa.binary()
+
+
+def _number(column: pa.Array) -> Floats:
+    values = column.to_numpy(zero_copy_only=False)
+    if int(np.count_nonzero(~np.isfinite(values))) != column.null_count:
+        raise _Doubt
+    return np.asarray(values, dtype=np.float64)
+
+
+def _coded(column: pa.Array, name: str) -> Ints:
+    encoded = column.dictionary_encode()
+    codes = [_code(name, text.decode("utf-8", "replace")) for text in encoded.dictionary.to_pylist()]
+    if any(code is None for code in codes):
+        raise _Doubt
+    return np.array(codes, dtype=np.int64)[encoded.indices.to_numpy()] if codes else np.zeros(0, dtype=np.int64)
+
+
+def _code(name: str, text: str) -> int | None:
+    """Code of a word; None for an unknown site. An unknown word in the other columns says nothing."""
+    word = text.strip()
+    if name == "site":
+        return SITES.get(word)
+    found = WORDS[name].__members__.get(word.upper())
+    return int(found) if found is not None else 0
+
+
+def _slow(header: Header, block: Block) -> _Columns:
+    """Cell by cell: slower by far, but it can say what is wrong."""
+    places, problems = header.places, _Problems()
+    numbers = {name: np.full(len(block.records), np.nan) for name in NUMBERS if name in places}
+    words = {name: np.zeros(len(block.records), dtype=np.int64) for name in ("site", *WORDS) if name in places}
+    stays, hours = [], np.zeros(len(block.records))
+    for i, cells in enumerate(_rows(header, block, problems)):
+        line = int(block.lines[i])
+        if cells is None:
+            continue
+        for name, column in numbers.items():
+            column[i] = _read(_number_of, cells[places[name]], line, name, problems)
+        for name, codes in words.items():
+            codes[i] = _word(name, cells[places[name]], line, problems)
+        if "time" in places:
+            hours[i] = _read(_hours_of, cells[places["time"]], line, "time", problems)
+        if "stay" in places:
+            stays.append(cells[places["stay"]].encode("utf-8", "surrogateescape"))
+            if not stays[-1].strip():
+                problems.add(line, "stay", "the stay is missing")
+    if problems.count:
+        raise BatchError(problems.kept, problems.count)
+    return _Columns(
+        pa.array(stays, type=pa.binary()) if "stay" in places else None,
+        hours if "time" in places else None,
+        words,
+        numbers,
+    )
+
+
+@dataclass
+class _Problems:
+    """The first problems, and how many there are."""
+
+    kept: list[Problem] = field(default_factory=list)
+    count: int = 0
+
+    def add(self, line: int, column: str, reason: str) -> None:
+        self.count += 1
+        if len(self.kept) < 20:
+            self.kept.append(Problem(line, column, reason))
+
+
+def _rows(header: Header, block: Block, problems: _Problems) -> Iterator[list[str] | None]:
+    wanted = len(header.names)
+    for record, line in zip(block.records, block.lines.tolist(), strict=True):
+        text = record.decode("utf-8", "surrogateescape")
+        if "\x00" in text:
+            problems.add(line, "", "the row holds a null character; is the file binary or UTF-16?")
+            yield None
+            continue
+        try:
+            cells = next(csv.reader(io.StringIO(text, newline=""), strict=True), [])
+        except csv.Error as error:
+            problems.add(line, "", f"the row cannot be read as CSV ({error})")
+            yield None
+            continue
+        if len(cells) != wanted:
+            problems.add(line, "", f"{len(cells)} cells, but the header row has {wanted}")
+            yield None
+            continue
+        yield cells
+
+
+def _read(parse: Callable[[str], float], text: str, line: int, column: str, problems: _Problems) -> float:
+    try:
+        return parse(text.strip())
+    except ValueError as error:
+        problems.add(line, column, str(error))
+        return math.nan
+
+
+def _number_of(text: str) -> float:
+    if not text:
+        return math.nan
+    try:
+        value = float(text)
+    except ValueError:
+        value = math.nan
+    if not math.isfinite(value) or "_" in text:
+        hint = "; a decimal point is needed" if _DECIMAL_COMMA.fullmatch(text) else ""
+        raise ValueError(f"'{text[:40]}' is not a number{hint}")
+    return value
+
+
+def _hours_of(text: str) -> float:
+    if not text:
+        raise ValueError("the time is missing")
+    try:
+        moment = datetime.fromisoformat(text)
+    except ValueError:
+        raise ValueError(f"'{text[:40]}' is not a time like 2025-03-01T05:40:00+01:00") from None
+    if moment.tzinfo is None:
+        raise ValueError(f"'{text[:40]}' has no offset from UTC (+01:00 or Z)")
+    return round(moment.timestamp() * 1e6) / _MICROSECONDS
+
+
+def _word(name: str, text: str, line: int, problems: _Problems) -> int:
+    code = _code(name, text)
+    if code is None:
+        problems.add(line, name, f"'{text[:40]}' is none of {', '.join(word for word in SITES if word)}")
+        return 0
+    return code
+
+
+def _table(header: Header, columns: _Columns, n: int) -> Table:
+    values = {name: _canonical(name, column) for name, column in columns.numbers.items()}
+    site = columns.words.get("site", np.zeros(n, dtype=np.int64))
+    gas, blood = (_any(columns.numbers, names, n) for names in (_GAS, _BLOOD_SATURATIONS))
+    assumed = (site == Site.NONE) & gas
+    site = np.where(assumed, int(Site.ARTERIAL), site)
+    stay, time, stays = np.arange(n), np.zeros(n), []
+    if columns.stay is not None and columns.time is not None:
+        encoded = columns.stay.dictionary_encode()
+        stay, time = encoded.indices.to_numpy().astype(np.int64), columns.time
+        stays = encoded.dictionary.to_pylist()
+    elif columns.time is not None:
+        time = columns.time
+    codes: dict[str, Codes] = {name: columns.words[name].astype(np.int8) for name in WORDS if name in columns.words}
+    readings = Readings.build(stay, time, site.astype(np.int8), values, **codes)
+    return Table(readings, assumed, (site == Site.NONE) & blood, stays)
+
+
+def _canonical(name: str, column: Floats) -> Floats:
+    """From the file's unit; a FiO2 of 1 or less is a fraction, by the contract of the batch file."""
+    canonical = CATALOGUE[name].unit.to_canonical(column)
+    return np.where(column <= 1.0, column, canonical) if name == "fio2" else canonical
+
+
+def _any(numbers: dict[str, Floats], names: Sequence[str], n: int) -> np.ndarray:
+    found = np.zeros(n, dtype=np.bool_)
+    for name in names:
+        if name in numbers:
+            found |= ~np.isnan(numbers[name])
+    return found
