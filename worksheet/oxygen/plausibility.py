@@ -228,6 +228,7 @@ def findings(
     admitted: Floats | None = None,
     refused: Refused | None = None,
     across_stays: bool = False,
+    extra: Mapping[str, Hit] | None = None,
 ) -> Findings:
     """Everything that is implausible about a table.
 
@@ -247,6 +248,8 @@ def findings(
         What :func:`without_impossible` took out [canonical units].
     across_stays : bool
         Whether to look for the values of another patient: for one batch that is looked at as a whole.
+    extra : mapping of str to Hit, optional
+        What the caller saw on the way in, by code [bool].
 
     Returns
     -------
@@ -261,7 +264,7 @@ def findings(
         hits["before-admission"] = Hit(early > 0.0, {"hours": ("", early)})
     if across_stays:
         hits["values-of-another-patient"] = Hit(_of_another_patient(snapshots.readings), {})
-    return gathered(len(rows), hits)
+    return gathered(len(rows), hits | dict(extra or {}))
 
 
 def gathered(size: int, hits: Mapping[str, Hit]) -> Findings:
