@@ -5,5 +5,6 @@ from django.urls import URLPattern, path
 from . import views
 
 urlpatterns: list[URLPattern] = [
-    path("u/<slug:slug>/stay/<str:reference>/timeline.pdf", views.timeline, name="report_timeline"),
+    path("u/<slug:slug>/unit.pdf", views.unit, name="report_unit"),
+    path("u/<slug:slug>/stay/<str:ref>/timeline.pdf", views.timeline, name="report_timeline"),
 ]

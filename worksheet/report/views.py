@@ -17,13 +17,14 @@ from worksheet.ward.display import Display
 from .order import Order
 from .printing import NotPrinted
 from .timeline import timeline_pdf
+from .unit import unit_pdf
 
 
 @require_GET
-def timeline(request: HttpRequest, slug: str, reference: str) -> HttpResponse:
+def timeline(request: HttpRequest, slug: str, ref: str) -> HttpResponse:
     """The timeline of one stay: all of it, or the review window that the address names."""
     unit = access.unit_or_404(request, slug)
-    stay = access.stay_or_404(request, unit, reference)
+    stay = access.stay_or_404(request, unit, ref)
     user = access.person(request)
     now = timezone.now()
     since: datetime | None = None
@@ -46,3 +47,13 @@ def _answer(make: Callable[[], bytes], name: str) -> HttpResponse:
     return HttpResponse(
         pdf, content_type="application/pdf", headers={"Content-Disposition": f'inline; filename="{name}"'}
     )
+
+
+@require_GET
+def unit(request: HttpRequest, slug: str) -> HttpResponse:
+    """The unit review on one page, over the window that the address names."""
+    found = access.unit_or_404(request, slug)
+    user = access.person(request)
+    window = window_of(request.GET, found, user)
+    told = Display.of(user, found)
+    return _answer(lambda: unit_pdf(found, window, told, user.get_username()), f"unit-{found.slug}.pdf")
