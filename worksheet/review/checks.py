@@ -13,6 +13,7 @@ from worksheet.ward.display import Display
 from worksheet.ward.models import Entry, Stay, User
 
 from .entry_form import NOTE_LONGEST, SAMPLE_ONLY, Level, Notice, Slip, ValueField
+from .finding_places import PLACES, SAID_ALREADY, TELLS
 from .trial import Trial, others, try_out
 
 LONG_AGO = timedelta(hours=12)
@@ -21,21 +22,6 @@ LEVELS = {
     Severity.UNLIKELY: Level.UNLIKELY,
     Severity.NOTE: Level.NOTE,
 }
-# Which input a finding about the whole slip is shown at.
-PLACES = {
-    "po2-above-alveolar": "po2", "po2-looks-like-kpa": "po2", "po2-looks-like-mmhg": "po2",
-    "pco2-looks-like-kpa": "pco2", "pco2-looks-like-mmhg": "pco2", "so2-against-curve": "so2",
-    "arterial-looks-venous": "site", "fractions-do-not-add": "o2hb", "venous-above-arterial": "so2", "hb-jump": "hb",
-    "ph-pco2-hco3-disagree": "bicarbonate", "calculated-as-measured": "so2", "co-and-ci-disagree": "cardiac_index",
-    "p50-out-of-range": "so2", "room-air-with-oxygen": "fio2", "gap-reading-false": "spo2", "gap-dyshaemoglobin": "spo2",
-    "gap-send-co-oximetry": "spo2", "cohb-hidden": "cohb", "hypoxaemia-agreed": "spo2", "hypoxaemia-occult": "spo2",
-    "pf-from-estimated-fio2": "fio2", "spo2-above-97": "spo2", "duplicate-sample": "clock",
-}  # fmt: skip
-# These tell of the patient, not of a slip of the key: said at once, without asking whether the value was checked.
-TELLS = frozenset({"gap-reading-false", "gap-dyshaemoglobin", "gap-send-co-oximetry", "cohb-hidden", "hypoxaemia-agreed",
-                   "hypoxaemia-occult", "o2er-out-of-range"})  # fmt: skip
-SAID_ALREADY = ("-impossible", "-unlikely", "time-in-future", "before-admission", "site-not-stated",
-                "saturation-without-site", "fio2-fraction-or-percent", "saturation-like-fraction")  # fmt: skip
 CANNULA_TOP = 6.0  # L/min; the rule holds up to here (common practice)
 
 

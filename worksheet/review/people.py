@@ -21,7 +21,7 @@ def patient_page(stay: Stay) -> str:
 
 def unit_page(unit: Unit) -> str:
     """Address of the unit review."""
-    return _address("unit", unit.slug)
+    return _address("unit_review", unit.slug)
 
 
 def _address(name: str, *args: str) -> str:
