@@ -132,21 +132,22 @@ def _basis(snapshots: Snapshots, derived: Derived, table: Table, kept: Ints) -> 
     present = [part for part in parts if part is not None]
     if not present:
         return pa.array([""] * len(kept), type=pa.string())
-    return pc.binary_join_element_wise(*present, ";", null_handling="skip")
+    joined = pc.binary_join_element_wise(*present, "", null_handling="replace", null_replacement="")
+    return pc.utf8_slice_codeunits(joined, 1)  # each part begins with a semicolon
 
 
 def _where(rows: Bools, word: str) -> pa.Array | None:
     if not np.any(rows):
         return None
-    return pc.if_else(pa.array(rows), pa.scalar(word), pa.scalar(None, type=pa.string()))
+    return pc.if_else(pa.array(rows), pa.scalar(f";{word}"), pa.scalar(None, type=pa.string()))
 
 
 def _carried(name: str, rows: Bools, age: Floats) -> pa.Array | None:
-    """``name-carried:minutes``; a value that was read later has a negative age."""
+    """``;name-carried:minutes``; a value that was read later has a negative age."""
     if name in ("height", "weight", "age") or not np.any(rows):
         return None
     minutes = pa.array(np.where(rows, np.rint(np.nan_to_num(age) * 60.0), 0.0), mask=~rows)
-    return pc.binary_join_element_wise(f"{name.replace('_', '-')}-carried:", pc.cast(minutes, pa.string()), "")
+    return pc.binary_join_element_wise(f";{name.replace('_', '-')}-carried:", pc.cast(minutes, pa.string()), "")
 
 
 def summary(counts: Mapping[str, int]) -> str:
