@@ -162,8 +162,9 @@ def _venous(rng: np.random.Generator, story: Story, ago: float) -> dict[str, flo
     so2 = float(saturation_tanh(s["pf"] * s["fio2"], s["ph"], s["pco2"], cohb=s["cohb"], methb=s["methb"]))
     bound = 13.9 * s["hb"] * (1 - s["cohb"] - s["methb"]) * s["co"]
     venous = float(np.clip(so2 - s["vo2"] / bound, 0.2, 0.95)) + rng.normal(0, 0.006)
-    values = {"ph": round(s["ph"] - 0.04, 2), "pco2": round(s["pco2"] + 5 + 12 * max(0.0, 0.6 - venous)),
-              "po2": round(26.8 * (venous / (1 - venous)) ** 0.37), "so2": round(venous, 3)}  # fmt: skip
+    ph, pco2 = round(s["ph"] - 0.04, 2), round(s["pco2"] + 5 + 12 * max(0.0, 0.6 - venous))
+    po2 = float(po2_tanh(venous, ph, pco2, cohb=s["cohb"], methb=s["methb"]))
+    values = {"ph": ph, "pco2": pco2, "po2": round(po2), "so2": round(venous, 3)}
     if story.co_oximetry:
         values |= {"cohb": round(s["cohb"], 3), "methb": round(s["methb"], 3)}
     return values
