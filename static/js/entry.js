@@ -148,7 +148,7 @@
     say("Saving …");
     help();
     try {
-      await answered(await post(form().action, button));
+      await answered(await post(form().getAttribute("action"), button));
     } catch (problem) {
       failed(problem);
     } finally {

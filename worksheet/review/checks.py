@@ -13,7 +13,7 @@ from worksheet.ward.display import Display
 from worksheet.ward.models import Entry, Stay, User
 
 from .entry_form import NOTE_LONGEST, SAMPLE_ONLY, Level, Notice, Slip, ValueField
-from .finding_places import PLACES, SAID_ALREADY, TELLS
+from .finding_places import FROM_WRONG, PLACES, SAID_ALREADY, TELLS
 from .trial import Trial, others, try_out
 
 LONG_AGO = timedelta(hours=12)
@@ -219,10 +219,16 @@ def _derived(slip: Slip, user: User, stay: Stay, display: Display, replacing: En
         return None
     trial = try_out(user, stay, slip.new_entry(), replacing)
     for found in trial.findings(display):
-        asked_twice = found.code == "duplicate-sample" and any(n.code == "same_sample" for n in slip.notices)
-        if not found.code.endswith(SAID_ALREADY) and not asked_twice:
+        if not found.code.endswith(SAID_ALREADY) and not _asked(slip, found.code):
             level = Level.NOTE if found.code in TELLS else LEVELS[found.severity]
             _say(
                 slip, level, PLACES.get(found.code, ""), found.code, f"{found.sentence} {found.settle}", found.sentence
             )
     return trial
+
+
+def _asked(slip: Slip, code: str) -> bool:
+    """Whether the same slip of the key is asked about already: one mistake, one question."""
+    same_sample = any(n.code == "same_sample" for n in slip.notices)
+    doubted = [n for n in FROM_WRONG.get(code, ()) if any(m.level > Level.NOTE for m in slip.fields[n].notices)]
+    return (code == "duplicate-sample" and same_sample) or bool(doubted)

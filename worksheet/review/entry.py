@@ -105,9 +105,8 @@ def _open(desk: Desk) -> HttpResponse:
 
 def _show(desk: Desk, slip: Slip, trial: Any, *, refused: bool = False, **more: Any) -> HttpResponse:
     context = page_parts(desk, slip, trial) | {"refused": refused, **more}
-    response = render(desk.request, "review/entry.html", context, status=422 if refused else 200)
-    response["X-Worksheet-Form"] = "refused" if refused else "shown"
-    return response
+    response = render(desk.request, "review/entry.html", context)
+    return answered(desk.request, response, bool(refused))
 
 
 def _save(desk: Desk) -> HttpResponse:
@@ -205,6 +204,14 @@ def _done(desk: Desk, entry: Entry, verb: str) -> HttpResponse:
         target = reverse("entry_new", args=[desk.stay.unit.slug, desk.stay.reference])
         target += f"?date={at:%Y-%m-%d}&clock={at:%H:%M}"
     return go(desk.request, target)
+
+
+def answered(request: HttpRequest, response: HttpResponse, refused: bool) -> HttpResponse:
+    """Mark a form's answer for the script, which must tell it from a login page; a browser gets the status too."""
+    response["X-Worksheet-Form"] = "refused" if refused else "shown"
+    if refused and not request.headers.get("X-Worksheet-Form"):
+        response.status_code = 422
+    return response
 
 
 def go(request: HttpRequest, target: str) -> HttpResponse:

@@ -21,6 +21,7 @@ if TYPE_CHECKING:
 
 OTHER_INPUTS = ("date", "clock", "fold", "site", "device", "flow_method", "sample", "note", "reason", "begun_by",
                 "kind", "amount", "bed")  # fmt: skip
+_NAMES = {"clock": "time", "fold": "time", "flow_method": "method of flow", "begun_by": "who recorded it"}
 _FOCUS = {
     "date": "date",
     "clock": "clock",
@@ -47,6 +48,12 @@ class Said:
     def kind(self) -> str:
         """Its class in the style sheet."""
         return self.notice.level.name.lower()
+
+    @property
+    def where(self) -> str:
+        """The input it is about, in a word or two."""
+        name = self.notice.field
+        return CATALOGUE[name].symbol if name in CATALOGUE else _NAMES.get(name, name or "the slip as a whole")
 
     @property
     def box_id(self) -> str:

@@ -18,7 +18,7 @@ from worksheet.ward import audit, record
 from worksheet.ward.models import Entry, Stay
 
 from . import drafts, event_form
-from .entry import Desk, go, refuse_other_person, same
+from .entry import Desk, answered, go, refuse_other_person, same
 from .entry_form import DEVICE_WORDS
 from .entry_page import facts, form_parts
 from .event_form import KIND_WORDS, SETTINGS, EventForm
@@ -129,6 +129,5 @@ def _show(desk: Desk, form: EventForm, *, refused: bool = False, restored: objec
         "settings": [line for line in parts["lines"] if line.field.name in SETTINGS],
         "refused": refused, "restored": restored,
     }  # fmt: skip
-    response = render(desk.request, "review/event.html", context, status=422 if refused else 200)
-    response["X-Worksheet-Form"] = "refused" if refused else "shown"
-    return response
+    response = render(desk.request, "review/event.html", context)
+    return answered(desk.request, response, bool(refused))

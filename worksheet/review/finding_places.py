@@ -49,3 +49,16 @@ SAID_ALREADY = (
     "fio2-fraction-or-percent",
     "saturation-like-fraction",
 )
+# What follows from a value that is doubted by itself is not asked a second time.
+FROM_WRONG = {
+    "po2-looks-like-kpa": ("po2",),
+    "po2-looks-like-mmhg": ("po2",),
+    "pco2-looks-like-kpa": ("pco2",),
+    "pco2-looks-like-mmhg": ("pco2",),
+    "po2-above-alveolar": ("po2", "pco2", "fio2"),
+    "so2-against-curve": ("po2", "pco2", "ph", "so2"),
+    "arterial-looks-venous": ("po2", "so2"),
+    "p50-out-of-range": ("po2", "pco2", "ph", "so2"),
+    "ph-pco2-hco3-disagree": ("ph", "pco2", "bicarbonate"),
+    "hb-jump": ("hb",),
+}

@@ -19,7 +19,7 @@ from worksheet.ward.models import User
 from worksheet.ward.models.places import check_time_zone
 
 THEMES = (("system", "as the system"), ("light", "light"), ("dark", "dark"))
-COMMAS = (("", "as the unit chose"), ("point", "point: 7.31"), ("comma", "comma: 7,31"))
+COMMAS = (("", "as set for everybody here"), ("point", "point: 7.31"), ("comma", "comma: 7,31"))
 WORDS = {
     "po2": "Gas pressures (PO2, PCO2, P/F, A–a …)",
     "mean_arterial_pressure": "Mean arterial pressure",

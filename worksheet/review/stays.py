@@ -18,7 +18,7 @@ from worksheet.ward.display import Display
 from worksheet.ward.models import Role, Stay, Unit
 
 from . import stay_form
-from .entry import go
+from .entry import answered, go
 from .entry_page import Line, Said
 from .event_form import beds_of_unit
 from .people import patient_page, stay_for, unit_page
@@ -115,6 +115,5 @@ def _show(
         "said": {name: said([n for n in form.notices if n.field == name]) for name in INPUTS},
         "summary": said(form.standing()), "beds": [] if stay else beds_of_unit(unit),
     }  # fmt: skip
-    response = render(request, "review/entry_stay.html", context, status=422 if refused else 200)
-    response["X-Worksheet-Form"] = "refused" if refused else "shown"
-    return response
+    response = render(request, "review/entry_stay.html", context)
+    return answered(request, response, bool(refused))

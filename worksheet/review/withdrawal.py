@@ -11,7 +11,7 @@ from django.views.decorators.http import require_http_methods
 
 from worksheet.ward import record
 
-from .entry import Desk, go
+from .entry import Desk, answered, go
 from .entry_page import facts
 from .people import patient_page
 from .versions import REASON_LONGEST, newest
@@ -58,6 +58,5 @@ def _show(desk: Desk, reason: str, problem: str) -> HttpResponse:
         "page": patient_page(desk.stay),
         "key": desk.request.POST.get("key") or uuid.uuid4().hex,
     }
-    response = render(desk.request, "review/entry_strike.html", context, status=422 if problem else 200)
-    response["X-Worksheet-Form"] = "refused" if problem else "shown"
-    return response
+    response = render(desk.request, "review/entry_strike.html", context)
+    return answered(desk.request, response, bool(problem))
