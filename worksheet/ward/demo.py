@@ -14,7 +14,7 @@ from typing import Any
 import numpy as np
 from django.db import transaction
 
-from worksheet.oxygen.curve import saturation_tanh
+from worksheet.oxygen.curve import po2_tanh, saturation_tanh
 from worksheet.oxygen.readings import Device, Event, FlowMethod, Site
 
 from . import audit, record
