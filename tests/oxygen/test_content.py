@@ -84,6 +84,7 @@ def test_blood_content_worked_by_hand():
         (oxygen_content, (15.0, 0.9, 0.0, DEFAULT), (15.0, 0.9, BELOW, DEFAULT)),
         (co2_content_plasma, (0.0, 7.4), (BELOW, 7.4)),
         (co2_content_blood, (40.0, 7.8, 15.0, 0.9), (40.0, 8.142, 15.0, 0.9)),
+        (co2_content_blood, (40.0, 7.8, 15.0, 0.9), (40.0, 8.5, 15.0, 0.9)),
         (co2_content_blood, (40.0, 7.4, 0.0, 0.9), (40.0, 7.4, BELOW, 0.9)),
         (co2_content_blood, (40.0, 7.4, 15.0, 0.0), (40.0, 7.4, 15.0, BELOW)),
         (co2_content_blood, (40.0, 7.4, 15.0, 1.0), (40.0, 7.4, 15.0, ABOVE)),

@@ -176,24 +176,25 @@ def test_saturation_beside_carbon_monoxide_solves_haldanes_law(share, a):
     both = s + (1 - s) * share
     # the curve at the pressure of both ligands gives the saturation with both
     law = by_hand(po2 * both / (both - share), a) - both
-    np.testing.assert_allclose(law, 0.0, atol=4e-5 if share <= carbon_monoxide.SOLVED_FROM else 1e-12)
+    # where one step stands for the root (next test), the law is left with twice the error of the saturation
+    np.testing.assert_allclose(law, 0.0, atol=2e-4 if share <= carbon_monoxide.SOLVED_FROM else 1e-12)
 
 
 @pytest.mark.parametrize("share", [0.001, 0.005, 0.01, 0.02, 0.03])
-def test_two_newton_steps_stand_for_the_root(share):
+def test_one_step_stands_for_the_root(share):
     po2, a = np.meshgrid(np.geomspace(1.0, 600.0, 60), np.linspace(-0.8, 0.8, 9))
     x = tanh_model.abscissa(po2, a, np.float64(37.0))
     odds = tanh_model.odds_at(x, a)
     exact = tanh_model.expit(carbon_monoxide._haldane_root(odds, x, a, np.full_like(x, share)))
     found = saturation_with_co(po2, a, 37.0, share)
-    assert 100 * np.abs(found - exact).max() < 0.003  # points; 0.05 asked
+    assert 100 * np.abs(found - exact).max() < 0.01  # points; 0.05 asked
 
 
 def test_no_step_where_the_root_takes_over():
     edge = carbon_monoxide.SOLVED_FROM
     po2 = np.array([15.0, 26.8, 40.0, 90.0])
     before, after = saturation_with_co(po2, 0.0, 37.0, edge), saturation_with_co(po2, 0.0, 37.0, edge + 1e-9)
-    assert 100 * np.abs(after - before).max() < 0.003
+    assert 100 * np.abs(after - before).max() < 0.01
 
 
 def test_rows_with_and_without_carbon_monoxide_in_one_table():
@@ -228,22 +229,25 @@ def test_pressure_beside_carbon_monoxide_worked_by_hand(share):
 # Derivatives that a Newton step uses
 
 
-@pytest.mark.parametrize("x", [-3.0, -1.0, 0.0, 0.7, 2.0])
 @pytest.mark.parametrize("a", [-1.0, 0.0, 0.8])
-def test_slope_of_the_model_is_the_numerical_one(x, a):
-    step = 1e-5
-    numerical = (tanh_model.odds_at(x + step, a) - tanh_model.odds_at(x - step, a)) / (2 * step)
-    assert tanh_model.odds_slope(np.float64(x), np.float64(a)) == pytest.approx(numerical, rel=1e-8)
+@pytest.mark.parametrize("odds", [-3.0, 0.0, 2.0, 3.5])
+def test_one_step_towards_the_displacement_triples_the_digits(odds, a):
+    # Halley's method with true first and second derivatives leaves the cube of an error, Newton's leaves the square
+    x0 = tanh_model.abscissa_of_odds(np.float64(odds), np.float64(a)) + a
+    for error in (0.05, -0.05):
+        left = tanh_model._nearer(np.float64(a + error), np.float64(odds), x0) - a
+        assert abs(left) < 4.0 * abs(error) ** 3
 
 
 @pytest.mark.parametrize("odds", [-3.0, 0.0, 2.0, 4.0])
 @pytest.mark.parametrize("share", [0.02, 0.3, 0.7])
-def test_slope_of_haldanes_law_is_the_numerical_one(odds, share):
+def test_derivatives_of_haldanes_law_are_the_numerical_ones(odds, share):
     step, own = 1e-5, (np.float64(-0.3), np.float64(0.1), np.float64(share))
-    above, _ = carbon_monoxide._haldane(np.float64(odds + step), *own)
-    below, _ = carbon_monoxide._haldane(np.float64(odds - step), *own)
-    _, slope = carbon_monoxide._haldane(np.float64(odds), *own)
+    above, slope_above, _ = carbon_monoxide._haldane(np.float64(odds + step), *own)
+    below, slope_below, _ = carbon_monoxide._haldane(np.float64(odds - step), *own)
+    _, slope, curved = carbon_monoxide._haldane(np.float64(odds), *own)
     assert slope == pytest.approx((above - below) / (2 * step), rel=1e-7)
+    assert curved == pytest.approx((slope_above - slope_below) / (2 * step), rel=1e-5, abs=1e-9)
 
 
 @pytest.mark.parametrize("a", [-2.0, 0.0, 1.5])

@@ -53,7 +53,6 @@ MODULES = (
 OWN_TESTS = {
     "p50_grade", "pf_band", "pf_band_global", "inactive_share", "choose_saturation", "gap_calculated", "gap_measured",
     "displacement_terms", "abscissa", "abscissa_of_odds", "displacement_root", "expit", "in_range", "odds_at",
-    "odds_slope",
 }  # fmt: skip
 
 # A PO2 and a saturation drawn apart seldom lie on one living curve; the inverse tests below draw them together.
@@ -233,7 +232,7 @@ def test_direction_of_each_shift(po2, ph, pco2, t):
 @given(so2=st.floats(0.001, 0.99), ph=number("ph"), pco2=number("pco2"), t=number("temperature"), cohb=number("cohb"))
 def test_inverse_of_the_curve(so2, ph, pco2, t, cohb):
     po2 = curve.po2_tanh(so2, ph, pco2, t, cohb, 0.01)
-    tolerance = 5e-5 if 0 < curve.co_share(cohb, 0.01) <= carbon_monoxide.SOLVED_FROM else 1e-9
+    tolerance = 1e-4 if 0 < curve.co_share(cohb, 0.01) <= carbon_monoxide.SOLVED_FROM else 1e-9
     assert curve.saturation_tanh(po2, ph, pco2, t, cohb, 0.01) == pytest.approx(float(so2), abs=tolerance)
 
 

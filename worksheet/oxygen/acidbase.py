@@ -16,7 +16,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import ArrayLike
 
-from .domain import Floats, floats, keep, quiet
+from .domain import Floats, floats, keep, power_of_ten, quiet
 
 
 @quiet
@@ -36,7 +36,7 @@ def bicarbonate(ph: ArrayLike, pco2: ArrayLike) -> Floats:
         Bicarbonate [mmol/L], NaN where any input is NaN or PCO2 negative.
     """
     ph, pco2 = floats(ph, pco2)
-    return keep(pco2 >= 0.0, 0.0307 * pco2 * np.power(10.0, ph - 6.105))
+    return keep(pco2 >= 0.0, 0.0307 * pco2 * power_of_ten(ph - 6.105))
 
 
 @quiet
@@ -105,7 +105,7 @@ def base_excess_lang_zander(ph: ArrayLike, pco2: ArrayLike, hb: ArrayLike, so2: 
         Base excess [mmol/L], NaN where any input is NaN or out of domain. Published mean error 0.86 mmol/L.
     """
     ph, pco2, hb, so2 = floats(ph, pco2, hb, so2)
-    plasma = 0.0304 * pco2 * np.power(10.0, ph - 6.1) - 24.26 + (9.5 + 1.63 * hb) * (ph - 7.4)
+    plasma = 0.0304 * pco2 * power_of_ten(ph - 6.1) - 24.26 + (9.5 + 1.63 * hb) * (ph - 7.4)
     valid = (pco2 >= 0.0) & (hb >= 0.0) & (so2 >= 0.0) & (so2 <= 1.0)
     return keep(valid, (1.0 - 0.0143 * hb) * plasma - 0.2 * hb * (1.0 - so2))
 
@@ -168,7 +168,7 @@ def pco2_at(pco2: ArrayLike, temperature: ArrayLike) -> Floats:
         Carbon dioxide partial pressure at that temperature [mmHg], NaN where any input is NaN or PCO2 negative.
     """
     pco2, temperature = floats(pco2, temperature)
-    return keep(pco2 >= 0.0, pco2 * np.power(10.0, 0.019 * (temperature - 37.0)))
+    return keep(pco2 >= 0.0, pco2 * power_of_ten(0.019 * (temperature - 37.0)))
 
 
 @quiet
@@ -188,12 +188,12 @@ def pco2_at_37(pco2: ArrayLike, temperature: ArrayLike) -> Floats:
         Carbon dioxide partial pressure at 37 °C [mmHg], NaN where any input is NaN or PCO2 negative.
     """
     pco2, temperature = floats(pco2, temperature)
-    return keep(pco2 >= 0.0, pco2 * np.power(10.0, -0.019 * (temperature - 37.0)))
+    return keep(pco2 >= 0.0, pco2 * power_of_ten(-0.019 * (temperature - 37.0)))
 
 
 def _po2_exponent(po2: Floats) -> tuple[Floats, Floats]:
     """Slope d log10 PO2 / dT of blood that keeps its content, and its derivative by ln PO2."""
-    bound = np.power(po2, 3.88)
+    bound = np.exp(3.88 * np.log(po2))
     top, bottom = 5.49e-11 * bound + 0.071, 9.72e-9 * bound + 2.30
     slope = 3.88 * bound * (5.49e-11 * bottom - 9.72e-9 * top) / (bottom * bottom)
     return top / bottom, slope
@@ -219,7 +219,7 @@ def po2_at(po2: ArrayLike, temperature: ArrayLike) -> Floats:
     """
     po2, temperature = floats(po2, temperature)
     exponent, _ = _po2_exponent(po2)
-    return keep(po2 >= 0.0, po2 * np.power(10.0, (temperature - 37.0) * exponent))
+    return keep(po2 >= 0.0, po2 * power_of_ten((temperature - 37.0) * exponent))
 
 
 @quiet

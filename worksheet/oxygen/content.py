@@ -29,7 +29,7 @@ from .curve import (
     saturation_severinghaus,
     saturation_with_co,
 )
-from .domain import Floats, floats, keep, quiet
+from .domain import Floats, floats, keep, power_of_ten, quiet
 
 _SOLUBILITY_PER_KELVIN = -0.012  # [2]; the same in Siggaard-Andersen 1984
 
@@ -230,7 +230,7 @@ def end_capillary_saturation(
 
 def _trusted(trust: Floats, rest: Floats) -> Floats:
     """What a pair adds to the modelled curve; nothing where no curve passes through it."""
-    return np.where((trust > 0.0) & np.isfinite(rest), trust * rest, 0.0)
+    return np.where(np.isfinite(rest), trust * rest, 0.0)
 
 
 def _trust_of_pair(so2: Floats) -> Floats:
@@ -262,7 +262,7 @@ def co2_content_plasma(pco2: ArrayLike, ph: ArrayLike, temperature: ArrayLike = 
     colder, alkaline = 37.0 - temperature, 7.4 - ph
     solubility = 0.0307 + 0.00057 * colder + 0.00002 * colder * colder
     pk = 6.086 + 0.042 * alkaline + (colder + 1.0) * (0.00472 + 0.00139 * alkaline)
-    return keep(pco2 >= 0.0, 2.226 * solubility * pco2 * (1.0 + np.power(10.0, ph - pk)))
+    return keep(pco2 >= 0.0, 2.226 * solubility * pco2 * (1.0 + power_of_ten(ph - pk)))
 
 
 @quiet

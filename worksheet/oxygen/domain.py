@@ -8,6 +8,8 @@ from numpy.typing import ArrayLike, NDArray
 Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
 
+_LN_10 = float(np.log(10.0))
+
 quiet = np.errstate(all="ignore")  # decorator: 0/0 and the like end as NaN, by intent
 
 
@@ -43,3 +45,19 @@ def keep(valid: ArrayLike, result: ArrayLike) -> Floats:
         The result, NaN where not valid [unchanged].
     """
     return np.where(np.asarray(valid, dtype=np.bool_), np.asarray(result, dtype=np.float64), np.nan)
+
+
+def power_of_ten(exponent: Floats) -> Floats:
+    """Ten to a power; several times as fast as numpy's general power.
+
+    Parameters
+    ----------
+    exponent : ndarray
+        Exponent [1].
+
+    Returns
+    -------
+    ndarray
+        10^exponent [1].
+    """
+    return np.asarray(np.exp(_LN_10 * exponent))

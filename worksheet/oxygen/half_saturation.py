@@ -76,7 +76,7 @@ def p50_of_displacement(a: ArrayLike, temperature: ArrayLike = 37.0) -> Floats:
         P50 [mmHg], NaN where any input is NaN or the displacement outside -2.5 to 2.5.
     """
     a, temperature = floats(a, temperature)
-    x = abscissa_of_odds(np.asarray(0.0), a)
+    x = abscissa_of_odds(np.asarray(0.0), a, steps=3)
     return keep(in_range(a), P_REFERENCE * np.exp(x + a + PER_KELVIN * (temperature - 37.0)))
 
 
@@ -117,7 +117,8 @@ def p50_in_vivo(
     result = np.full(so2.shape, np.nan)
     po2, so2, temperature, share = po2[rows], so2[rows], temperature[rows], share[rows]
     a = displacement_from_pair(po2, so2, temperature, share)
-    result[rows] = po2_with_co(0.5, a, temperature, share)
+    free = not np.any(share > 0.0)
+    result[rows] = p50_of_displacement(a, temperature) if free else po2_with_co(0.5, a, temperature, share)
     return result
 
 

@@ -15,7 +15,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import ArrayLike
 
-from .domain import Floats, floats, keep, quiet
+from .domain import Floats, floats, keep, power_of_ten, quiet
 
 
 @quiet
@@ -86,7 +86,7 @@ def kelman_equivalent_po2(
     """
     po2, ph, pco2, temperature = floats(po2, ph, pco2, temperature)
     shift = 0.024 * (37.0 - temperature) + 0.40 * (ph - 7.40) - 0.06 * np.log10(pco2 / 40.0)
-    return keep((po2 >= 0.0) & (pco2 > 0.0), po2 * np.power(10.0, shift))
+    return keep((po2 >= 0.0) & (pco2 > 0.0), po2 * power_of_ten(shift))
 
 
 def saturation_severinghaus_kelman(

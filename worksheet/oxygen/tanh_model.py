@@ -26,11 +26,12 @@ from .domain import Bools, Floats, floats, keep, quiet
 from .quantities import MMHG_PER_KPA
 
 # [1]: y = Y0 + x + (H0 + a) tanh(K x), x = ln(PO2 / 7 kPa) - a - 0.055 (T - 37), y = ln(S / (1 - S)); digits of [2]
-_Y0, _H0, _K = 1.8747, 3.5, 0.5342857
+Y0, H0, K = 1.8747, 3.5, 0.5342857
 P_REFERENCE = 7.0 * MMHG_PER_KPA
 PER_KELVIN = 0.055
 PCO2_STANDARD = 5.33 * MMHG_PER_KPA
 DPG_STANDARD = 5.0
+_ROOT = 1e-10  # what may be left of the equation, in ln-odds
 A_RANGE = (-2.5, 2.5)  # the range that the displacement is sought in; no living blood is near its ends
 
 
@@ -136,13 +137,7 @@ def abscissa(po2: Floats, a: Floats, temperature: Floats) -> Floats:
 @quiet
 def odds_at(x: Floats, a: Floats) -> Floats:
     """The y of the tanh model: ln(S / (1 - S))."""
-    return np.asarray(_Y0 + x + (_H0 + a) * np.tanh(_K * x))
-
-
-def odds_slope(x: Floats, a: Floats) -> Floats:
-    """Slope dy/dx of the tanh model: Hill's n at that point."""
-    t = np.tanh(_K * x)
-    return np.asarray(1.0 + (_H0 + a) * _K * (1.0 - t * t))
+    return np.asarray(Y0 + x + (H0 + a) * np.tanh(K * x))
 
 
 @quiet
@@ -151,24 +146,52 @@ def expit(odds: Floats) -> Floats:
     return np.asarray(1.0 / (1.0 + np.exp(-odds)))
 
 
-def abscissa_of_odds(odds: Floats, a: Floats) -> Floats:
-    """The x of the tanh model for ln(S / (1 - S)), by Newton: the slope is at least 1, five steps are exact."""
-    height = _H0 + a
-    rest = odds - _Y0
-    x = np.clip(rest / (1.0 + _K * height), rest - height, rest + height)
-    for _ in range(5):
-        t = np.tanh(_K * x)
-        x = x - (x + height * t - rest) / (1.0 + height * _K * (1.0 - t * t))
+def abscissa_of_odds(odds: Floats, a: Floats, steps: int = 5) -> Floats:
+    """The x of the tanh model for ln(S / (1 - S)), by Newton: the slope is at least 1, five steps are exact anywhere.
+
+    At half saturation three are.
+    """
+    height = H0 + a
+    rest = odds - Y0
+    x = np.clip(rest / (1.0 + K * height), rest - height, rest + height)
+    for _ in range(steps):
+        t = np.tanh(K * x)
+        x = x - (x + height * t - rest) / (1.0 + height * K * (1.0 - t * t))
     return np.asarray(x)
 
 
 def displacement_root(x0: Floats, odds: Floats) -> tuple[Floats, Floats]:
-    """Displacement with y(x0 - a) = odds by Newton from Hill's estimate, and what is left of the equation."""
+    """Displacement with y(x0 - a) = odds, and what is left of the equation.
+
+    Two steps of Halley are exact for living blood; rows that need more get them, each by itself.
+    """
+    x0, odds = np.broadcast_arrays(x0, odds)
+    a = _nearer(_nearer(_first_displacement(odds, x0), odds, x0), odds, x0)
+    left = np.asarray(odds_at(x0 - a, a) - odds)
+    for _ in range(4):
+        rows = np.abs(left) > _ROOT
+        if not np.any(rows):
+            break
+        a[rows] = _nearer(a[rows], odds[rows], x0[rows])
+        left[rows] = odds_at(x0[rows] - a[rows], a[rows]) - odds[rows]
+    return a, left
+
+
+def _first_displacement(odds: Floats, x0: Floats) -> Floats:
+    """First estimate: the standard curve read backwards, and how its height changes with the displacement."""
+    rest = odds - Y0
+    x = np.clip(rest / (1.0 + K * H0), rest - H0, rest + H0)
+    t = np.tanh(K * x)
     low, high = A_RANGE
-    a = np.clip((x0 - odds / 2.7 + 0.671) / 1.12, low, high)
-    for _ in range(7):
-        t = np.tanh(_K * (x0 - a))
-        height = _H0 + a
-        left = _Y0 + x0 - a + height * t - odds
-        a = a + left / (1.0 - t + height * _K * (1.0 - t * t))
-    return np.asarray(a), odds_at(x0 - a, a) - odds
+    return np.clip((x0 - x) / (1.0 - t / (1.0 + H0 * K * (1.0 - t * t))), low, high)
+
+
+def _nearer(a: Floats, odds: Floats, x0: Floats) -> Floats:
+    """One step of Halley's method."""
+    t = np.tanh(K * (x0 - a))
+    height = H0 + a
+    bend = K * (1.0 - t * t)
+    left = Y0 + x0 - a + height * t - odds
+    slope = t - 1.0 - height * bend
+    curved = -2.0 * bend * (1.0 + height * K * t)
+    return np.asarray(a - 2.0 * left * slope / (2.0 * slope * slope - left * curved))
