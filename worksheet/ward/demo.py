@@ -135,7 +135,7 @@ def _gas(rng: np.random.Generator, story: Story, ago: float) -> dict[str, float]
     s = _state(story, ago)
     po2 = round(_noisy(rng, "po2", s["pf"] * s["fio2"]))
     ph, pco2 = round(_noisy(rng, "ph", s["ph"]), 2), round(_noisy(rng, "pco2", s["pco2"]))
-    so2 = float(saturation_tanh(po2, ph, pco2, cohb=s["cohb"], methb=s["methb"])) + rng.normal(0, 0.002)
+    so2 = float(saturation_tanh(po2, ph, pco2, cohb=s["cohb"], methb=s["methb"])) + rng.normal(0, 0.004)
     inactive = s["cohb"] + s["methb"]
     # Common practice: the finger takes COHb for O2Hb, and MetHb draws it toward 85 %.
     finger = so2 + rng.normal(0, 0.008) - 0.55 * s["methb"] * (so2 > 0.8) + story.spo2_offset
@@ -162,8 +162,9 @@ def _venous(rng: np.random.Generator, story: Story, ago: float) -> dict[str, flo
     so2 = float(saturation_tanh(s["pf"] * s["fio2"], s["ph"], s["pco2"], cohb=s["cohb"], methb=s["methb"]))
     bound = 13.9 * s["hb"] * (1 - s["cohb"] - s["methb"]) * s["co"]
     venous = float(np.clip(so2 - s["vo2"] / bound, 0.2, 0.95)) + rng.normal(0, 0.006)
-    ph, pco2 = round(s["ph"] - 0.04, 2), round(s["pco2"] + 5 + 12 * max(0.0, 0.6 - venous))
-    po2 = float(po2_tanh(venous, ph, pco2, cohb=s["cohb"], methb=s["methb"]))
+    ph = round(_noisy(rng, "ph", s["ph"] - 0.04), 2)
+    pco2 = round(_noisy(rng, "pco2", s["pco2"] + 5 + 12 * max(0.0, 0.6 - venous)))
+    po2 = _noisy(rng, "po2", float(po2_tanh(venous, ph, pco2, cohb=s["cohb"], methb=s["methb"])))
     values = {"ph": ph, "pco2": pco2, "po2": round(po2), "so2": round(venous, 3)}
     if story.co_oximetry:
         values |= {"cohb": round(s["cohb"], 3), "methb": round(s["methb"], 3)}
