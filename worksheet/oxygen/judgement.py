@@ -1,7 +1,7 @@
 """Which step failed: judged step by step for many comparisons at once, with words only at the end.
 
-A step counts when its loss is **real** (its own 95 % interval lies below zero, Bonferroni-corrected for the number of
-steps tested) and **material** (at least 5 % of the supply at the start). Of those the largest loss is named, if it can
+A step counts when its loss is **real** (the upper limit of its own one-sided 95 % interval lies below zero, Bonferroni-
+corrected for the number of steps tested: only losses are looked for) and **material** (at least 5 % of the supply at the start). Of those the largest loss is named, if it can
 be told from the next; a certain loss at one step does not drown in the noise of another.
 
 The residual (measured minus curve) needs care: where it lies inside its own noise it is no loss of function. Then the
@@ -27,8 +27,7 @@ from .measurement import DEFAULT, Uncertainties
 from .readings import Bools, Derived, Flag, Ints, Snapshots
 
 MATERIAL = 0.05  # of the supply at the start; common practice
-ALPHA = 0.05  # two-sided, before the correction for the number of steps
-ORDERED = 1.6448536269514722  # one-sided 95 %: the larger of two losses
+ALPHA = 0.05  # one-sided, before the correction for the number of steps
 NONE, UNDETERMINED = "none", "undetermined"
 Words = NDArray[np.str_]
 
@@ -106,7 +105,7 @@ def conclude(part: Mapping[str, Floats], sd: Mapping[str, Floats], missing_could
     parts, sds = (np.stack([table[name] for name in STEPS]) for table in (part, sd))
     known = ~np.isnan(parts) & ~np.isnan(sds)
     tested = np.sum(known & (sds > 0.0), axis=0)
-    critical = -ndtri(0.5 * ALPHA / np.maximum(tested, 1))
+    critical = -ndtri(ALPHA / np.maximum(tested, 1))
     real = known & (parts + critical * sds < 0.0)
     material = known & (parts <= -MATERIAL)
     lost = np.where(real & material, parts, 0.0)
@@ -125,7 +124,7 @@ def _told_apart(lost: Floats, sds: Floats, order: Ints) -> Bools:
     """Whether the largest loss is larger than the next beyond noise."""
     worst, runner_up = (np.take_along_axis(lost, order[[i]], axis=0)[0] for i in (0, 1))
     sd = [np.nan_to_num(np.take_along_axis(sds, order[[i]], axis=0)[0]) for i in (0, 1)]
-    return np.asarray((runner_up == 0.0) | (worst - runner_up < -ORDERED * np.hypot(*sd)))
+    return np.asarray((runner_up == 0.0) | (worst - runner_up < -Z95 * np.hypot(*sd)))
 
 
 def use_is_worse(snapshots: Snapshots, derived: Derived, ledger: Ledger, settings: Uncertainties = DEFAULT) -> Bools:

@@ -16,18 +16,19 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
+from numpy.typing import ArrayLike
 
 from .constants import Constants
 from .curve import saturation
 from .derive import chain_inputs, oxygen_chain
-from .domain import Floats, quiet
+from .domain import Floats, floats, quiet
 from .factors import Route, RowFactors, bound_per_gram, row_factors
 from .measurement import DEFAULT, Uncertainties, fio2_sd, input_sds, parts
 from .quantities import WITH_SD
 from .readings import Bools, Derived, Flag, Snapshots
 
 __all__ = [
-    "DEFAULT", "Budget", "MonteCarlo", "Uncertainties", "budget", "first_order_doubtful", "input_sds", "monte_carlo",
+    "DEFAULT", "Budget", "MonteCarlo", "Uncertainties", "budget", "first_order_doubtful", "input_sds", "interval", "monte_carlo",
     "standard_uncertainties",
 ]  # fmt: skip
 
@@ -106,6 +107,38 @@ def budget(snapshots: Snapshots, derived: Derived, constants: Constants, setting
     slopes = _Slopes.of(snapshots, rows, derived, constants)
     contents = _Contents.of(snapshots, derived, rows, slopes, constants)
     return Budget(_finals(snapshots, derived, rows, contents, constants), _sds(snapshots, rows, settings))
+
+
+_FRACTIONS_SHOWN = ("o2er", "shunt_fraction")
+
+
+@quiet
+def interval(name: str, value: ArrayLike, sd: ArrayLike) -> tuple[Floats, Floats]:
+    """95 % interval of a derived quantity.
+
+    The errors of flow and FiO2 are factors, so for positive quantities the interval is symmetric on the logarithm:
+    ``value exp(+-1.96 sd / value)``. Below a relative SD of 5 % that is the same as ``value +- 1.96 sd``; at 15 % the
+    latter covers the truth in 93 % only (simulated courses). Fractions stay inside 0 to 1.
+
+    Parameters
+    ----------
+    name : str
+        Derived quantity of the catalogue.
+    value, sd : array_like
+        Its value and standard uncertainty [its canonical unit].
+
+    Returns
+    -------
+    low, high : ndarray
+        Limits [its canonical unit], NaN where any input is NaN.
+    """
+    value, sd = floats(value, sd)
+    if name in _FRACTIONS_SHOWN:
+        return np.clip(value - Z95 * sd, 0.0, 1.0), np.clip(value + Z95 * sd, 0.0, 1.0)
+    if name in ("aa_gradient", "avdo2"):
+        return value - Z95 * sd, value + Z95 * sd
+    factor = np.exp(Z95 * sd / value)
+    return np.asarray(value / factor), np.asarray(value * factor)
 
 
 def first_order_doubtful(snapshots: Snapshots, derived: Derived, sds: Mapping[str, Floats]) -> dict[str, Bools]:
