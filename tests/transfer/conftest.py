@@ -2,7 +2,6 @@
 
 import json
 from datetime import UTC, datetime
-from pathlib import Path
 
 import pytest
 
@@ -10,7 +9,6 @@ from worksheet.transfer import pipeline
 from worksheet.transfer.times import TimeRules
 from worksheet.ward.models import Bed, Membership, Patient, Role, Stay, Unit, User
 
-DATA = Path(__file__).parent.parent / "data" / "transfer"
 NOW = datetime(2026, 3, 1, 12, 0, tzinfo=UTC)
 
 
@@ -58,6 +56,3 @@ def bring(unit, nurse):
 
     return run
 
-
-def reasons(seen):
-    return [(row.place, row.fate.value, row.reason) for row in seen.rows]

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import io
 import zipfile
+import zlib
 from pathlib import Path
 from typing import IO
 
@@ -66,13 +67,24 @@ def check_format(claimed: str, data: bytes) -> None:
         raise Refused(f"The file was announced as {claimed}, but its content is {found}.")
 
 
+def _has_doctype(archive: zipfile.ZipFile, part: zipfile.ZipInfo) -> bool:
+    """Whether a part declares a document type, which no spreadsheet needs and every entity attack does."""
+    if not part.filename.endswith((".xml", ".rels")) or part.flag_bits & 1:
+        return False
+    with archive.open(part) as opened:
+        return b"<!DOCTYPE" in opened.read(4096).replace(b"\x00", b"")
+
+
 def check_zip(data: bytes) -> None:
     """Look at the directory of a spreadsheet before unpacking any of it."""
     try:
         with zipfile.ZipFile(io.BytesIO(data)) as archive:
             parts = archive.infolist()
-    except (zipfile.BadZipFile, ValueError, NotImplementedError, OverflowError, UnicodeError, EOFError):
+            declared = [p.filename for p in parts[:MAX_PARTS] if _has_doctype(archive, p)]
+    except (zipfile.BadZipFile, ValueError, NotImplementedError, OverflowError, UnicodeError, EOFError, RuntimeError, zlib.error):
         raise Refused("The spreadsheet is damaged: its table of contents cannot be read.") from None
+    if declared:
+        raise Refused("The spreadsheet holds XML entities; such a file is not read.")
     unpacked = sum(part.file_size for part in parts)
     packed = max(1, sum(part.compress_size for part in parts))
     if len(parts) > MAX_PARTS:

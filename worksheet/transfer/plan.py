@@ -21,7 +21,11 @@ SAMPLE = 400  # rows looked at to recognise units and date order
 BEDSIDE = ("device", "flow_method", "event", "event_amount")  # columns of our own export
 CONTRACT = frozenset({"stay", "time", "site", "sample", "note", *BEDSIDE, *MEASURED})
 COMPUTED = frozenset({*DERIVED, *(f"{name}_sd" for name in WITH_SD)})
-_UNIT_IN_HEADER = re.compile(r"[(\[{]\s*([^)\]}]*?(?:\[[^\]]*\])?)\s*[)\]}]\s*$|[,;/_]\s*([^,;(]+)$|\s(\S+)$")
+_UNIT_IN_HEADER = (  # in brackets at the end, after a sign, as the last word
+    re.compile(r"[(\[{]\s*([^()\[\]{}]*(?:\[[^\]]*\])?)\s*[)\]}]\s*$"),
+    re.compile(r"[,;_]\s*([^,;_(]+)$"),
+    re.compile(r"\s(\S+)$"),
+)
 
 
 @dataclass(frozen=True)
@@ -144,10 +148,10 @@ def _unit(
     quantity: Quantity, header: str, texts: list[str], comma: bool | None
 ) -> tuple[UnitOfMeasure | None, str, bool]:
     """The unit of a column: from its header, from texts behind its values, else proposed from the values."""
-    for match in [_UNIT_IN_HEADER.search(header)]:
-        spelled = next((g for g in match.groups() if g), "").strip() if match else ""
-        unit = quantity.unit_named(spelled) if spelled else None
-        if unit is not None and spelled:
+    for pattern in _UNIT_IN_HEADER:
+        match = pattern.search(header)
+        unit = quantity.unit_named(match.group(1)) if match and match.group(1).strip() else None
+        if unit is not None:
             return unit, "header", True
     trailing = {rest for t in texts if (rest := number(t, comma)[2])}
     units = {u.ucum: u for rest in trailing if (u := quantity.unit_named(rest)) is not None}

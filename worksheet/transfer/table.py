@@ -139,7 +139,7 @@ def _records(table: Table, lines: list[str], start: int, delimiter: str) -> None
     """Every line below the header: a record, a broken line with its reason, or a skipped one."""
     width = len(table.header)
     plain = '"' not in "".join(lines[start : start + 50])
-    reader = csv.reader(lines[start:], delimiter=delimiter, skipinitialspace=not plain)
+    reader = csv.reader((line + "\n" for line in lines[start:]), delimiter=delimiter, skipinitialspace=not plain)
     previous = 0
     while True:
         try:

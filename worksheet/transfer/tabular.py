@@ -206,27 +206,29 @@ class _TableReader:
                 cautions.append(cell.caution)
             own = not site or site == row.site
             (row.cells if own else apart.setdefault(site, {}))[name] = cell
-        problems += self._without_unit(cells)
-        if row.site is Site.NONE and not row.cells.keys().isdisjoint(_GAS):
+        cautions += self._without_unit(cells)
+        if row.site is Site.NONE and Site.ARTERIAL in apart:
+            row.site = Site.ARTERIAL  # named by a header such as PaO2
+            row.cells.update(apart.pop(Site.ARTERIAL))
+        elif row.site is Site.NONE and not row.cells.keys().isdisjoint(_GAS):
             row.site = Site.ARTERIAL
             cautions.append(ASSUMED_ARTERIAL)
         row.cautions = tuple(cautions)
         return self._parts(row, apart)
 
     def _without_unit(self, cells: list[str]) -> list[str]:
-        return [f"{c.header}: the unit is not known" for c in self.unread if c.quantity and cells[c.index].strip()]
+        texts = ((c.header, cells[c.index].strip()) for c in self.unread)
+        return [f"{name} {shortened(text)}: the unit is not known; not stored" for name, text in texts if text]
 
     def _parts(self, row: Row, apart: dict[Site, dict[str, Cell]]) -> list[Row]:
-        if not apart:
-            return [row] if row.cells else []
-        if not row.cells and len(apart) == 1:
-            row.site, row.cells = next(iter(apart.items()))
-            return [row]
-        more = [
-            Row(row.place, row.patient, row.time, site, row.sample, cells=found)
-            for site, found in sorted(apart.items())
-        ]
-        return [row, *more]
+        sites = sorted(apart)
+        if not row.cells and sites:
+            row.site = sites.pop(0)
+            row.cells = apart[row.site]
+        if not row.cells:
+            return []
+        return [row, *(Row(row.place, row.patient, row.time, s, row.sample, cells=apart[s]) for s in sites)]
+
 
 
 def first_table(kind: str, data: bytes) -> Table:

@@ -19,6 +19,7 @@ _DATE = re.compile(r"(\d{1,4})\s*[./-]\s*(\d{1,2})\s*[./-]\s*(\d{1,4})", re.ASCI
 _CLOCK = re.compile(
     r"(\d{1,2})\s*[:.h]\s*(\d{2})(?:\s*[:.]\s*(\d{2})(?:[.,]\d{1,6})?)?\s*(am|pm)?\s*(?:Uhr)?", re.ASCII | re.IGNORECASE
 )
+_ISO = re.compile(r"\d{4}-\d{2}-\d{2}[T ]\d{2}:\d{2}", re.ASCII)
 _SERIAL = re.compile(r"\d{5}(?:[.,]\d+)?", re.ASCII)
 _HL7 = re.compile(r"(\d{4})(\d{2})(\d{2})(?:(\d{2})(\d{2})(?:(\d{2})(?:\.\d{1,4})?)?)?([+-]\d{4})?", re.ASCII)
 _EXCEL_EPOCH = datetime(1899, 12, 30)
@@ -129,6 +130,8 @@ def _written(text: str, order: Order) -> tuple[datetime | None, str]:
     """A date as people write it, without zone."""
     if _SERIAL.fullmatch(text):
         return _EXCEL_EPOCH + timedelta(seconds=round(float(text.replace(",", ".")) * 86400)), ""
+    if _ISO.match(text):
+        return None, f"the time '{shortened(text)}' does not exist"
     match = _DATE.match(text)
     if match is None:
         return None, f"the time '{shortened(text)}' is not a date that can be read"

@@ -3,22 +3,23 @@
 from __future__ import annotations
 
 import io
+import os
 import re
 import warnings
 import zipfile
 from datetime import date, datetime, time
 from typing import Any
-from xml.etree.ElementTree import ParseError
+os.environ.setdefault("OPENPYXL_LXML", "False")  # the guarded standard parser, whatever else is installed
 
-import openpyxl
-from defusedxml.common import DefusedXmlException
-from openpyxl.utils.cell import coordinate_to_tuple
-from openpyxl.utils.exceptions import InvalidFileException
+import openpyxl  # noqa: E402
+from defusedxml.common import DefusedXmlException  # noqa: E402
+from openpyxl.utils.cell import coordinate_to_tuple  # noqa: E402
+from openpyxl.utils.exceptions import InvalidFileException  # noqa: E402
 
-from .limits import MAX_COLUMNS, MAX_ROWS, check_zip
-from .names import column_named
-from .rows import Refused
-from .table import HEADER_WITHIN, Table, known_names, tidy_header
+from .limits import MAX_COLUMNS, MAX_ROWS, check_zip  # noqa: E402
+from .names import column_named  # noqa: E402
+from .rows import Refused  # noqa: E402
+from .table import HEADER_WITHIN, Table, known_names, tidy_header  # noqa: E402
 
 _MERGED = re.compile(rb'<(?:\w+:)?mergeCell\s[^>]{0,80}?ref="([A-Z]{1,3}\d{1,7}):([A-Z]{1,3}\d{1,7})"')
 _FILL_DOWN = {"stay", "date", "time", "site"}
@@ -42,7 +43,7 @@ def read(data: bytes) -> tuple[list[Table], list[str]]:
         raise
     except DefusedXmlException:
         raise Refused("The spreadsheet holds XML entities; such a file is not read.") from None
-    except (InvalidFileException, ParseError, zipfile.BadZipFile, KeyError, ValueError, TypeError, IndexError, AttributeError,
+    except (InvalidFileException, SyntaxError, zipfile.BadZipFile, KeyError, ValueError, TypeError, IndexError, AttributeError,
             OSError, EOFError, OverflowError, zipfile.LargeZipFile, RuntimeError, NotImplementedError) as error:  # fmt: skip
         raise Refused(f"The spreadsheet is damaged and cannot be read ({type(error).__name__}).") from None
     return _tables(sheets)
