@@ -1,8 +1,9 @@
 """Which step failed: judged step by step for many comparisons at once, with words only at the end.
 
 A step counts when its loss is **real** (the upper limit of its own one-sided 95 % interval lies below zero, Bonferroni-
-corrected for the number of steps tested: only losses are looked for) and **material** (at least 5 % of the supply at the start). Of those the largest loss is named, if it can
-be told from the next; a certain loss at one step does not drown in the noise of another.
+corrected for the number of steps tested: only losses are looked for) and **material** (at least 5 % of the supply at
+the start). Of those the largest loss is named, if it can be told from the next; a certain loss at one step does not
+drown in the noise of another.
 
 The residual (measured minus curve) needs care: where it lies inside its own noise it is no loss of function. Then the
 two accounts of what the lung did, from PO2 through the curve and from the measured saturation less the shifts, are the
