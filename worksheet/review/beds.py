@@ -12,34 +12,82 @@ from worksheet.charts.bar import LedgerBar, ledger_bar
 from worksheet.oxygen.change import Z95
 from worksheet.oxygen.judgement import STEPS, Review
 from worksheet.oxygen.ledger import Level
+from worksheet.oxygen.next_measurement import NextMeasurement, next_measurement
 from worksheet.oxygen.plausibility import Finding
+from worksheet.oxygen.readings import Flag, Ints
 from worksheet.oxygen.trend import LactateTrend, lactate_trend
-from worksheet.ward.display import Display, age_words
-from worksheet.ward.models import ReviewMark, Stay
+from worksheet.oxygen.uncertainty import Budget, budget
+from worksheet.ward.display import MISSING, Display, age_words
+from worksheet.ward.models import Stay
 from worksheet.ward.sheet import Sheet
 
+from . import words
 from .window import Window
 
 STALE_HOURS = 6.0  # a gas older than this is called stale on the page; common practice
+LACTATE_HOURS = 24.0  # the course of lactate looks back this far; common practice
 QUANTITY = {Level.CAO2: "cao2", Level.DO2: "do2", Level.DO2I: "do2i"}
 _QUIET = {"spo2-above-97", "duplicate-sample"}  # true of most healthy rows: said on the patient page only
+_SHOWN = 0.02  # a contribution below two percent of supply is not said
+
+
+@dataclass(frozen=True)
+class Ward:
+    """What all beds of one page share."""
+
+    sheet: Sheet
+    window: Window
+    display: Display
+    review: Review
+
+    @cached_property
+    def budget(self) -> Budget:
+        """What each number's uncertainty is made of."""
+        return budget(self.sheet.snapshots, self.sheet.derived, self.sheet.constants, self.sheet.settings)
+
+    @cached_property
+    def largest(self) -> float:
+        """The sum of losses or of gains that fills half a bar: one scale for all beds."""
+        parts = np.nan_to_num(np.stack(list(self.review.judgement.part.values())))
+        sides = np.abs(np.minimum(parts, 0).sum(axis=0)), np.maximum(parts, 0).sum(axis=0)
+        return max(0.15, *(float(side.max(initial=0.0)) for side in sides))
+
+    def place(self, stay: Stay) -> int:
+        """Row of the review, -1 for a stay without entries."""
+        at = int(np.searchsorted(self.review.stay, stay.pk))
+        return at if at < len(self.review.stay) and self.review.stay[at] == stay.pk else -1
 
 
 @dataclass(frozen=True)
 class BedRow:
     """One bed over the review window."""
 
-    sheet: Sheet
+    ward: Ward
     stay: Stay
-    window: Window
-    review: Review
-    place: int  # row of the review, -1 without entries
-    display: Display
-    mark: ReviewMark | None
-    largest: float
+    place: int
+
+    @property
+    def sheet(self) -> Sheet:
+        """The sheet of the page."""
+        return self.ward.sheet
+
+    @property
+    def display(self) -> Display:
+        """How this reader sees numbers."""
+        return self.ward.display
+
+    @property
+    def window(self) -> Window:
+        """The review window."""
+        return self.ward.window
+
+    @property
+    def review(self) -> Review:
+        """The review of all stays of the page."""
+        return self.ward.review
 
     @cached_property
-    def rows(self) -> np.ndarray:
+    def rows(self) -> Ints:
         """The stay's rows up to the end of the window, in time order."""
         own = self.sheet.rows(self.stay)
         return own[self.sheet.readings.time[own] <= self.window.until_hours]
@@ -50,15 +98,24 @@ class BedRow:
         gases = self.rows[self.sheet.snapshots.arterial[self.rows]]
         return int(gases[-1]) if len(gases) else -1
 
-    @property
+    @cached_property
     def gas_age(self) -> float:
-        """Age of the newest gas [h]."""
-        return math.inf if self.last < 0 else self.window.now.timestamp() / 3600 - self.sheet.readings.time[self.last]
+        """Age of the newest gas at the end of the window [h]."""
+        if self.last < 0:
+            return math.inf
+        return self.window.until_hours - float(self.sheet.readings.time[self.last])
 
     @property
     def age_words(self) -> str:
         """That age in words."""
         return age_words(self.gas_age)
+
+    @property
+    def gas_clock(self) -> str:
+        """When the newest gas was drawn; with the date where that was another day."""
+        when = self.display.local(float(self.sheet.readings.time[self.last]))
+        same = when.date() == self.display.local(self.window.until).date()
+        return f"{when:%H:%M}" if same else f"{when:%d %b %H:%M}"
 
     @property
     def stale(self) -> bool:
@@ -70,7 +127,7 @@ class BedRow:
         """In what the change is counted."""
         return int(self.review.ledger.level[self.place]) if self.place >= 0 else Level.NONE
 
-    @property
+    @cached_property
     def quantity(self) -> str:
         """Name of that quantity, the best one known where there is no change to count."""
         if self.level:
@@ -93,38 +150,79 @@ class BedRow:
         """Half width of its 95 % interval [1]."""
         return Z95 * self._of_ledger("sd") / self._of_ledger("start_supply")
 
-    @property
+    @cached_property
     def beyond_noise(self) -> bool:
         """Whether the 95 % interval of the change excludes none."""
         return bool(self.level) and abs(self.share) > self.share_half
 
     @property
-    def worse(self) -> bool:
-        """A fall beyond noise, or a step that failed."""
-        return (self.beyond_noise and self.share < 0) or self.step in STEPS
+    def fell(self) -> bool:
+        """A fall beyond noise."""
+        return self.beyond_noise and self.share < 0
 
     @property
+    def worse(self) -> bool:
+        """A fall beyond noise, or a step that failed while others made up for it."""
+        return self.fell or self.step in STEPS
+
+    @cached_property
     def step(self) -> str:
         """The step that failed, ``none``, ``undetermined`` or empty."""
         return str(self.review.judgement.step[self.place]) if self.place >= 0 else ""
 
     @property
-    def now_text(self) -> str:
-        """Supply at the end of the window."""
-        return self.display.value(self.quantity, self._at_end(), with_unit=True)
+    def step_words(self) -> str:
+        """The same in words."""
+        if self.step == "undetermined":
+            lost = [name for name, _ in self.moved if self.part(name) < 0]
+            return f"{' or '.join(lost)}: cannot be told" if len(lost) > 1 else "cannot be told"
+        return {"none": "none beyond noise", "": "nothing to compare"}.get(self.step, self.step)
 
     def _at_end(self) -> float:
         if self.level:
             return self._of_ledger("end_supply")
         return float(self.sheet.derived[self.quantity][self.last]) if self.last >= 0 else math.nan
 
+    def _end_row(self) -> int:
+        return int(self.review.ledger.end_row[self.place]) if self.level else self.last
+
+    @cached_property
+    def _now(self) -> tuple[str, str]:
+        row, value = self._end_row(), self._at_end()
+        sd = float(self.sheet.sds[self.quantity][row]) if row >= 0 else math.nan
+        number, _, half = words.plus_minus(self.display, self.quantity, value, sd).partition(" ± ")
+        return number, half
+
+    @property
+    def now_number(self) -> str:
+        """Supply at the end of the window, without its unit."""
+        return self._now[0]
+
     @property
     def now_half(self) -> str:
-        """Half width of the 95 % interval of the value at the end."""
-        if self.last < 0 or self.quantity not in self.sheet.sds:
-            return ""
-        half = Z95 * float(self.sheet.sds[self.quantity][self.last])
-        return self.display.value(self.quantity, half) if math.isfinite(half) else ""
+        """Half width of its 95 % interval."""
+        return self._now[1]
+
+    @property
+    def now_text(self) -> str:
+        """Supply at the end of the window."""
+        return MISSING if self.now_number == MISSING else f"{self.now_number} {self.unit_label}"
+
+    @property
+    def unit_label(self) -> str:
+        """Unit of supply."""
+        return self.display.unit(self.quantity).label
+
+    @property
+    def symbol(self) -> str:
+        """Symbol of supply."""
+        return self.display.quantity(self.quantity).symbol
+
+    @property
+    def now_explained(self) -> int:
+        """Id of the entry that the value at the end belongs to, 0 where there is none."""
+        row = self._end_row()
+        return int(self.sheet.entry_ids[row]) if row >= 0 and self.now_number != MISSING else 0
 
     @property
     def start_text(self) -> str:
@@ -132,13 +230,31 @@ class BedRow:
         return self.display.value(self.quantity, self._of_ledger("start_supply"))
 
     @property
-    def change_text(self) -> str:
-        """The change with its share and interval."""
+    def start_clock(self) -> str:
+        """When the first gas of the comparison was drawn."""
+        return self.display.clock(float(self.sheet.readings.time[int(self.review.ledger.start_row[self.place])]))
+
+    @property
+    def change_number(self) -> str:
+        """The change with the half width of its 95 % interval."""
+        return words.plus_minus(
+            self.display, self.quantity, self._of_ledger("total"), self._of_ledger("sd"), signed=True
+        )
+
+    @property
+    def change_percent(self) -> str:
+        """The change as a share of supply at the start."""
         if not self.level:
             return ""
-        change = self.display.value(self.quantity, self._of_ledger("total"), signed=True)
-        percent = self.display.number(100 * self.share, 0, signed=True)
-        return f"{change} ({percent} % ± {self.display.number(100 * self.share_half, 0)})"
+        share, half = (
+            self.display.number(100 * x, 0, signed) for x, signed in ((self.share, True), (self.share_half, False))
+        )
+        return f"{share} ± {half} %"
+
+    @property
+    def change_text(self) -> str:
+        """Change and share in one text."""
+        return f"{self.change_number.partition(' ± ')[0]} ({self.change_percent})" if self.level else ""
 
     @property
     def change_words(self) -> str:
@@ -149,58 +265,89 @@ class BedRow:
             return "unchanged beyond noise"
         return "fell beyond noise" if self.share < 0 else "rose beyond noise"
 
+    def part(self, step: str) -> float:
+        """What a step did, of the supply at the start [1]."""
+        return float(self.review.judgement.part[step][self.place]) if self.place >= 0 else math.nan
+
+    def _beyond(self, step: str) -> bool:
+        return abs(self.part(step)) > max(_SHOWN, Z95 * float(self.review.judgement.sd[step][self.place]))
+
     @cached_property
     def bar(self) -> LedgerBar:
         """The four steps as a small bar."""
-        parts = {name: float(self.review.judgement.part[name][self.place]) if self.place >= 0 else math.nan
-                 for name in STEPS}  # fmt: skip
-        return ledger_bar(parts, self.largest)
+        return ledger_bar({name: self.part(name) for name in STEPS}, self.ward.largest)
 
     @property
     def bar_words(self) -> str:
-        """The same in words, for those who do not see it."""
-        parts = [
-            f"{name} {self.display.number(100 * float(self.review.judgement.part[name][self.place]), 0, signed=True)} %"
-            for name in STEPS
-            if self.place >= 0 and math.isfinite(float(self.review.judgement.part[name][self.place]))
-        ]
-        return "Contributions: " + ", ".join(parts) if parts else "No contributions known"
+        """All four steps in words, for those who do not see the bar."""
+        known = [(name, self.part(name)) for name in STEPS if math.isfinite(self.part(name))]
+        said = ", ".join(f"{name} {words.percent(self.display, part)}" for name, part in known)
+        return f"Contributions: {said}" if said else "No contributions known"
+
+    @cached_property
+    def moved(self) -> tuple[tuple[str, str], ...]:
+        """Steps that moved beyond their own noise, largest first, with their share in words."""
+        if not self.level:
+            return ()
+        moved = sorted((n for n in STEPS if self._beyond(n)), key=lambda n: -abs(self.part(n)))
+        return tuple((name, words.percent(self.display, self.part(name))) for name in moved)
 
     @property
     def o2er_text(self) -> str:
-        """Extraction at the newest gas."""
-        return self.display.value("o2er", float(self.sheet.derived["o2er"][self.last])) if self.last >= 0 else "–"
+        """Extraction at the newest gas, in its shown unit."""
+        return self.o2er_number.partition(" ± ")[0]
+
+    @cached_property
+    def o2er_number(self) -> str:
+        """The same with the half width of its 95 % interval."""
+        if self.last < 0:
+            return MISSING
+        value, sd = (float(table["o2er"][self.last]) for table in (self.sheet.derived, self.sheet.sds))
+        return words.plus_minus(self.display, "o2er", value, sd)
+
+    @property
+    def o2er_estimated(self) -> bool:
+        """Whether it rests on central venous blood."""
+        known = self.last >= 0 and self.o2er_number != MISSING
+        return known and bool(self.sheet.derived.flags[self.last] & Flag.CENTRAL_VENOUS)
 
     @cached_property
     def lactate(self) -> LactateTrend:
         """The course of lactate over the last 24 h of the window."""
-        keep = self.rows[self.sheet.readings.time[self.rows] > self.window.until_hours - 24]
+        keep = self.rows[self.sheet.readings.time[self.rows] > self.window.until_hours - LACTATE_HOURS]
         table = self.sheet.readings
         return lactate_trend(table.time[keep], table["lactate"][keep], table.site[keep], self.sheet.settings)
 
     @property
+    def lactate_number(self) -> str:
+        """The newest lactate."""
+        return self.display.value("lactate", self.lactate.last)
+
+    @property
+    def lactate_course(self) -> str:
+        """Its half-time or doubling time, or what else can be said."""
+        return words.lactate_course(self.lactate, self.display)
+
+    @property
     def lactate_text(self) -> str:
-        """Last lactate, with its half-time or doubling time where it has one."""
-        trend = self.lactate
-        if not math.isfinite(trend.last):
-            return "–"
-        text = self.display.value("lactate", trend.last)
-        if trend.kind not in ("rising", "falling"):
-            return text
-        verb = "doubling in" if trend.kind == "rising" else "halving in"
-        low, time, high = (self.display.number(x, 0) for x in (trend.time_low, trend.time, trend.time_high))
-        return f"{text}, {verb} {time} h ({low}–{high})"
+        """Number and course."""
+        return ", ".join(filter(None, (self.lactate_number, self.lactate_course)))
 
     @cached_property
     def findings(self) -> tuple[Finding, ...]:
         """Findings about the rows of the window, newest row first, each kind once."""
         recent = self.rows[self.sheet.readings.time[self.rows] >= self.window.since_hours][::-1]
+        recent = recent[self.sheet.findings.worst()[recent] > 0]
         seen: dict[str, Finding] = {}
         for row in recent.tolist():
-            for finding in self.sheet.findings.of_row(row, lambda q, v: self.display.value(q, v, with_unit=True)):
+            for finding in self.sheet.findings.of_row(row, self.show):
                 if finding.code not in _QUIET:
                     seen.setdefault(finding.code, finding)
-        return tuple(seen.values())
+        return tuple(sorted(seen.values(), key=lambda f: f.severity == "note"))
+
+    def show(self, name: str, value: float) -> str:
+        """A number inside the words of a finding."""
+        return self.display.value(name, value, with_unit=True) if math.isfinite(value) else "not measured"
 
     @property
     def contradictory(self) -> bool:
@@ -210,34 +357,62 @@ class BedRow:
     @cached_property
     def missing(self) -> tuple[str, ...]:
         """What the newest gas lacks for the whole answer, in words."""
-        if self.last < 0:
-            return ("no arterial gas",)
-        snap, row = self.sheet.snapshots, self.last
-        gone = [words for name, words in (("hb", "haemoglobin"), ("lactate", "lactate"), ("fio2", "FiO2"))
-                if not np.isfinite(snap[name][row])]  # fmt: skip
-        if not (np.isfinite(snap["cardiac_output"][row]) or np.isfinite(snap["cardiac_index"][row])):
-            gone.append("flow")
-        if not np.isfinite(snap["cohb"][row] + snap["methb"][row]):
-            gone.append("co-oximetry")
-        return tuple(gone)
+        return missing_at(self.sheet, self.last)
+
+    @cached_property
+    def next(self) -> NextMeasurement | None:
+        """The measurement that would narrow supply most."""
+        row = self._end_row()
+        if row < 0:
+            return None
+        sheet = self.sheet
+        return next_measurement(
+            sheet.snapshots, sheet.derived, row, sheet.constants, sheet.settings, speech=self.display,
+            known=self.ward.budget,
+        )  # fmt: skip
+
+    @property
+    def next_words(self) -> str:
+        """The same in a few words; what is missing altogether comes first."""
+        if "haemoglobin" in self.missing:
+            return "haemoglobin (none to carry)"
+        best = self.next.best if self.next else None
+        if best is not None:
+            return f"{best.label} ({best.reason})"
+        return "flow (not measured)" if "flow" in self.missing else ""
+
+    @property
+    def reviewed_words(self) -> str:
+        """When and by whom this stay was last looked at."""
+        at, who = getattr(self.stay, "reviewed_at", None), getattr(self.stay, "reviewed_by", "")
+        return f"{self.display.clock(at)} by {who}" if at else ""
 
     @property
     def rank(self) -> tuple[float, ...]:
-        """Sort key: real deterioration by size, then contradictory, stale, unchanged."""
-        fall = -self.share if self.worse and math.isfinite(self.share) else 0.0
-        return (-float(self.worse), -fall, -float(self.contradictory), -float(self.stale or self.last < 0))
+        """Sort key: falls beyond noise by what they are at least; failed steps made up for; stale; contradictory."""
+        surely = -self.share - self.share_half if self.fell else 0.0
+        lost = -self.part(self.step) if self.step in STEPS else 0.0
+        return (-surely, -lost, -float(self.stale or self.last < 0), -float(self.contradictory))
+
+
+def missing_at(sheet: Sheet, row: int) -> tuple[str, ...]:
+    """What a gas lacks for the whole answer, in words."""
+    if row < 0:
+        return ("arterial gas",)
+    snap = sheet.snapshots
+
+    def known(*names: str) -> bool:
+        return any(np.isfinite(snap[name][row]) for name in names)
+
+    wanted = (
+        ("haemoglobin", known("hb")), ("flow", known("cardiac_output", "cardiac_index")),
+        ("measured saturation", known("so2", "o2hb")), ("co-oximetry", known("cohb") and known("methb")),
+        ("venous sample", snap.venous_row[row] >= 0), ("FiO2", known("fio2")), ("lactate", known("lactate")),
+    )  # fmt: skip
+    return tuple(words for words, there in wanted if not there)
 
 
 def bed_rows(sheet: Sheet, window: Window, display: Display) -> list[BedRow]:
     """All beds of a sheet, worst real deterioration first."""
-    found = sheet.review(window.since_hours, window.until_hours)
-    place = {int(pk): i for i, pk in enumerate(found.stay)}
-    marks: dict[int, ReviewMark] = {}
-    for mark in ReviewMark.objects.filter(stay__in=[s.pk for s in sheet.stays]).select_related("user").order_by("at"):
-        marks[mark.stay_id] = mark
-    sides = [np.nansum(np.where(sign * np.stack(list(found.judgement.part.values())) > 0,
-                                np.abs(np.stack(list(found.judgement.part.values()))), 0.0), axis=0)
-             for sign in (-1, 1)] if len(found.stay) else [np.zeros(1)]  # fmt: skip
-    largest = max(0.15, float(np.max(np.stack(sides)))) if len(found.stay) else 0.15
-    rows = [BedRow(sheet, s, window, found, place.get(s.pk, -1), display, marks.get(s.pk), largest) for s in sheet.stays]
-    return sorted(rows, key=lambda row: row.rank)
+    ward = Ward(sheet, window, display, sheet.review(window.since_hours, window.until_hours))
+    return sorted((BedRow(ward, stay, ward.place(stay)) for stay in sheet.stays), key=lambda row: row.rank)

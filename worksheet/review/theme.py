@@ -22,5 +22,7 @@ def set_theme(request: HttpRequest) -> HttpResponse:
     if request.headers.get("HX-Request"):
         return HttpResponse(status=204)
     target = request.POST.get("next", "")
-    safe = url_has_allowed_host_and_scheme(target, allowed_hosts={request.get_host()}, require_https=request.is_secure())
+    safe = url_has_allowed_host_and_scheme(
+        target, allowed_hosts={request.get_host()}, require_https=request.is_secure()
+    )
     return redirect(target if safe else "home")

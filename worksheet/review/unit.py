@@ -2,32 +2,69 @@
 
 from __future__ import annotations
 
-from django.http import HttpRequest, HttpResponse
-from django.shortcuts import render
+from datetime import datetime
+from typing import Any
 
+from django.http import HttpRequest, HttpResponse, HttpResponseNotModified
+from django.shortcuts import render
+from django.utils.cache import patch_vary_headers
+
+from worksheet.oxygen.judgement import STEPS
 from worksheet.ward.access import person, unit_or_404
 from worksheet.ward.display import Display
 from worksheet.ward.models import Stay, Unit
 from worksheet.ward.sheet import Sheet, open_sheet
 
-from .beds import BedRow, bed_rows
+from .beds import STALE_HOURS, BedRow, bed_rows
+from .live import mark_of
 from .reach import entries_in_reach
+from .stays_here import present
 from .window import HOURS, Window, window_of
 
 
 def unit_review(request: HttpRequest, slug: str) -> HttpResponse:
     """One row a bed, worst real deterioration first; the table alone when the page updates itself."""
-    unit = unit_or_404(request, slug)
-    window = window_of(request.GET, unit, person(request))
-    rows = rows_of(unit, window, Display.of(person(request), unit))
-    step = request.GET.get("step", "")
-    context = {
-        "unit": unit, "window": window, "hours": HOURS, "step": step, "steps": ("lung", "haemoglobin", "function", "flow"),
-        "rows": [row for row in rows if not step or row.step == step], "counts": _counts(rows),
-        "display": Display.of(person(request), unit),
+    unit, user = unit_or_404(request, slug), person(request)
+    window, display, stays = window_of(request.GET, unit, user), Display.of(user, unit), present(unit, user)
+    mark = mark_of(unit, user, stays, window, request.GET.get("step", ""))
+    live = bool(getattr(request, "htmx", False))
+    if live and request.headers.get("If-None-Match") == mark:
+        return HttpResponseNotModified(headers={"ETag": mark})
+    rows = bed_rows(open_sheet(unit, stays, entries_in_reach(unit, [s.pk for s in stays], window)), window, display)
+    template = "review/_beds.html" if live else "review/unit.html"
+    response = render(request, template, _context(unit, window, rows, request.GET.get("step", ""), mark, display))
+    response.headers["ETag"] = mark
+    patch_vary_headers(response, ["HX-Request"])
+    return response
+
+
+def _context(unit: Unit, window: Window, rows: list[BedRow], step: str, mark: str, display: Display) -> dict[str, Any]:
+    taken = {row.stay.bed_id for row in rows}
+    step = step if step in STEPS else ""
+    return {
+        "unit": unit, "here": "unit", "window": window, "hours": HOURS, "mark": mark, "stale_hours": f"{STALE_HOURS:.0f}",
+        "step": step, "steps": STEPS, "keep_step": f"&step={step}" if step else "",
+        "rows": [row for row in rows if not step or row.step == step],
+        "supply_unit": f"DO2I {display.unit('do2i').label}", "lactate_unit": display.unit("lactate").label,
+        "free_from": _local(window.since, display), "free_to": _local(window.until, display),
+        "counts": counts(rows), "empty": [bed.name for bed in unit.beds.all() if bed.pk not in taken],
     }  # fmt: skip
-    template = "review/_beds.html" if getattr(request, "htmx", False) else "review/unit.html"
-    return render(request, template, context)
+
+
+def _local(moment: datetime, display: Display) -> str:
+    """A moment as a date-and-time field takes it."""
+    return f"{display.local(moment):%Y-%m-%dT%H:%M}"
+
+
+def counts(rows: list[BedRow]) -> dict[str, int]:
+    """How many beds, and how many of each kind that needs a look."""
+    return {
+        "beds": len(rows),
+        "worse": sum(row.worse for row in rows),
+        "stale": sum(row.stale for row in rows),
+        "contradictory": sum(row.contradictory for row in rows),
+        "no_gas": sum(row.last < 0 for row in rows),
+    }
 
 
 def rows_of(unit: Unit, window: Window, display: Display) -> list[BedRow]:
@@ -39,12 +76,3 @@ def sheet_of(unit: Unit, window: Window) -> Sheet:
     """The sheet of the stays present, with the entries that the window can reach."""
     stays = list(Stay.objects.filter(unit=unit).present().in_bed_order())
     return open_sheet(unit, stays, entries_in_reach(unit, [s.pk for s in stays], window))
-
-
-def _counts(rows: list[BedRow]) -> dict[str, int]:
-    return {
-        "beds": len(rows),
-        "worse": sum(row.worse for row in rows),
-        "stale": sum(row.stale for row in rows),
-        "contradictory": sum(row.contradictory for row in rows),
-    }

@@ -8,6 +8,7 @@ from worksheet.oxygen.readings import Site
 from worksheet.oxygen.trend import LactateTrend
 from worksheet.ward.display import MISSING, Display, age_words
 
+SLOW = 48.0  # h; a half-time longer than that is said without a number
 Z95 = 1.959964  # two-sided 95 % of the normal distribution
 SITE_WORDS = {
     Site.NONE: "bedside",
@@ -18,7 +19,9 @@ SITE_WORDS = {
 }
 
 
-def plus_minus(display: Display, name: str, value: float, sd: float, *, signed: bool = False, unit: bool = False) -> str:
+def plus_minus(
+    display: Display, name: str, value: float, sd: float, *, signed: bool = False, unit: bool = False
+) -> str:
     """A value with its 95 % half-width, both with the digits that the half-width supports."""
     if not math.isfinite(value):
         return MISSING
@@ -52,17 +55,14 @@ def hours(display: Display, value: float) -> str:
     return display.number(value, 0 if value >= 10 else 1)
 
 
-def span(display: Display, low: float, high: float) -> str:
-    """The interval of a time in hours; very long ends say so."""
-    top = "more than 96" if high > 96 else hours(display, high)
-    return f"{hours(display, low)}–{top}" if high <= 96 else f"{hours(display, low)} to {top}"
-
-
 def lactate_course(trend: LactateTrend, display: Display) -> str:
     """The course of lactate in a few words; empty where there is none."""
     if trend.kind in ("falling", "rising"):
+        if trend.time > SLOW:
+            return f"{trend.kind} slowly"
         verb = "halving" if trend.kind == "falling" else "doubling"
-        return f"{verb} in {hours(display, trend.time)} h ({span(display, trend.time_low, trend.time_high)})"
+        low, high = (hours(display, t) for t in (trend.time_low, trend.time_high))
+        return f"{verb} in {hours(display, trend.time)} h ({low}–{high})"
     if trend.kind == "change":
         beyond = "beyond noise" if trend.beyond_noise else "within noise"
         return f"{percent(display, -trend.decrease)} in {age_words(trend.hours)}, {beyond}"

@@ -1,0 +1,28 @@
+"""What a live page looks at before it does any work: whether anything that it shows has changed."""
+
+from __future__ import annotations
+
+import hashlib
+from collections.abc import Sequence
+
+from django.db.models import Max
+
+from worksheet.ward.models import Entry, Stay, Unit, User
+
+from .window import Window
+
+
+def mark_of(unit: Unit, user: User, stays: Sequence[Stay], window: Window, *more: str) -> str:
+    """An entity tag: equal while entries, stays, reviews, choices, window and the minute are.
+
+    The newest entry of all units is asked for, because that is one step in an index however long the history is. The
+    minute is in it because ages are shown in minutes; so nothing is ever late by more than that.
+    """
+    newest = Entry.objects.aggregate(newest=Max("pk"))["newest"]
+    parts = [
+        newest, f"{window.now:%Y%m%d%H%M}", window.kind, window.since.timestamp() if window.kind == "free" else "", *more,
+        unit.pk, unit.name, unit.constants, unit.carry, unit.uncertainties, unit.units, unit.decimal_comma,
+        unit.time_zone, unit.shift_starts, user.pk, user.preferences,
+        *((s.pk, s.bed_id, s.reference, s.height, s.weight, s.age, getattr(s, "reviewed_at", None)) for s in stays),
+    ]  # fmt: skip
+    return f'"{hashlib.sha256(repr(parts).encode()).hexdigest()[:32]}"'
