@@ -98,7 +98,7 @@ class Tally:
     def sentence(self, target: str, seconds: float) -> str:
         """One line for the person who waits."""
         to = "standard output" if target == "-" else target
-        text = f"derive: {self.read:,} rows read, {self.written:,} written to {to} in {seconds:.1f} s"
+        text = f"derive: {self.read:,} row{'s'[: self.read != 1]} read, {self.written:,} written to {to} in {seconds:.1f} s"
         return text + (f"; impossible values not used: {summary(self.refused)}" if self.refused else "")
 
 
@@ -236,6 +236,8 @@ def _beside(target: str) -> Iterator[BinaryIO]:
             sys.stdout.buffer.flush()
         return
     place = Path(target)
+    if not place.parent.is_dir():
+        raise FileNotFoundError(2, "there is no such folder", str(place.parent))
     descriptor, name = tempfile.mkstemp(dir=place.parent, prefix=f".{place.name}.", suffix=".part")
     try:
         with open(descriptor, "wb") as out:

@@ -81,7 +81,16 @@ def check_zip(data: bytes) -> None:
         with zipfile.ZipFile(io.BytesIO(data)) as archive:
             parts = archive.infolist()
             declared = [p.filename for p in parts[:MAX_PARTS] if _has_doctype(archive, p)]
-    except (zipfile.BadZipFile, ValueError, NotImplementedError, OverflowError, UnicodeError, EOFError, RuntimeError, zlib.error):
+    except (
+        zipfile.BadZipFile,
+        ValueError,
+        NotImplementedError,
+        OverflowError,
+        UnicodeError,
+        EOFError,
+        RuntimeError,
+        zlib.error,
+    ):
         raise Refused("The spreadsheet is damaged: its table of contents cannot be read.") from None
     if declared:
         raise Refused("The spreadsheet holds XML entities; such a file is not read.")

@@ -122,7 +122,8 @@ def _compare(draft: DraftEntry, current: Standing, overwrite: bool) -> None:
     open_names = [n for n in changed if n not in older]
     if overwrite or all(_supersedes(given[n], current.status(n)) for n in open_names):
         take = [*added, *(changed if overwrite else open_names)]
-        _correct(draft, current, take) if take else draft.settle(
+        settled = [n for n in given if n not in (*added, *changed) and given[n].status > current.status(n)]
+        _correct(draft, current, [*take, *settled]) if take else draft.settle(
             Fate.SAME, "an older result; the later one is stored" if older else "already stored"
         )
         return
@@ -141,6 +142,8 @@ def _correct(draft: DraftEntry, current: Standing, names: Iterable[str]) -> None
     taken = list(names)
     words = [
         f"{CATALOGUE[n].symbol} {_shown(n, current.values[n])} → {_text(draft.cells[n])}"
+        if n in current.values and not same(draft.cells[n].value or 0.0, current.values[n])
+        else f"{CATALOGUE[n].symbol} is final"
         if n in current.values
         else f"adds {CATALOGUE[n].symbol}"
         for n in taken

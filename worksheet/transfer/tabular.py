@@ -230,7 +230,6 @@ class _TableReader:
         return [row, *(Row(row.place, row.patient, row.time, s, row.sample, cells=apart[s]) for s in sites)]
 
 
-
 def first_table(kind: str, data: bytes) -> Table:
     """The first readable table of a file."""
     return tables.read(data) if kind == "csv" else workbook.read(data)[0][0]

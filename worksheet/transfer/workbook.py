@@ -9,6 +9,7 @@ import warnings
 import zipfile
 from datetime import date, datetime, time
 from typing import Any
+
 os.environ.setdefault("OPENPYXL_LXML", "False")  # the guarded standard parser, whatever else is installed
 
 import openpyxl  # noqa: E402
