@@ -172,7 +172,7 @@ def _twice(slip: Slip, user: User, stay: Stay, display: Display, replacing: Entr
     """The same sample typed by two people, or sent by the analyser and typed: asked, with what is there."""
     if slip.moment.at is None or not slip.code(Site, slip.site):
         return
-    entries = others(user, stay, replacing).filter(site=slip.code(Site, slip.site)).exclude(key=slip.key)
+    entries = others(user, stay, slip.key, replacing).filter(site=slip.code(Site, slip.site))
     near = entries.filter(
         time__gt=slip.moment.at - timedelta(minutes=2), time__lt=slip.moment.at + timedelta(minutes=2)
     )

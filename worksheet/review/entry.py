@@ -24,7 +24,7 @@ from . import checks, drafts, entry_form, moments, pasted
 from .entry_form import Level, Notice, Slip
 from .entry_page import conflict_rows, page_parts
 from .people import patient_page, stay_for
-from .versions import lead_to_newest, need_reason, newest
+from .versions import lead_to_newest, need_reason, newest, somebody_faster
 
 
 @dataclass
@@ -121,9 +121,14 @@ def _save(desk: Desk) -> HttpResponse:
     refuse_other_person(desk, slip)
     if desk.replacing:
         need_reason(slip)
-    if slip.blocking() or slip.unanswered():
+    if slip.blocking():
         return _show(desk, slip, trial, refused=True)
-    return _correct(desk, slip, trial) if desk.replacing else _record(desk, slip, trial)
+    faster = somebody_faster(desk.replacing, slip.key) if desk.replacing else None
+    if faster:
+        return _conflict(desk, slip, faster)
+    if slip.unanswered():
+        return _show(desk, slip, trial, refused=True)
+    return _correct(desk, slip) if desk.replacing else _record(desk, slip, trial)
 
 
 def refuse_other_person(desk: Desk, slip: Slip) -> None:
@@ -156,7 +161,7 @@ def same(entry: Entry, desk: Desk, new: record.NewEntry) -> bool:
     return alike and record.described(entry) == record.described(again)
 
 
-def _correct(desk: Desk, slip: Slip, trial: Any) -> HttpResponse:
+def _correct(desk: Desk, slip: Slip) -> HttpResponse:
     assert desk.replacing is not None  # noqa: S101 - the caller looked
     new = _with_event(desk.replacing, slip.new_entry())
     try:
@@ -164,9 +169,9 @@ def _correct(desk: Desk, slip: Slip, trial: Any) -> HttpResponse:
             entry = record.correct(desk.replacing, desk.user, new, slip.reason)
             drafts.drop(desk.user, desk.stay, desk.form_name)
     except record.AlreadyReplaced as told:
-        return _conflict(desk, slip, trial, told.by)
+        return _conflict(desk, slip, told.by)
     if not same(entry, desk, new):  # the same form, sent from another tab with other values
-        return _conflict(desk, slip, trial, entry)
+        return _conflict(desk, slip, entry)
     return _done(desk, entry, "Corrected")
 
 
@@ -175,7 +180,7 @@ def _with_event(before: Entry, new: record.NewEntry) -> record.NewEntry:
     return replace(new, event=Event(before.event), event_amount=before.event_amount)
 
 
-def _conflict(desk: Desk, slip: Slip, trial: Any, by: Entry | None) -> HttpResponse:
+def _conflict(desk: Desk, slip: Slip, by: Entry | None) -> HttpResponse:
     """Somebody was faster: both versions, and the form goes on against the newer one."""
     assert desk.replacing is not None  # noqa: S101 - the caller looked
     theirs = newest(by or desk.replacing)
@@ -183,8 +188,9 @@ def _conflict(desk: Desk, slip: Slip, trial: Any, by: Entry | None) -> HttpRespo
     rows = conflict_rows(desk.display, desk.replacing, theirs, mine)
     drafts.drop(desk.user, desk.stay, desk.form_name)
     desk.replacing = None if theirs.struck else theirs
-    slip.key = uuid.uuid4().hex
-    return _show(desk, slip, trial, refused=True, conflict=theirs, conflict_rows=rows)
+    fresh = desk.posted()
+    fresh.key = uuid.uuid4().hex
+    return _show(desk, fresh, desk.check(fresh), refused=True, conflict=theirs, conflict_rows=rows)
 
 
 def _remember_units(user: User, slip: Slip) -> None:

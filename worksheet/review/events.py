@@ -56,6 +56,9 @@ def form_name(desk: Desk) -> str:
 
 
 def _take(desk: Desk, form: EventForm, now: datetime) -> HttpResponse:
+    again = _sent_before(desk, form)
+    if again:
+        return go(desk.request, patient_page(desk.stay))
     event_form.check(form, desk.stay, desk.display, now, correcting=desk.replacing is not None)
     refuse_other_person(desk, form.slip)
     if desk.replacing:
@@ -69,6 +72,12 @@ def _take(desk: Desk, form: EventForm, now: datetime) -> HttpResponse:
     verb = "Corrected" if desk.replacing else "Recorded"
     messages.success(desk.request, f"{verb}: {KIND_WORDS[Event(stored.event)]}, {at:%Y-%m-%d %H:%M}.")
     return go(desk.request, patient_page(desk.stay))
+
+
+def _sent_before(desk: Desk, form: EventForm) -> bool:
+    """Whether this very event is stored already: the answer to the first sending was lost on its way."""
+    known = Entry.objects.visible_to(desk.user).filter(stay=desk.stay, key=form.slip.key).first()
+    return known is not None and form.slip.moment.at is not None and same(known, desk, form.new_entry())
 
 
 def _record(desk: Desk, form: EventForm) -> Entry | None:

@@ -68,15 +68,15 @@ class Trial:
         return lacks
 
 
-def others(user: User, stay: Stay, replacing: Entry | None = None) -> EntryQuerySet:
-    """The stay's current entries without the one that is being corrected."""
-    found = Entry.objects.visible_to(user).filter(stay=stay).current()
+def others(user: User, stay: Stay, key: str, replacing: Entry | None = None) -> EntryQuerySet:
+    """The stay's current entries without the one that is corrected, and without this very form if it is sent again."""
+    found = Entry.objects.visible_to(user).filter(stay=stay).current().exclude(key=key)
     return found.exclude(pk=replacing.pk) if replacing else found
 
 
 def try_out(user: User, stay: Stay, new: NewEntry, replacing: Entry | None = None) -> Trial:
     """Derive the stay with the slip in it; nothing is stored."""
-    near = others(user, stay, replacing).filter(time__gte=new.time - REACH, time__lte=new.time + REACH)
+    near = others(user, stay, new.key, replacing).filter(time__gte=new.time - REACH, time__lte=new.time + REACH)
     before, ids = readings_of(near, [stay])
     readings = _joined(before, _one(stay, new))
     return Trial(derived_sheet(stay.unit, [stay], readings, np.append(ids, 0)), len(readings) - 1)

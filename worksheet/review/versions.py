@@ -30,6 +30,11 @@ def newest(entry: Entry) -> Entry:
     return entry
 
 
+def somebody_faster(entry: Entry, key: str) -> Entry | None:
+    """The entry by which somebody else replaced this one; None if nobody did, or this very form was it."""
+    return Entry.objects.filter(replaces=entry).exclude(key=key).first()
+
+
 def lead_to_newest(request: HttpRequest, stay: Stay, latest: Entry) -> HttpResponse:
     """An entry that was replaced is not corrected again; the one in its place is."""
     at = latest.recorded_at.astimezone(stay.unit.zone)

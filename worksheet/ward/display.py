@@ -9,6 +9,7 @@ import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from datetime import UTC, datetime
+from typing import Any
 from zoneinfo import ZoneInfo
 
 from worksheet.oxygen.quantities import CATALOGUE, Quantity, UnitOfMeasure
@@ -38,11 +39,12 @@ class Display:
     @classmethod
     def of(cls, user: User | None, unit: Unit) -> Display:
         """The reader's choices over the unit's."""
-        chosen = dict(user.preferences) if user is not None else {}
+        chosen = _mapping(user.preferences) if user is not None else {}
+        comma = chosen.get("decimal_comma")
         return cls(
-            zone=ZoneInfo(chosen.get("time_zone") or unit.time_zone),
-            units={**unit.units, **chosen.get("units", {})},
-            decimal_comma=bool(chosen.get("decimal_comma", unit.decimal_comma)),
+            zone=_zone(chosen.get("time_zone")) or unit.zone,
+            units={**_mapping(unit.units), **_mapping(chosen.get("units"))},
+            decimal_comma=comma if isinstance(comma, bool) else unit.decimal_comma,
             theme=str(chosen.get("theme", "system")),
         )
 
@@ -64,7 +66,7 @@ class Display:
             return MISSING
         text = f"{value:{'+' if signed else ''}.{decimals}f}"
         if float(text) == 0:
-            text = text.replace("-", "").replace("+", "±") if signed else text.replace("-", "")
+            text = ("±" if signed else "") + text.lstrip("+-")
         text = text.replace("-", MINUS)
         return text.replace(".", ",") if self.decimal_comma else text
 
@@ -105,6 +107,18 @@ class Display:
     def stamp(self, moment: datetime | float) -> str:
         """Date, 24 h clock and zone."""
         return f"{self.local(moment):%Y-%m-%d %H:%M %Z}"
+
+
+def _mapping(stored: Any) -> Mapping[str, Any]:
+    """What is stored as JSON, if it has the shape it should have: a page never breaks on a choice."""
+    return stored if isinstance(stored, dict) else {}
+
+
+def _zone(name: Any) -> ZoneInfo | None:
+    try:
+        return ZoneInfo(name) if isinstance(name, str) and name else None
+    except (KeyError, ValueError, OSError):  # a zone that this machine's tables no longer know
+        return None
 
 
 def age_words(hours: float) -> str:
