@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
+from types import MappingProxyType
 
 
 @dataclass(frozen=True)
@@ -48,7 +50,9 @@ class Constants:
     end_capillary_po2 : float
         Pressure down to which oxygen counts as extractable [mmHg]; 5.0 kPa, Siggaard-Andersen & Gøthgen 1995.
     haldane : float
-        Relative affinity of haemoglobin for CO over O2. M = 218, Roughton & Darling 1944 (from memory).
+        Relative affinity M of haemoglobin for CO over O2 [1]; median 218 (191-257) of a systematic review, Hum Physiol
+        2020;46, doi 10.1134/S0362119720020048. Only for the pressure of carbon monoxide: where COHb is measured it
+        cancels.
     curve : str
         ``"tanh"`` (Siggaard-Andersen 1984/1990) or ``"severinghaus"`` (1979, with Kelman's shifts).
     bsa_formula : str
@@ -67,5 +71,41 @@ class Constants:
     bsa_formula: str = "mosteller"
     carry: CarryLimits = field(default_factory=CarryLimits)
 
+    def problems(self) -> list[str]:
+        """What a site must not choose, in words: one sentence for each constant outside :data:`POSSIBLE`.
+
+        Returns
+        -------
+        list of str
+            Empty where every constant can be in force.
+        """
+        found = [
+            f"{name}: {getattr(self, name):g} is outside {low:g} to {high:g}"
+            for name, (low, high) in POSSIBLE.items()
+            if not low <= getattr(self, name) <= high
+        ]
+        for name, words in CHOICES.items():
+            if getattr(self, name) not in words:
+                found.append(f"{name}: {getattr(self, name)!r} is not one of {', '.join(words)}")
+        return found
+
+
+# Outside these no published value lies (hufner: 1.31 to 1.39 in textbooks, 1.368 to 1.392 measured; R of living adults;
+# pressures where people live and work). Common practice.
+POSSIBLE: Mapping[str, tuple[float, float]] = MappingProxyType(
+    {
+        "hufner": (1.30, 1.40),
+        "usual_inactive": (0.0, 0.10),
+        "o2_solubility": (0.0025, 0.0035),
+        "barometric_pressure": (250.0, 820.0),
+        "water_vapour": (30.0, 65.0),
+        "respiratory_quotient": (0.6, 1.3),
+        "end_capillary_po2": (15.0, 60.0),
+        "haldane": (150.0, 300.0),
+    }
+)
+CHOICES: Mapping[str, tuple[str, ...]] = MappingProxyType(
+    {"curve": ("tanh", "severinghaus"), "bsa_formula": ("mosteller", "dubois")}
+)
 
 DEFAULT = Constants()

@@ -19,7 +19,7 @@ CONSTANTS = {
     "respiratory_quotient": ("Respiratory exchange ratio", "", 2, "common practice"),
     "end_capillary_po2": ("End-capillary PO2 for extractable O2", "mmHg", 0,
                           "Siggaard-Andersen & Gøthgen 1995, Acta Anaesthesiol Scand 39 Suppl 107:41"),
-    "haldane": ("Affinity of haemoglobin for CO against O2", "", 0, "Roughton & Darling 1944 (from memory)"),
+    "haldane": ("Affinity of haemoglobin for CO against O2", "", 0, "systematic review, Hum Physiol 2020;46"),
 }  # fmt: skip
 CHOICES = {
     "curve": ("Dissociation curve", {"tanh": "tanh model, Siggaard-Andersen 1984, 1990, 1993",
