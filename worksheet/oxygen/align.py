@@ -97,7 +97,7 @@ def align(readings: Readings, limits: CarryLimits | None = None) -> Snapshots:
         source=Lazy(MEASURED, lambda name: source[name] if name in source else _own(readings[name])),
         age=Lazy(MEASURED, lambda name: _age(readings, source.get(name), name)),
         device=device,
-        flow_method=_code_of(readings.flow_method, source["cardiac_output"]),
+        flow_method=_code_of(readings.flow_method, np.maximum(*(source[name] for name in FLOWS))),
         venous_row=venous_row,
         venous_site=_code_of(readings.site, venous_row),
         venous=Lazy(VENOUS, lambda name: taken(readings[name], venous_row)),
@@ -265,10 +265,9 @@ def _sources(readings: Readings, line: Line, limits: CarryLimits) -> dict[str, I
     found: dict[str, Ints] = {}
     for name in CARRIED:
         valid = flow if name in FLOWS else known[name]
-        if name == FLOWS[1]:
-            found[name] = found[FLOWS[0]]
-        else:
-            found[name] = np.where(valid, own, line.back(ways[name](valid))) if np.any(valid) else nowhere
+        found[name] = np.where(valid, own, line.back(ways[name](valid))) if np.any(valid) else nowhere
+        if name in FLOWS:  # the entry nearest in time may hold only the other of the two
+            found[name] = np.where((found[name] >= 0) & known[name][found[name]], found[name], -1)
     return found
 
 

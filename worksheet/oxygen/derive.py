@@ -315,7 +315,7 @@ def _arterial_flags(snapshots: Snapshots, chain: _Chain, columns: Raw, rows: Int
         np.where(there | ~np.isnan(chain.arterial.saturation), chain.arterial.flags, 0)
         | _bits(there & _carried(snapshots, "hb", rows), Flag.HB_CARRIED)
         | _bits(there & known & _carried_dys(snapshots, rows), Flag.DYSHAEMOGLOBINS_CARRIED)
-        | _bits(_carried(snapshots, "cardiac_output", rows), Flag.FLOW_CARRIED)
+        | _bits(_carried_flow(snapshots, rows), Flag.FLOW_CARRIED)
         | _bits(snapshots.venous_site[rows] == Site.CENTRAL_VENOUS, Flag.CENTRAL_VENOUS)
         | _bits(
             ~np.isnan(columns["extractable_o2"]) & np.isnan(snapshots["temperature"][rows]), Flag.TEMPERATURE_ASSUMED
@@ -359,6 +359,10 @@ def _venous(snapshots: Snapshots, constants: Constants, rows: Ints, table: Deriv
 def _carried(snapshots: Snapshots, name: str, rows: Ints) -> Bools:
     source = snapshots.source[name][rows]
     return np.asarray((source >= 0) & (source != rows))
+
+
+def _carried_flow(snapshots: Snapshots, rows: Ints) -> Bools:
+    return _carried(snapshots, "cardiac_output", rows) | _carried(snapshots, "cardiac_index", rows)
 
 
 def _carried_dys(snapshots: Snapshots, rows: Ints) -> Bools:
