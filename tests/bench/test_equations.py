@@ -1,6 +1,6 @@
 """The equations against one ``np.exp`` over as many rows, in blocks that stay in the processor's cache.
 
-The goals are what was measured when they were set, with a third to spare: they find a slower curve, not a slow machine.
+The goals are what was measured when they were set, with room to spare: they find a slower curve, not a slow machine.
 """
 
 import numpy as np

@@ -28,6 +28,7 @@ from worksheet.oxygen import (
     tanh_model,
 )
 from worksheet.oxygen.constants import DEFAULT
+from worksheet.oxygen.quantities import CATALOGUE
 
 settings.register_profile("equations", deadline=None, max_examples=60)
 settings.load_profile("equations")
@@ -321,6 +322,39 @@ def test_chosen_saturation_and_share_always_multiply_to_o2hb(so2, cohb, methb, k
     assert 0.0 <= found.saturation <= 1.0
     assert found.o2hb == found.saturation * (1.0 - found.inactive)
     assert 0.0 <= found.inactive < 1.0
+
+
+UNITS = [(quantity, unit) for quantity in CATALOGUE.values() for unit in quantity.units]
+
+
+@settings(max_examples=400)
+@given(which=st.sampled_from(UNITS), value=st.floats(-50.0, 900.0))
+def test_units_there_and_back(which, value):
+    _, unit = which
+    assert unit.from_canonical(unit.to_canonical(value)) == pytest.approx(value, rel=1e-12, abs=1e-9)
+    assert unit.to_canonical(unit.from_canonical(value)) == pytest.approx(value, rel=1e-12, abs=1e-9)
+    assert np.isnan(unit.to_canonical(np.nan))
+    assert unit.to_canonical(value + 1.0) > unit.to_canonical(value)
+
+
+@pytest.mark.parametrize(
+    ("name", "ucum", "value", "canonical"),
+    [
+        ("po2", "kPa", 10.0, 75.00617),  # 1 kPa = 7.500617 mmHg, NIST SP 811
+        ("hb", "g/L", 150.0, 15.0),
+        ("hb", "mmol/L", 10.0, 16.114),  # monomer 16,114 g/mol
+        ("temperature", "[degF]", 98.6, 37.0),
+        ("fio2", "%", 40.0, 0.40),
+        ("height", "[in_i]", 70.0, 177.8),
+        ("weight", "[lb_av]", 154.0, 69.853),
+        ("lactate", "mg/dL", 18.016, 2.0),  # 90.08 g/mol
+        ("cao2", "mmol/L", 9.0, 20.1546),  # 22.394 mL/mmol
+        ("barometric_pressure", "hPa", 1013.25, 760.0),
+    ],
+)
+def test_units_worked_by_hand(name, ucum, value, canonical):
+    unit = next(unit for unit in CATALOGUE[name].units if unit.ucum == ucum)
+    assert unit.to_canonical(value) == pytest.approx(canonical, rel=1e-5)
 
 
 @pytest.mark.parametrize("module", [bands])

@@ -92,8 +92,8 @@ def p50_in_vivo(
 
     The displacement is solved exactly and holds every shift of this blood: pH, PCO2, DPG, MetHb, variants. With COHb
     given, Haldane's law carries it from the measured pair to half saturation; without, its shift is taken as part of
-    the displacement. Relative SD for 0.5 points of saturation and 3 % of PO2: 3 % at 0.50, 4.7 % at 0.95, 6.5 % at
-    0.97.
+    the displacement. By the tanh model, whichever curve a site chose. Relative SD for 0.5 points of saturation and 3 %
+    of PO2: 3 % at 0.50, 4.7 % at 0.95, 6.5 % at 0.97.
 
     Parameters
     ----------
