@@ -84,6 +84,9 @@ def check(head: Header, raw: bytes) -> None:
     """Refuse what this program does not take, with the reason for the sender."""
     if not head.fields:
         raise Rejected("AR", "the message does not begin with MSH")
+    marks = head.fields[1] + head.fields[2]
+    if not 5 <= len(marks) <= 6 or len(set(marks)) != len(marks) or any(c.isalnum() or c.isspace() for c in marks):
+        raise Rejected("AR", "the separators (MSH-1, MSH-2) cannot be used")
     if len(raw) > MAX_MESSAGE:
         raise Rejected("AR", f"the message is larger than {MAX_MESSAGE // MEGABYTE} MB")
     if b"\x00" in raw and "UTF-16" not in head.fields[18]:

@@ -111,7 +111,8 @@ def column_named(header: str) -> tuple[str, Site]:
         start = " ".join(words[:size])
         if start in _EXACT:
             rest = " ".join(words[size:])
-            return _EXACT[start], _SITES.get(rest, _HEADER_SITES.get(start, Site.NONE))
+            named = _SITES.get(rest) if len(rest) > 2 else None  # "pa" may be a pressure or an artery
+            return _EXACT[start], named or _HEADER_SITES.get(start, Site.NONE)
     return "", Site.NONE
 
 

@@ -147,6 +147,9 @@ class _TableReader:
             row.settle(Fate.INVALID, "; ".join(problems))
         elif not parts and not row.note and not row.event:
             row.settle(Fate.NOT_UNDERSTOOD, "the row holds no value that can be read")
+        for part in parts[1:]:
+            if row.fate is not None:
+                part.settle(row.fate, row.reason)
         yield row
         yield from parts[1:]
 
