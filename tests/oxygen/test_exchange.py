@@ -68,6 +68,9 @@ BELOW, ABOVE = -1e-9, 1.0 + 1e-9
         (pf_altitude_corrected, (190.0, 760.0), 190.0),
         (barometric_pressure_west, (2000.0,), np.exp(6.63268 - 0.2224 - 0.00596)),
         (barometric_pressure_icao, (1000.0,), 674.12),
+        # Buck's equation worked apart: (18.678 - 37/234.5) 37/294.14 = 2.329642, 62.7988 hPa
+        (water_vapour_pressure, (37.0,), 47.10301),
+        (water_vapour_pressure, (90.0,), 526.1843),
     ],
 )
 def test_worked_by_hand(function, given, by_hand):
@@ -96,6 +99,8 @@ def test_alveolar_equation_follows_the_site(alveolar):
         (alveolar_po2_short, (0.21, 0.0, 47.1, DEFAULT), (0.21, 0.0, 47.0, DEFAULT)),
         (alveolar_po2_short, (0.21, 119.0, 760.0, DEFAULT), (0.21, 120.0, 760.0, DEFAULT)),
         (alveolar_po2_short, (0.21, 0.0, 47.5, DEFAULT), (-0.21, 0.0, 46.0, DEFAULT)),
+        (alveolar_po2, (1.0, 719.0, 767.0, DEFAULT), (1.0, 720.0, 767.0, DEFAULT)),
+        (alveolar_po2_short, (1.0, 575.0, 767.0, DEFAULT), (1.0, 576.0, 767.0, DEFAULT)),
         (aa_gradient, (0.0, 90.0), (BELOW, 90.0)),
         (aa_gradient, (90.0, 0.0), (90.0, BELOW)),
         (aa_gradient, (0.5, 0.5), (-0.5, -0.5)),
@@ -174,6 +179,7 @@ def test_estimated_fio2_is_never_below_air():
 
 
 def test_bands_as_an_array_with_their_words():
+    assert pf_band([0.0, 0.5], 5.0).tolist() == [Band.SEVERE, Band.SEVERE]
     found = pf_band([350.0, 250.0, 150.0, 90.0, -1.0], 8.0)
     assert found.dtype == np.int8
     assert [BAND_WORDS[code] for code in found.tolist()] == [
@@ -189,3 +195,5 @@ def test_global_bands_as_an_array():
     assert found.dtype == np.int8
     assert found.tolist() == [Band.MODERATE, Band.NOT_INTUBATED, Band.NOT_REPORTED]
     assert pf_band_global(np.nan, np.nan, 5.0, Device.VENTILATOR, 40.0) == Band.NOT_REPORTED
+    steps = pf_band_global([300.5, 200.5, 100.5], np.nan, np.nan, Device.VENTILATOR, np.nan)
+    assert steps.tolist() == [Band.ABOVE, Band.MILD, Band.MODERATE]
