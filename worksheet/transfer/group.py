@@ -93,6 +93,10 @@ def _give_sites(rows: list[Row]) -> None:
     for row in rows:
         buckets[(row.patient, row.group or row.sample, row.time)].append(row)
     for bucket in buckets.values():
+        samples = {r.sample for r in bucket if r.sample}
+        if len(samples) == 1:  # FiO2 or temperature in the report of a sample carry no sample number of their own
+            for row in bucket:
+                row.sample = row.sample or next(iter(samples))
         sites = {r.site for r in bucket if r.site}
         unsaid = [r for r in bucket if not r.site]
         if len(sites) == 1:
