@@ -68,7 +68,7 @@ BELOW, ABOVE = -1e-9, 1.0 + 1e-9
         (pf_altitude_corrected, (190.0, 760.0), 190.0),
         (barometric_pressure_west, (2000.0,), np.exp(6.63268 - 0.2224 - 0.00596)),
         (barometric_pressure_icao, (1000.0,), 674.12),
-        # Buck's equation worked apart: (18.678 - 37/234.5) 37/294.14 = 2.329642, 62.7988 hPa
+        # Buck's equation worked apart: (18.678 - 37/234.5) 37/294.14 = 2.329666, 62.7988 hPa
         (water_vapour_pressure, (37.0,), 47.10301),
         (water_vapour_pressure, (90.0,), 526.1843),
     ],

@@ -96,6 +96,16 @@ def test_registry_knows_every_argument(name):
     assert arguments(FUNCTIONS[name])
 
 
+@ALL
+def test_every_argument_and_the_result_are_documented_with_a_unit(name):
+    text = inspect.getdoc(FUNCTIONS[name])
+    parameters, returns = text.split("Parameters\n----------")[1].split("Returns\n-------")
+    for argument in inspect.signature(FUNCTIONS[name]).parameters:
+        assert argument in parameters
+    assert "[" in parameters
+    assert "[" in returns
+
+
 def test_no_public_function_is_left_out():
     assert len(FUNCTIONS) >= 45
     assert not set(FUNCTIONS) & OWN_TESTS

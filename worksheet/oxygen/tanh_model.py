@@ -120,7 +120,18 @@ def saturation_from_displacement(po2: ArrayLike, a: ArrayLike, temperature: Arra
 
 
 def in_range(a: Floats) -> Bools:
-    """Whether a displacement is one the model is used with."""
+    """Whether a displacement is one the model is used with.
+
+    Parameters
+    ----------
+    a : ndarray
+        Displacement [1, natural log of PO2].
+
+    Returns
+    -------
+    ndarray of bool
+        True from -2.5 to 2.5, False for NaN [bool].
+    """
     return np.asarray((a >= A_RANGE[0]) & (a <= A_RANGE[1]))
 
 
@@ -130,19 +141,58 @@ def _log(value: Floats) -> Floats:
 
 @quiet
 def abscissa(po2: Floats, a: Floats, temperature: Floats) -> Floats:
-    """The x of the tanh model: ln(PO2 / 7 kPa) less displacement and temperature."""
+    """The x of the tanh model: ln(PO2 / 7 kPa) less displacement and temperature.
+
+    Parameters
+    ----------
+    po2 : ndarray
+        Oxygen partial pressure [mmHg].
+    a : ndarray
+        Displacement [1, natural log of PO2].
+    temperature : ndarray
+        Temperature the pressure holds at [°C].
+
+    Returns
+    -------
+    ndarray
+        x [1, natural log of PO2], minus infinity without oxygen.
+    """
     return np.asarray(np.log(po2 / P_REFERENCE) - a - PER_KELVIN * (temperature - 37.0))
 
 
 @quiet
 def odds_at(x: Floats, a: Floats) -> Floats:
-    """The y of the tanh model: ln(S / (1 - S))."""
+    """The y of the tanh model: ln(S / (1 - S)).
+
+    Parameters
+    ----------
+    x : ndarray
+        From :func:`abscissa` [1].
+    a : ndarray
+        Displacement [1, natural log of PO2].
+
+    Returns
+    -------
+    ndarray
+        ln-odds of the saturation [1].
+    """
     return np.asarray(Y0 + x + (H0 + a) * np.tanh(K * x))
 
 
 @quiet
 def expit(odds: Floats) -> Floats:
-    """The saturation that has these ln-odds."""
+    """The saturation that has these ln-odds.
+
+    Parameters
+    ----------
+    odds : ndarray
+        ln(S / (1 - S)) [1].
+
+    Returns
+    -------
+    ndarray
+        Saturation [0-1].
+    """
     return np.asarray(1.0 / (1.0 + np.exp(-odds)))
 
 
@@ -150,6 +200,20 @@ def abscissa_of_odds(odds: Floats, a: Floats, steps: int = 5) -> Floats:
     """The x of the tanh model for ln(S / (1 - S)), by Newton: the slope is at least 1, five steps are exact anywhere.
 
     At half saturation three are.
+
+    Parameters
+    ----------
+    odds : ndarray
+        ln(S / (1 - S)) [1].
+    a : ndarray
+        Displacement [1, natural log of PO2].
+    steps : int
+        Steps of Newton's method [1].
+
+    Returns
+    -------
+    ndarray
+        x with y(x) = odds [1].
     """
     height = H0 + a
     rest = odds - Y0
@@ -163,7 +227,21 @@ def abscissa_of_odds(odds: Floats, a: Floats, steps: int = 5) -> Floats:
 def displacement_root(x0: Floats, odds: Floats) -> tuple[Floats, Floats]:
     """Displacement with y(x0 - a) = odds, and what is left of the equation.
 
-    Two steps of Halley are exact for living blood; rows that need more get them, each by itself.
+    Two steps of Halley's method are exact for living blood; rows that need more get them, each by itself.
+
+    Parameters
+    ----------
+    x0 : ndarray
+        x of the tanh model at no displacement [1].
+    odds : ndarray
+        ln(S / (1 - S)) that the curve is to pass through [1].
+
+    Returns
+    -------
+    a : ndarray
+        Displacement [1, natural log of PO2].
+    left : ndarray
+        y(x0 - a) less the odds asked for: near 0 where the root was found [1].
     """
     x0, odds = np.broadcast_arrays(x0, odds)
     a = _nearer(_nearer(_first_displacement(odds, x0), odds, x0), odds, x0)
