@@ -1,5 +1,6 @@
 """What every test shares: faster hashing, static files without a collected manifest, and honest skipping."""
 
+import importlib
 import os
 import shutil
 
@@ -40,3 +41,31 @@ def chromium() -> str:
 def pdftotext() -> str:
     """Path of poppler's pdftotext."""
     return need("pdftotext")
+
+
+@pytest.fixture(scope="session", autouse=True)
+def _emptying_between_tests():
+    """Tests with a live server empty the database afterwards, which its triggers refuse: lift them for that moment.
+
+    Only the tests' own emptying is patched; the program has no such way.
+    """
+    from django.db.backends.postgresql.operations import DatabaseOperations as Postgres
+    from django.db.backends.sqlite3.operations import DatabaseOperations as Sqlite
+
+    triggers = importlib.import_module("worksheet.ward.migrations.0002_append_only")
+    patch = pytest.MonkeyPatch()
+    for operations in (Sqlite, Postgres):
+        original = operations.execute_sql_flush
+
+        def emptied(self, statements, original=original):
+            if not statements:
+                return
+            with self.connection.schema_editor() as editor:
+                triggers.backwards(None, editor)
+            original(self, statements)
+            with self.connection.schema_editor() as editor:
+                triggers.forwards(None, editor)
+
+        patch.setattr(operations, "execute_sql_flush", emptied)
+    yield
+    patch.undo()

@@ -49,7 +49,9 @@ def refuse_unsafe(bind: str, plain_http: bool) -> None:
     if settings.DEBUG:
         raise CommandError("WORKSHEET_DEBUG is on: error pages would show patients' data. Unset it.")
     if not settings.SECRET_KEY_GIVEN and host not in LOOPBACK:
-        raise CommandError("WORKSHEET_SECRET_KEY is not set: every restart would end all sessions. Set 50 random characters.")
+        raise CommandError(
+            "WORKSHEET_SECRET_KEY is not set: every restart would end all sessions. Set 50 random characters."
+        )
     if host not in LOOPBACK and not settings.HTTPS and not plain_http:
         raise CommandError(
             f"{bind} can be reached by others and WORKSHEET_HTTPS is not set: passwords would travel in the clear. "
