@@ -3,6 +3,8 @@
 
 (() => {
   const root = document.documentElement;
+  // htmx notes the address of the page there; an address names a patient, and the browser keeps nothing of one.
+  sessionStorage.removeItem("htmx-current-path-for-history");
 
   // --- light and dark: follows the system until somebody chooses; the choice is kept with the account ---
 

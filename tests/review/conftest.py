@@ -56,7 +56,7 @@ def world(client, db):
         if role is not None:
             Membership.objects.create(user=people[name], unit=unit, role=role)
     stay = Stay.objects.create(
-        unit=unit, patient=Patient.objects.create(identifier="T-1"), bed=beds[0], reference="T-1", height=170, weight=70,
-        age=60, admitted_at=datetime.now(UTC) - timedelta(days=3),
+        unit=unit, patient=Patient.objects.create(identifier="T-1"), bed=beds[0], reference="T-1",
+        height=170, weight=70, age=60, admitted_at=datetime.now(UTC) - timedelta(days=3),
     )  # fmt: skip
     return World(client, unit, stay, people).as_("nurse")
