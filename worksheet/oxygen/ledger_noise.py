@@ -15,7 +15,7 @@ from .domain import Floats, quiet
 from .factors import Route, RowFactors
 from .measurement import Parts, Uncertainties, hb_method, parts
 from .readings import Bools, Codes, Ints, Snapshots
-from .shapley import BOUND, GAUSS, Factors, Split, bound_values
+from .shapley import BOUND, GAUSS, PER_METHB, SLOPES, Factors, Split, bound_values
 
 STEPS = ("lung", "haemoglobin", "function", "flow", "residual", "shift", "saturation")
 Gradient = dict[str, tuple[Floats, Floats]]  # input: derivative by its value at the start and at the end
@@ -68,8 +68,7 @@ def _gradients(start: Factors, end: Factors, found: Split, constants: Constants)
     weight = _weight_gradient(low, high, scale)
     parts, slopes = found.saturation_parts, found.slopes
     value = _weight(low, high, scale)
-    g0, g1, p0, p1 = (slopes[name] for name in ("start", "end", "po2_start", "po2_end"))
-    bend = 0.5 * (p1 - p0)  # how the part of PO2 answers to a displacement at either end
+    g0, g1, p0, p1, h0, h1, bend = (slopes[name] for name in SLOPES)
     shift_part = np.asarray(sum(parts[name] for name in parts if name not in ("po2", "residual")))
     lung = _scaled(weight, parts["po2"]) | {
         "ln_po2": (-value * p0, value * p1),
@@ -78,10 +77,10 @@ def _gradients(start: Factors, end: Factors, found: Split, constants: Constants)
     lung = _added(lung, _dissolved(start, end, constants))
     shift = _scaled(weight, shift_part) | {
         "ln_po2": (-value * (g0 - p0), value * (g1 - p1)),
-        "shift": (value * (g0 + bend), value * (bend - g1)),
+        "shift": (value * (h0 + bend), value * (bend - h1)),
     }
     residual = _scaled(weight, parts["residual"]) | {
-        "unloading": (-value, value), "ln_po2": (value * g0, -value * g1), "shift": (-value * g0, value * g1)
+        "unloading": (-value, value), "ln_po2": (value * g0, -value * g1), "shift": (-value * h0, value * h1)
     }  # fmt: skip
     measured = start.measured | end.measured
     residual = {name: (a * measured, b * measured) for name, (a, b) in residual.items()}
@@ -173,19 +172,25 @@ def _raw(
     """From factors to what was measured: O2Hb instead of saturation, PO2 and shift behind a calculated saturation."""
     zero = np.zeros_like(start.po2)
     result: dict[str, list[Floats]] = {}
+    known = rows.dys_known[first] & rows.dys_known[last]
     sides = ((0, start, rows.route[first], "start"), (1, end, rows.route[last], "end"))
     for side, one, route, slope_name in sides:
         g = {name: gradient.get(name, (zero, zero))[side] for name in (*BOUND, "ln_po2", "shift")}
-        by_curve = np.where(route == Route.CURVE, g["unloading"] * found.slopes[slope_name], 0.0)
+        calculated = route == Route.CURVE
+        by_curve = np.where(calculated, g["unloading"] * found.slopes[slope_name], 0.0)
+        by_shift = np.where(calculated, g["unloading"] * found.slopes[f"shift_{slope_name}"], 0.0)
         by_o2hb = route == Route.O2HB
         own = {
             "flow": g["flow"],
             "hb": g["hb"],
-            "saturation": np.where(route == Route.CURVE, 0.0, g["unloading"] / np.where(by_o2hb, one.active, 1.0)),
-            "share": g["active"] - np.where(by_o2hb, g["unloading"] * one.saturation / one.active, 0.0),
+            "saturation": np.where(calculated, 0.0, g["unloading"] / np.where(by_o2hb, one.active, 1.0)),
+            # dyshaemoglobin also shifts the curve to the left
+            "share": g["active"]
+            - np.where(by_o2hb, g["unloading"] * one.saturation / one.active, 0.0)
+            + np.where(known, PER_METHB * (g["shift"] - by_shift), 0.0),
             "ln_po2": g["ln_po2"] + by_curve,
-            "shift": g["shift"] - by_curve,
-            "curve": -by_curve,
+            "shift": g["shift"] - by_shift,
+            "curve": np.where(calculated, g["shift"] - by_shift, 0.0),
         }
         for name, value in own.items():
             result.setdefault(name, []).append(np.asarray(value))

@@ -18,7 +18,7 @@ from .domain import Floats
 from .factors import Route, RowFactors, bound_per_gram
 from .readings import Bools, Derived, Snapshots
 
-PER_PH, PER_LN_PCO2 = 0.88, 0.048  # displacement of the curve: Siggaard-Andersen 1993
+PER_PH, PER_LN_PCO2, PER_METHB = 0.88, 0.048, 0.7  # displacement of the curve: Siggaard-Andersen 1993
 # Exponents of height and weight: Mosteller 1987, Du Bois 1916
 BSA_EXPONENTS = {"mosteller": (0.5, 0.5), "dubois": (0.725, 0.425)}
 
@@ -35,6 +35,7 @@ class Slopes:
 
     @classmethod
     def of(cls, snapshots: Snapshots, rows: RowFactors, derived: Derived, constants: Constants) -> Slopes:
+        """All three, for all rows."""
         venous = {name: snapshots.venous[name] for name in ("po2", "ph", "pco2")}
         unmeasured = np.isnan(snapshots.venous["so2"]) & np.isnan(snapshots.venous["o2hb"])
         arterial = {"po2": rows.po2, "ph": rows.ph, "pco2": rows.pco2}
@@ -71,6 +72,7 @@ class Contents:
     def of(
         cls, snapshots: Snapshots, derived: Derived, rows: RowFactors, slopes: Slopes, constants: Constants
     ) -> Contents:
+        """All four, for all rows."""
         per_saturation = constants.hufner * rows.hb * rows.active
         alveolar = _alveolar(snapshots, constants)
         return cls(
@@ -85,6 +87,8 @@ def _arterial(rows: RowFactors, slope: Floats, per_saturation: Floats, constants
     bound = constants.hufner * rows.active * rows.saturation
     by_share = np.where(rows.route == Route.O2HB, 0.0, -constants.hufner * rows.hb * rows.saturation)
     by_ln = per_saturation * slope
+    # dyshaemoglobin also shifts the curve to the left, which a calculated saturation follows
+    by_share = by_share + np.where(rows.dys_known, PER_METHB * by_ln, 0.0)
     return {
         "hb": bound,
         "so2": np.where(rows.route == Route.CURVE, 0.0, per_saturation),
@@ -149,7 +153,24 @@ def _combine(*pairs: tuple[Floats | float, Partials]) -> Partials:
 def finals(
     snapshots: Snapshots, derived: Derived, rows: RowFactors, contents: Contents, constants: Constants
 ) -> dict[str, Partials]:
-    """Partial derivatives of what is reported, each by every raw input it rests on."""
+    """Partial derivatives of what is reported, each by every raw input it rests on.
+
+    Parameters
+    ----------
+    snapshots, derived : Snapshots, Derived
+        The rows and what follows from them.
+    rows : RowFactors
+        Their factors.
+    contents : Contents
+        Derivatives of the contents.
+    constants : Constants
+        Constants in force.
+
+    Returns
+    -------
+    dict of str to dict of str to ndarray
+        Derived quantity, raw input: derivative; by flow, height and weight relative to these [units of both].
+    """
     ca, cv = contents.arterial, contents.venous
     difference = _combine((1.0, ca), (-1.0, cv))
     cao2, cvo2, po2, fio2 = derived["cao2"], derived["cvo2"], rows.po2, snapshots["fio2"]

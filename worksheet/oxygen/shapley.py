@@ -34,7 +34,9 @@ _DL_PER_L = 10.0
 # The integrand along the diagonal is a cubic for four factors: two Gauss-Legendre points are exact [4].
 GAUSS = (0.5 - 0.5 / 3.0**0.5, 0.5 + 0.5 / 3.0**0.5)
 _BLOCK = 4096  # rows at a time: the table of all subsets stays in the processor's cache
-_LN_STEP = 1e-4  # step in ln PO2 for the slope of the curve
+_LN_STEP, _PH_STEP = 1e-4, 1e-4  # steps in ln PO2 and pH for the slopes of the curve
+PER_PH, PER_METHB = 0.88, 0.7  # displacement for pH and MetHb, COHb much the same: Siggaard-Andersen 1993
+SLOPES = ("start", "end", "po2_start", "po2_end", "shift_start", "shift_end", "bend")
 BOUND = ("flow", "hb", "active", "unloading")
 SHIFTS = ("ph", "pco2", "methb", "cohb", "temperature")
 CURVE = ("po2", *SHIFTS)
@@ -124,7 +126,8 @@ class Split:
         The same second-level terms before their weight [0-1].
     slopes : mapping of str to ndarray
         ``start``, ``end``: slope of the curve at the two ends; ``po2_start``, ``po2_end``: of the part that PO2
-        explains [saturation per ln PO2].
+        explains [saturation per ln PO2]; ``shift_start``, ``shift_end``: by a displacement to the left, ``bend``:
+        of the part that PO2 explains by a displacement at either end [saturation per unit of displacement].
     """
 
     terms: Mapping[str, Floats]
@@ -220,7 +223,7 @@ def curve_split(start: Factors, end: Factors, constants: Constants) -> tuple[dic
     """
     n = start.po2.size
     parts = {name: np.zeros(n) for name in CURVE}
-    slopes = {name: np.full(n, np.nan) for name in ("start", "end", "po2_start", "po2_end")}
+    slopes = {name: np.full(n, np.nan) for name in SLOPES}
     with_co = np.asarray((start.cohb > 0.0) | (end.cohb > 0.0)) & (constants.curve != "severinghaus")
     for rows in (*_blocks(np.flatnonzero(~with_co)), *_blocks(np.flatnonzero(with_co))):
         _split_block(start.take(rows), end.take(rows), constants, rows, parts, slopes)
@@ -256,6 +259,11 @@ def _split_block(
     slopes["start"][rows], slopes["end"][rows] = slope[0], slope[3]
     slopes["po2_start"][rows] = 0.5 * (slope[0] + slope[1])
     slopes["po2_end"][rows] = 0.5 * (slope[2] + slope[3])
+    moved = ends | {"ph": (start.ph + _PH_STEP, end.ph + _PH_STEP)}
+    left = (curve(moved, changed, corner, 1.0) - values[corner]) / (PER_PH * _PH_STEP)
+    slopes["shift_start"][rows], slopes["shift_end"][rows] = left[0], left[3]
+    # a displacement at one end is in half of the orderings when PO2 moves
+    slopes["bend"][rows] = 0.25 * (left[2] + left[3] - left[0] - left[1])
 
 
 def _differs(a: Floats, b: Floats) -> bool:
