@@ -257,6 +257,25 @@ def test_abscissa_of_odds_is_exact(a):
     np.testing.assert_allclose(tanh_model.odds_at(found, np.float64(a)), odds, atol=1e-11)
 
 
+def test_first_estimate_of_the_displacement_is_close_enough_for_two_steps():
+    # living blood: displacement within 1 of the standard curve, saturation as far as P50 is reported
+    a, so2 = np.meshgrid(np.linspace(-1.0, 1.0, 41), np.linspace(0.30, 0.97, 68))
+    odds = np.log(so2 / (1 - so2))
+    x0 = tanh_model.abscissa_of_odds(odds, a) + a
+    estimate = tanh_model._first_displacement(odds, x0)
+    assert np.abs(estimate - a).max() < 0.1
+    twice = tanh_model._nearer(tanh_model._nearer(estimate, odds, x0), odds, x0)
+    np.testing.assert_allclose(twice, a, atol=1e-12)
+    # on the standard curve the estimate is only off by how the curve is read backwards
+    on_standard = tanh_model._first_displacement(odds[:, 20], x0[:, 20])
+    assert np.abs(on_standard).max() < 0.06
+
+
+def test_first_estimate_stays_in_range_where_no_curve_fits():
+    found = tanh_model._first_displacement(np.array([-8.0, 8.0]), np.array([3.0, -6.0]))
+    np.testing.assert_array_equal(found, tanh_model.A_RANGE[::-1])
+
+
 def test_displacement_root_leaves_nothing():
     a = np.linspace(-2.4, 2.4, 49)
     po2 = po2_with_co(np.array([[0.1], [0.5], [0.9]]), a)
