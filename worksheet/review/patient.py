@@ -4,50 +4,56 @@ from __future__ import annotations
 
 from typing import Any
 
+from django.contrib import messages
 from django.http import HttpRequest, HttpResponse
 from django.shortcuts import redirect, render
+from django.urls import reverse
 from django.utils import timezone
 from django.views.decorators.http import require_POST
 
 from worksheet import charts
 from worksheet.charts.page import Drawn
 from worksheet.ward import audit
-from worksheet.ward.access import person, role_in, stay_or_404, unit_or_404
+from worksheet.ward.access import person, stay_or_404, unit_or_404
 from worksheet.ward.display import Display
-from worksheet.ward.models import Entry, ReviewMark, Role, Stay, Unit
-from worksheet.ward.sheet import Sheet, open_sheet
+from worksheet.ward.models import ReviewMark, Role, Stay, Unit, User
+from worksheet.ward.sheet import open_sheet
 
-from .beds import BedRow, bed_rows
-from .entries_table import entry_lines
+from .beds import bed_rows
+from .entries_table import about_entries, entry_lines, headings
 from .reach import entries_in_reach
-from .window import HOURS, Window, window_of
+from .stays_here import find, present
+from .story import Story
+from .window import HOURS, window_of
 
 
 def patient(request: HttpRequest, slug: str, ref: str) -> HttpResponse:
     """One stay over the review window."""
-    unit = unit_or_404(request, slug)
-    stay = stay_or_404(request, unit, ref)
-    user = person(request)
+    unit, user = unit_or_404(request, slug), person(request)
+    line = present(unit, user)
+    stay = next((one for one in line if one.reference == ref), None) or find(request, unit, ref)
     window, display = window_of(request.GET, unit, user, stay), Display.of(user, unit)
     sheet = open_sheet(unit, [stay], entries_in_reach(unit, [stay.pk], window))
-    row = bed_rows(sheet, window, display)[0]
+    story = Story(bed_rows(sheet, window, display)[0])
     audit.write(user.username, "viewed", unit=unit.name, subject=stay.reference, window=window.kind)
     history = request.GET.get("history") == "1"
+    rows = story.rows_in_window()
+    since = float(sheet.readings.time[rows[0]]) if len(rows) else window.since_hours
     context = {
-        "unit": unit, "stay": stay, "window": window, "hours": HOURS, "row": row, "display": display,
-        "charts": draw(sheet, stay, row, display), "neighbours": neighbours(unit, stay), "history": history,
-        "lines": entry_lines(sheet, row.rows, display, _old_entries(stay, window) if history else []),
-        "may_record": (role_in(user, unit) or 0) >= Role.RECORDER,
+        "unit": unit, "stay": stay, "window": window, "hours": HOURS, "row": story.row, "story": story,
+        "charts": draw(story), **neighbours(line, stay), "history": history, "headings": headings(display),
+        "lines": entry_lines(sheet, stay, rows, display, about_entries(stay, window, since, history=history), history),
+        "may_record": may_record(user, stay), "day": day_of(stay, window.until_hours),
+        "free_from": f"{display.local(window.since):%Y-%m-%dT%H:%M}",
+        "free_to": f"{display.local(window.until):%Y-%m-%dT%H:%M}",
+        "zone": f"{display.local(window.until):%Z}",
     }  # fmt: skip
     return render(request, "review/patient.html", context)
 
 
-def draw(sheet: Sheet, stay: Stay, row: BedRow, display: Display) -> dict[str, Drawn]:
+def draw(story: Story) -> dict[str, Drawn]:
     """The five charts over the window; the value at its start is shown too."""
-    start = row.window.since_hours
-    if row.level:
-        start = min(start, float(sheet.readings.time[int(row.review.ledger.start_row[row.place])]))
-    rows = row.rows[sheet.readings.time[row.rows] >= start]
+    sheet, stay, display, rows = story.row.sheet, story.row.stay, story.row.display, story.rows_in_window()
     made = {
         "strip": charts.time_strip(sheet, stay, rows, display),
         "ledger": charts.change_ledger(charts.changes_of(sheet, rows), display),
@@ -58,28 +64,32 @@ def draw(sheet: Sheet, stay: Stay, row: BedRow, display: Display) -> dict[str, D
     return {name: Drawn(chart) for name, chart in made.items()}
 
 
-def neighbours(unit: Unit, stay: Stay) -> dict[str, Any]:
-    """The stays before and after this one in bed order."""
-    line = list(Stay.objects.filter(unit=unit).present().in_bed_order())
+def neighbours(line: list[Stay], stay: Stay) -> dict[str, Any]:
+    """The stays before and after this one in the order of the round."""
     at = next((i for i, other in enumerate(line) if other.pk == stay.pk), None)
     if at is None:
         return {"before": None, "after": None}
     return {"before": line[at - 1] if at else None, "after": line[at + 1] if at + 1 < len(line) else None}
 
 
-def _old_entries(stay: Stay, window: Window) -> list[Entry]:
-    """Entries of the window that were corrected or struck out, and the strike-outs themselves."""
-    entries = Entry.objects.filter(stay=stay, time__gte=window.since, time__lte=window.until).select_related(
-        "recorded_by", "replaced_by", "replaced_by__recorded_by"
-    )
-    return [entry for entry in entries if entry.struck or hasattr(entry, "replaced_by")]
+def may_record(user: User, stay: Stay) -> bool:
+    """Whether this person may add and correct entries here."""
+    return user.is_superuser or (getattr(stay, "my_role", None) or 0) >= Role.RECORDER
+
+
+def day_of(stay: Stay, now: float) -> int | None:
+    """Day of the stay, the first one being day 1."""
+    return int((now - stay.admitted_at.timestamp() / 3600) // 24) + 1 if stay.admitted_at else None
 
 
 @require_POST
 def mark_reviewed(request: HttpRequest, slug: str, ref: str) -> HttpResponse:
     """Note that this person looked at this stay now."""
-    unit = unit_or_404(request, slug)
+    unit: Unit = unit_or_404(request, slug)
     stay = stay_or_404(request, unit, ref)
-    ReviewMark.objects.create(stay=stay, user=person(request), at=timezone.now())
-    audit.write(person(request).username, "reviewed", unit=unit.name, subject=stay.reference)
-    return redirect("patient", slug=slug, ref=ref)
+    user = person(request)
+    ReviewMark.objects.create(stay=stay, user=user, at=timezone.now())
+    audit.write(user.username, "reviewed", unit=unit.name, subject=stay.reference)
+    messages.success(request, f"{stay.reference} marked as reviewed.")
+    kept = request.POST.get("window", "")
+    return redirect(reverse("patient", args=[slug, ref]) + (f"?window={kept}" if kept.isalnum() else ""))

@@ -3,21 +3,38 @@
 from __future__ import annotations
 
 from django.db.models import OuterRef, Subquery
+from django.http import Http404, HttpRequest
 
-from worksheet.ward.models import ReviewMark, Stay, Unit, User
+from worksheet.ward.access import person
+from worksheet.ward.models import Membership, ReviewMark, Stay, Unit, User
 from worksheet.ward.models.places import StayQuerySet
 
 
 def with_reviews(stays: StayQuerySet, user: User) -> StayQuerySet:
-    """Add when and by whom each stay was last reviewed, and when this person last did."""
+    """Add when and by whom each stay was last reviewed, when this person last did, and their role here."""
     marks = ReviewMark.objects.filter(stay=OuterRef("pk")).order_by("-at")
     return stays.annotate(
         reviewed_at=Subquery(marks.values("at")[:1]),
         reviewed_by=Subquery(marks.values("user__username")[:1]),
+        my_role=Subquery(Membership.objects.filter(unit=OuterRef("unit"), user=user).values("role")[:1]),
         my_review_at=Subquery(marks.filter(user=user).values("at")[:1]),
     )
 
 
 def present(unit: Unit, user: User) -> list[Stay]:
     """The stays of a unit that this person may see, in the order of the round."""
-    return list(with_reviews(Stay.objects.visible_to(user).filter(unit=unit).present().in_bed_order(), user))
+    stays = list(with_reviews(Stay.objects.visible_to(user).filter(unit=unit).present().in_bed_order(), user))
+    for stay in stays:
+        stay.unit = unit  # known already: no query for it
+    return stays
+
+
+def find(request: HttpRequest, unit: Unit, reference: str) -> Stay:
+    """A stay of the unit, ended ones included, or 404."""
+    user = person(request)
+    own = Stay.objects.visible_to(user).filter(unit=unit, reference=reference).select_related("bed", "patient")
+    stay = with_reviews(own, user).first()
+    if stay is None:
+        raise Http404("No such stay in this unit.")
+    stay.unit = unit
+    return stay

@@ -2,7 +2,7 @@
 
 from django.urls import include, path
 
-from . import home, methods, patient, theme, unit
+from . import explain, home, methods, patient, theme, unit
 
 _STAY = "u/<slug:slug>/stay/<str:ref>/"
 
@@ -14,5 +14,6 @@ urlpatterns = [
     path("u/<slug:slug>/", unit.unit_review, name="unit_review"),
     path("u/<slug:slug>/methods/", methods.methods, name="unit_methods"),
     path(_STAY, patient.patient, name="patient"),
+    path(f"{_STAY}explain/<int:entry_id>/<slug:quantity>/", explain.explain, name="explain"),
     path(f"{_STAY}reviewed", patient.mark_reviewed, name="mark_reviewed"),
 ]
