@@ -27,7 +27,7 @@ def readings_of(drafts: Sequence[DraftEntry]) -> Readings:
 
     return Readings.build(
         stay, [d.time.timestamp() / 3600.0 for d in drafts], [int(d.site) for d in drafts], {n: column(n) for n in used},
-        [int(d.first.device) for d in drafts], [int(d.first.flow_method) for d in drafts], [int(d.first.event) for d in drafts],
+        [int(d.said("device")) for d in drafts], [int(d.said("flow_method")) for d in drafts], [int(d.said("event")) for d in drafts],
     )  # fmt: skip
 
 

@@ -98,7 +98,8 @@ class Tally:
     def sentence(self, target: str, seconds: float) -> str:
         """One line for the person who waits."""
         to = "standard output" if target == "-" else target
-        text = f"derive: {self.read:,} row{'s'[: self.read != 1]} read, {self.written:,} written to {to} in {seconds:.1f} s"
+        rows = "1 row" if self.read == 1 else f"{self.read:,} rows"
+        text = f"derive: {rows} read, {self.written:,} written to {to} in {seconds:.1f} s"
         return text + (f"; impossible values not used: {summary(self.refused)}" if self.refused else "")
 
 

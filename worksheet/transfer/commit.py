@@ -47,7 +47,7 @@ def _maker(name: str, default: Any, user: User, source: str) -> Maker:
     if name in MEASURED:
         return lambda draft, stay: cell.value if (cell := draft.cells.get(name)) is not None else None
     if name in _ROW_FIELDS:
-        return lambda draft, stay: getattr(draft.first, name)
+        return lambda draft, stay: draft.said(name)
     now = _database_time(timezone.now())
     fixed: dict[str, Any] = {"recorded_by_id": user.pk, "recorded_at": now, "source": source}
     if name in fixed:
@@ -126,8 +126,8 @@ def _merged(entry: Entry, draft: DraftEntry, source: str) -> record.NewEntry:
             values[name] = cell.value if cell.value is not None else values.get(name, float("nan"))
             typed[name] = cell.typed()
     return record.NewEntry(
-        time=entry.time, site=Site(entry.site), values=values, typed=typed, device=Device(entry.device or draft.first.device),
-        flow_method=FlowMethod(entry.flow_method or draft.first.flow_method), event=Event(entry.event), event_amount=entry.event_amount,
+        time=entry.time, site=Site(entry.site), values=values, typed=typed, device=Device(entry.device or draft.said("device")),
+        flow_method=FlowMethod(entry.flow_method or draft.said("flow_method")), event=Event(entry.event), event_amount=entry.event_amount,
         sample=entry.sample or draft.sample, note="; ".join(n for n in (entry.note, note_of(draft)) if n), key=draft.key,
         source=source,
     )  # fmt: skip

@@ -17,6 +17,7 @@ from .rows import Refused
 START, END, CR = b"\x0b", b"\x1c", b"\r"
 MAX_MESSAGE = MEGABYTE
 MAX_SEGMENTS = 5_000
+MAX_PARTS = 5_000  # separators in one segment
 VERSIONS = ("2.3", "2.3.1", "2.4", "2.5", "2.5.1", "2.6", "2.7", "2.7.1", "2.8", "2.8.1", "2.8.2")
 _CHARSETS = {  # HL7 table 0211
     "ASCII": "ascii", "8859/1": "latin-1", "8859/2": "iso8859-2", "8859/5": "iso8859-5", "8859/7": "iso8859-7",
@@ -127,6 +128,9 @@ def segments(raw: bytes, head: Header) -> tuple[list[hl7.Segment], list[str]]:
             notes.append("A line break inside a segment was joined.")
     if len(lines) > MAX_SEGMENTS:
         raise Rejected("AR", f"the message has {len(lines):,} segments; at most {MAX_SEGMENTS:,} are read")
+    most = max((sum(line.count(c) for c in "|^~&") for line in lines), default=0)
+    if most > MAX_PARTS:
+        raise Rejected("AR", f"a segment has {most:,} parts; at most {MAX_PARTS:,} are read")
     try:
         return list(hl7.parse("\r".join(lines))), list(dict.fromkeys(notes))
     except (hl7.HL7Exception, ValueError, IndexError, KeyError, TypeError, AttributeError) as error:

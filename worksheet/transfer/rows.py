@@ -137,6 +137,10 @@ class DraftEntry:
         """The row that the draft began with."""
         return self.rows[0]
 
+    def said(self, name: str) -> Any:
+        """Device, flow method, event or its amount: from the first row that says it."""
+        return next((value for row in self.rows if (value := getattr(row, name))), getattr(self.rows[0], name))
+
     def settle(self, fate: Fate, reason: str = "") -> None:
         """Give the draft, and those of its rows that have none yet, their fate."""
         self.fate, self.reason = fate, reason

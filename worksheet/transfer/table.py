@@ -113,8 +113,8 @@ def _find_header(lines: list[str]) -> tuple[str, int]:
     best = (0, ",", 0)
     for index, line in enumerate(islice(lines, HEADER_WITHIN)):
         for delimiter in _DELIMITERS:
-            if delimiter in line and len(line) < 20_000:
-                named = known_names(_split([line], delimiter)[0])
+            if delimiter in line[:20_000]:
+                named = known_names(_split([line[:20_000]], delimiter)[0])
                 if named > best[0]:
                     best = (named, delimiter, index)
         if best[0] >= 2 and index > best[2]:
