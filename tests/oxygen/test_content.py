@@ -131,6 +131,18 @@ def test_where_no_curve_fits_the_pair_the_modelled_one_is_taken():
     assert at_the_end(0.40, 500.0, cohb=0.0, methb=0.0) == pytest.approx(curve.saturation_tanh(38.0), abs=1e-12)
 
 
+def test_a_pair_that_contradicts_itself_moves_the_curve_only_so_far():
+    # 94 % at 300 mmHg would be a P50 of about 100: an air bubble or a mixed-up value, not this blood's curve
+    modelled = curve.displacement(7.4, 40.0)
+    assert curve.displacement_from_pair(300.0, 0.94) - modelled > 1.0
+    found = at_the_end(0.94, 300.0, cohb=0.0, methb=0.0)
+    assert found == pytest.approx(curve.saturation_from_displacement(38.0, modelled + 0.4), abs=1e-12)
+    left = at_the_end(0.94, 20.0, cohb=0.0, methb=0.0)
+    assert left == pytest.approx(curve.saturation_from_displacement(38.0, modelled - 0.4), abs=1e-12)
+    scaled = at_the_end(0.94, 300.0, constants=SEVERINGHAUS)
+    assert scaled == pytest.approx(curve.saturation_severinghaus(38.0 * np.exp(-0.4)), abs=1e-12)
+
+
 def test_blood_in_the_body_is_taken_to_body_temperature():
     t, so2, po2 = 34.0, 0.90, 60.0
     body = po2_at(po2, t), ph_at(7.4, t), pco2_at(40.0, t)
@@ -146,8 +158,9 @@ def test_blood_in_the_body_is_taken_to_body_temperature():
 
 def test_carbon_monoxide_is_kept_on_the_way_down():
     share = curve.co_share(0.2, 0.01)
-    a = curve.displacement_from_pair(95.0, 0.94, 37.0, share)
-    found = at_the_end(0.94, 95.0, cohb=0.2, methb=0.01)
+    po2 = 1.1 * float(curve.po2_tanh(0.90, cohb=0.2, methb=0.01))
+    a = curve.displacement_from_pair(po2, 0.90, 37.0, share)
+    found = at_the_end(0.90, po2, cohb=0.2, methb=0.01)
     assert found == pytest.approx(curve.saturation_with_co(38.0, a, 37.0, share), abs=1e-12)
 
 

@@ -31,6 +31,8 @@ from .curve import (
 )
 from .domain import Floats, floats, keep, power_of_ten, quiet
 
+# Displacement that the model does not explain. DPG of 0 to 10 mmol/L is -0.3 to 0.3; the margin is for variants.
+_MOST_REST = 0.4
 _SOLUBILITY_PER_KELVIN = -0.012  # [2]; the same in Siggaard-Andersen 1984
 
 
@@ -192,7 +194,8 @@ def end_capillary_saturation(
     """Saturation of the same blood at the end-capillary PO2 and body temperature, on the patient's own curve.
 
     The curve's displacement is the modelled one plus what is needed to pass through the saturation in use. That rest
-    counts fully for saturations of 0.30 to 0.95 and fades out by 0.97, as P50 does: above, a pair says nothing of it.
+    counts fully for saturations of 0.30 to 0.95 and fades out by 0.97, as P50 does: above, a pair says nothing of it. It
+    counts for no more than 0.4, a P50 a third lower or half higher: beyond, the pair contradicts itself.
 
     Parameters
     ----------
@@ -229,8 +232,8 @@ def end_capillary_saturation(
 
 
 def _trusted(trust: Floats, rest: Floats) -> Floats:
-    """What a pair adds to the modelled curve; nothing where no curve passes through it."""
-    return np.where(np.isfinite(rest), trust * rest, 0.0)
+    """What a pair adds to the modelled curve, within reason; nothing where no curve passes through it."""
+    return np.where(np.isfinite(rest), trust * np.clip(rest, -_MOST_REST, _MOST_REST), 0.0)
 
 
 def _trust_of_pair(so2: Floats) -> Floats:
