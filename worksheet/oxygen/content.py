@@ -194,8 +194,8 @@ def end_capillary_saturation(
     """Saturation of the same blood at the end-capillary PO2 and body temperature, on the patient's own curve.
 
     The curve's displacement is the modelled one plus what is needed to pass through the saturation in use. That rest
-    counts fully for saturations of 0.30 to 0.95 and fades out by 0.97, as P50 does: above, a pair says nothing of it. It
-    counts for no more than 0.4, a P50 a third lower or half higher: beyond, the pair contradicts itself.
+    counts fully for saturations of 0.30 to 0.95 and fades out by 0.97, as P50 does: above, a pair says nothing of it.
+    It counts for no more than 0.4, a P50 a third lower or half higher: beyond, the pair contradicts itself.
 
     Parameters
     ----------
