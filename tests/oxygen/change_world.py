@@ -80,7 +80,7 @@ def checks(prefix):
     """Rows of the check values whose quantity begins so: (quantity, inputs, value as printed)."""
     path = Path(__file__).parents[1] / "data" / "change_checks.csv"
     with path.open(newline="", encoding="utf-8") as file:
-        rows = list(csv.DictReader(file))
+        rows = list(csv.DictReader(line for line in file if not line.startswith("#")))
     return [(r["quantity"], json.loads(r["inputs"]), r["value"]) for r in rows if r["quantity"].startswith(prefix)]
 
 

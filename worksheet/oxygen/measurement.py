@@ -48,6 +48,8 @@ class Uncertainties:
     growth : mapping of str to float
         How the SD of a carried value grows with age, added in quadrature as for a random walk; relative for
         haemoglobin, flow and dyshaemoglobins, absolute for temperature [per square root of an hour].
+    venous_saturation : float
+        SD of the saturation of a venous sample [0-1].
     usual_inactive : float
         SD of the usual inactive share where dyshaemoglobins were never measured [0-1].
     curve : float
@@ -79,6 +81,7 @@ class Uncertainties:
             {"hb": 0.01, "flow": 0.05, "temperature": 0.1, "dyshaemoglobins": 0.10}  # common practice
         )
     )
+    venous_saturation: float = 0.008  # as in arterial blood; repeat SD of central-venous samples 0.0105 [1]
     usual_inactive: float = 0.012  # common practice: COHb 0.5-3 %, MetHb about 1 %
     # P50 varies by about 1 mmHg of 26.8 between healthy people, more in the ill; common practice
     curve: float = 0.05

@@ -87,6 +87,7 @@ def _chain_sds(snapshots: Snapshots, raw: Mapping[str, Floats], row: int, settin
     for name in raw:
         if name.startswith("venous_"):
             sds[name] = float(settings.sd(name.removeprefix("venous_"), raw[name])[0])
+    sds["venous_so2"] = settings.venous_saturation
     return sds
 
 

@@ -177,7 +177,7 @@ def _sds(snapshots: Snapshots, rows: RowFactors, settings: Uncertainties) -> dic
     by_index = parts(snapshots, "cardiac_index", settings).total / snapshots["cardiac_index"]
     return plain | {
         "so2": saturation_sd(snapshots, rows, settings),
-        "so2_venous": np.full(len(snapshots), settings.quantities["so2"][0]),
+        "so2_venous": np.full(len(snapshots), settings.venous_saturation),
         "hb_venous": settings.sd("hb", snapshots.venous["hb"]),
         "po2_venous": settings.sd("po2", snapshots.venous["po2"]),
         "dyshaemoglobins": share_sd(snapshots, rows, settings),
