@@ -1,15 +1,12 @@
 """Chromium against a real server: pages are read as people see them, and no page may complain on the console."""
 
-import importlib
 import os
 import tempfile
 from datetime import timedelta
 from pathlib import Path
-from types import SimpleNamespace
 
 import pytest
 from django.conf import settings
-from django.db import connection
 from django.utils import timezone
 
 from worksheet.ward.models import Bed, Membership, Patient, Role, Stay, Unit, User
@@ -43,18 +40,7 @@ def browser(chromium):
 
 
 @pytest.fixture
-def growing(transactional_db):
-    """Data base with its append-only triggers; they step aside only while the tables are emptied after the test."""
-    triggers = importlib.import_module("worksheet.ward.migrations.0002_append_only")
-    editor = SimpleNamespace(connection=connection)
-    triggers.backwards(None, editor)
-    triggers.forwards(None, editor)
-    yield
-    triggers.backwards(None, editor)
-
-
-@pytest.fixture
-def ward(growing):
+def ward(transactional_db):
     """A unit with two recorders and one patient, taken in three days ago."""
     unit = Unit.objects.create(name="North unit", slug="north", time_zone="Europe/Zurich")
     for name in ("nurse", "other"):

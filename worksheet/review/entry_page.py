@@ -88,6 +88,7 @@ def page_parts(desk: Desk, slip: Slip, trial: Trial | None) -> dict[str, Any]:
         "sites": SITE_WORDS.items(), "devices": DEVICE_WORDS.items(), "methods": METHOD_WORDS.items(),
         "estimate": None if slip.fields["fio2"].text.strip() else checks.estimate(slip),
         "live_url": reverse("entry_live", args=where),
+        "left_out": [f.quantity.symbol for f in slip.fields.values() if f.blocked],
         **(_follows(trial, desk.display) if trial else {}),
     }  # fmt: skip
 
