@@ -7,33 +7,66 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from worksheet.oxygen import align, derive, plausibility
+from worksheet.oxygen.finding_kinds import Severity
 from worksheet.oxygen.quantities import MEASURED
-from worksheet.oxygen.readings import Readings
+from worksheet.oxygen.readings import Floats, Readings
+from worksheet.ward.display import Display
 from worksheet.ward.models import Unit
 
 from .rows import DraftEntry, Fate
+
+IN_WORDS = 500  # entries whose findings are written out in the preview; all are counted
+_OF_ONE_VALUE = ("-impossible", "-unlikely")  # said with the row already
 
 
 def readings_of(drafts: Sequence[DraftEntry]) -> Readings:
     """The drafts as a table of the engine."""
     numbers: dict[tuple[str, str], int] = {}
     stay = [numbers.setdefault((d.patient.system, d.patient.identifier), len(numbers)) for d in drafts]
-    used = [n for n in MEASURED if any(n in d.cells for d in drafts)]
+    present = set().union(*(d.cells for d in drafts))
     nan = float("nan")
 
-    def column(name: str) -> np.ndarray:
+    def column(name: str) -> Floats:
         cells = (d.cells.get(name) for d in drafts)
         return np.array([nan if c is None or c.value is None else c.value for c in cells], dtype=np.float64)
 
-    return Readings.build(
-        stay, [d.time.timestamp() / 3600.0 for d in drafts], [int(d.site) for d in drafts], {n: column(n) for n in used},
-        [int(d.said("device")) for d in drafts], [int(d.said("flow_method")) for d in drafts], [int(d.said("event")) for d in drafts],
-    )  # fmt: skip
+    def codes(name: str) -> list[int]:
+        return [int(d.said(name)) for d in drafts]
+
+    hours = [d.time.timestamp() / 3600.0 for d in drafts]
+    values = {name: column(name) for name in MEASURED if name in present}
+    sites = [int(d.site) for d in drafts]
+    return Readings.build(stay, hours, sites, values, codes("device"), codes("flow_method"), codes("event"))
 
 
 def assess(drafts: Sequence[DraftEntry], unit: Unit) -> Counter[str]:
-    """Findings among new drafts, counted by code."""
+    """Findings among new drafts, counted by code; those that ask are added to their rows in words."""
     chosen = [d for d in drafts if d.fate is Fate.NEW]
     if not chosen:
         return Counter()
-    return Counter()
+    constants = unit.constants_in_force()
+    snapshots = align.align(readings_of(chosen), constants.carry)
+    derived = derive.derive(snapshots, constants)
+    # Times in the future were refused before; shifted dates are in the future on purpose: no present time is given.
+    found = plausibility.findings(snapshots, derived, constants, across_stays=True)
+    _say(chosen, found, Display.of(None, unit))
+    return Counter({code: len(rows) for code, rows in found.rows.items()})
+
+
+def _say(drafts: Sequence[DraftEntry], found: plausibility.Findings, display: Display) -> None:
+    """Write the findings that ask beside the rows they are about."""
+    asking = [
+        rows for code, rows in found.rows.items()
+        if plausibility.KINDS[code].severity is not Severity.NOTE and not code.endswith(_OF_ONE_VALUE)
+    ]  # fmt: skip
+    if not asking:
+        return
+    for number in np.unique(np.concatenate(asking))[:IN_WORDS].tolist():
+        row = drafts[number].first
+        words = [
+            f.sentence
+            for f in found.of_row(number, lambda name, value: display.value(name, value, with_unit=True))
+            if f.severity is not Severity.NOTE and not f.code.endswith(_OF_ONE_VALUE)
+        ]
+        row.cautions = tuple(dict.fromkeys((*row.cautions, *words)))
