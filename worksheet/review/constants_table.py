@@ -64,5 +64,9 @@ def carry_in_force(carry: CarryLimits) -> Iterator[InForce]:
     """How long each value may stand in for one that was not measured."""
     for item in fields(carry):
         value = getattr(carry, item.name)
-        told = "common practice" if value == item.default else f"chosen by the unit (usual: {age_words(float(item.default))})"  # type: ignore[arg-type]
+        told = (
+            "common practice"
+            if value == item.default
+            else f"chosen by the unit (usual: {age_words(float(item.default))})"
+        )  # type: ignore[arg-type]
         yield InForce(CARRIES[item.name], age_words(value), told)

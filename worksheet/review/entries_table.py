@@ -22,7 +22,20 @@ from worksheet.ward.sheet import Sheet
 from .window import Window
 from .words import SITE_WORDS
 
-COLUMNS = ("ph", "pco2", "po2", "hb", "so2", "cohb", "methb", "lactate", "spo2", "fio2", "cardiac_output", "temperature")
+COLUMNS = (
+    "ph",
+    "pco2",
+    "po2",
+    "hb",
+    "so2",
+    "cohb",
+    "methb",
+    "lactate",
+    "spo2",
+    "fio2",
+    "cardiac_output",
+    "temperature",
+)
 DERIVED = ("cao2", "do2i", "o2er", "pf_ratio")
 EVENT_WORDS = {Event.TRANSFUSION: "transfusion", Event.BLEED: "bleed", Event.DEVICE_CHANGE: "device changed",
                Event.BED_MOVE: "bed move", Event.OTHER: "event"}  # fmt: skip
@@ -54,7 +67,9 @@ def about_entries(stay: Stay, window: Window, since: float, *, history: bool) ->
     return list(own.values(*_ABOUT, *(MEASURED if history else ())))
 
 
-def entry_lines(sheet: Sheet, stay: Stay, rows: Ints, display: Display, about: Sequence[About], history: bool) -> list[Line]:
+def entry_lines(
+    sheet: Sheet, stay: Stay, rows: Ints, display: Display, about: Sequence[About], history: bool
+) -> list[Line]:
     """Lines of the entries, newest first; corrected and struck ones among them where asked for."""
     known = {one["pk"]: one for one in about}
     lines = [_line(sheet, stay, row, display, known.get(int(sheet.entry_ids[row]), {})) for row in rows.tolist()]

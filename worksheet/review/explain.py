@@ -32,7 +32,12 @@ _CONSTANT = {"k": "hufner", "alpha": "o2_solubility", "ph2o": "water_vapour", "r
              "end_capillary": "end_capillary_po2"}  # fmt: skip
 _MADE = {"saturation": "the saturation in use", "inactive": "the share of haemoglobin that cannot carry oxygen",
          "cco2": "content of end-capillary blood, by the curve at PAO2", "measured": "measured saturation"}  # fmt: skip
-_BY = {"index": "cardiac_index", "output": "cardiac_output", "pb": "barometric_pressure", "calculated": "so2_calculated"}
+_BY = {
+    "index": "cardiac_index",
+    "output": "cardiac_output",
+    "pb": "barometric_pressure",
+    "calculated": "so2_calculated",
+}
 INPUTS = {
     "hb": "haemoglobin", "so2": "saturation in use", "dyshaemoglobins": "dyshaemoglobins", "po2": "PaO2", "ph": "pH",
     "pco2": "PaCO2", "curve": "the patient's curve about the modelled one", "flow": "cardiac output or index",
@@ -132,7 +137,12 @@ class Explanation:
             symbol, decimals, unit = TERMS[name]
             if name in _CONSTANT:
                 label, _, _, source = CONSTANTS[_CONSTANT[name]]
-                yield Input(symbol, label, f"{self.display.number(value, decimals)} {unit}".rstrip(), f"constant in force; {source}")
+                yield Input(
+                    symbol,
+                    label,
+                    f"{self.display.number(value, decimals)} {unit}".rstrip(),
+                    f"constant in force; {source}",
+                )
             elif math.isfinite(value):
                 yield self._input(name, value, symbol, decimals, unit)
             else:
@@ -144,7 +154,9 @@ class Explanation:
             origin = "; ".join(basis_words(int(self.sheet.derived.flags[self.row]), name)) or "of this sample"
             return Input(symbol, _MADE[name], plain, origin)
         if name.startswith("venous_"):
-            return Input(symbol, f"venous {CATALOGUE[name.removeprefix('venous_')].label}", plain, self._venous_origin(name))
+            return Input(
+                symbol, f"venous {CATALOGUE[name.removeprefix('venous_')].label}", plain, self._venous_origin(name)
+            )
         known = _BY.get(name, name)
         if CATALOGUE[known].derived:
             shown = self.display.value(known, value, with_unit=True)
@@ -153,7 +165,10 @@ class Explanation:
                      self._origin(name, known), self._input_sd(known))  # fmt: skip
 
     def _origin(self, name: str, known: str) -> str:
-        source, age = int(self.sheet.snapshots.source[known][self.row]), float(self.sheet.snapshots.age[known][self.row])
+        source, age = (
+            int(self.sheet.snapshots.source[known][self.row]),
+            float(self.sheet.snapshots.age[known][self.row]),
+        )
         if source < 0:
             return self._made_origin(name, known)
         if source == self.row:

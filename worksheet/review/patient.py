@@ -46,6 +46,7 @@ def patient(request: HttpRequest, slug: str, ref: str) -> HttpResponse:
         "may_record": may_record(user, stay), "day": day_of(stay, window.until_hours),
         "free_from": f"{display.local(window.since):%Y-%m-%dT%H:%M}",
         "free_to": f"{display.local(window.until):%Y-%m-%dT%H:%M}",
+        "change_base": reverse("entry_correct", args=[slug, stay.reference, 0]).removesuffix("0/correct"),
         "zone": f"{display.local(window.until):%Z}",
     }  # fmt: skip
     return render(request, "review/patient.html", context)

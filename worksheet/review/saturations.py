@@ -59,6 +59,7 @@ def reconcile(sheet: Sheet, rows: Ints, display: Display) -> Reconciled | None:
     row = _newest(sheet, rows)
     if row < 0:
         return None
+
     def show(name: str, value: float) -> str:
         return display.value(name, value, with_unit=True) if math.isfinite(value) else "not measured"
 
@@ -102,7 +103,10 @@ def _compared(sheet: Sheet, row: int, display: Display, explained: bool) -> Iter
         yield "No reading on the finger within reach, so there is nothing to compare the sample with."
         return
     spo2_sd = float(sheet.settings.sd("spo2", np.array(finger)))
-    for name, other, words in (("gap_measured", "so2", "the measured saturation"), ("gap_calculated", "so2", "the calculated one")):
+    for name, other, words in (
+        ("gap_measured", "so2", "the measured saturation"),
+        ("gap_calculated", "so2", "the calculated one"),
+    ):
         gap = float(sheet.derived[name][row])
         if math.isfinite(gap):
             half = Z95 * math.hypot(spo2_sd, float(sheet.settings.sd(other, np.array(finger))))

@@ -30,7 +30,7 @@ def plus_minus(
     half = Z95 * sd / shown.factor
     tail = f" {shown.label}".rstrip() if unit else ""
     if not math.isfinite(half) or half <= 0:
-        return display.value(name, value, signed=signed) + tail
+        return display.value(name, value, signed=signed).replace("±", "") + tail
     decimals = supported(half, display.decimals(name))
     return f"{rounded(display, number, decimals, signed)} ± {rounded(display, half, decimals)}{tail}"
 
@@ -42,12 +42,12 @@ def supported(half: float, most: int) -> int:
 
 def rounded(display: Display, number: float, decimals: int, signed: bool = False) -> str:
     """A number with that many decimals, or rounded to tens and hundreds where they are negative."""
-    return display.number(round(number, decimals), max(0, decimals), signed)
+    return display.number(round(number, decimals), max(0, decimals), signed).replace("±", "")
 
 
 def percent(display: Display, share: float, signed: bool = True) -> str:
     """A share as whole percent."""
-    return f"{display.number(100 * share, 0, signed)} %" if math.isfinite(share) else MISSING
+    return f"{display.number(100 * share, 0, signed).replace('±', '')} %" if math.isfinite(share) else MISSING
 
 
 def hours(display: Display, value: float) -> str:
