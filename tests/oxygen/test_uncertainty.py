@@ -1,4 +1,4 @@
-"""Uncertainty: against an independent propagation, numerical derivatives and Monte Carlo; what is shared enters once."""
+"""Uncertainty against an independent propagation, numerical derivatives and Monte Carlo; shared inputs enter once."""
 
 from dataclasses import replace
 from types import MappingProxyType
@@ -167,7 +167,7 @@ def test_interval(value, relative):
 
 
 def test_repeatability_matches_mallat():
-    """Smallest detectable differences, Mallat 2015: random SDs in force are not smaller than 0.8 of what was measured."""
+    """Smallest detectable differences, Mallat 2015: the SDs in force are at least 0.8 of what was measured."""
     published = {name: float(printed) / (1.96 * np.sqrt(2)) for name, _, printed in checks("sdd_")}
     own = Uncertainties()
     assert own.sd("po2", np.array(91.0)) >= 0.8 * published["sdd_pao2_mmHg"]

@@ -29,6 +29,7 @@ from .readings import Bools, Derived, Flag, Ints, Snapshots
 
 MATERIAL = 0.05  # of the supply at the start; common practice
 ALPHA = 0.05  # one-sided, before the correction for the number of steps
+ORDERED = 1.6448536269514722  # one-sided 95 %: the larger of two losses
 NONE, UNDETERMINED = "none", "undetermined"
 Words = NDArray[np.str_]
 
@@ -125,7 +126,7 @@ def _told_apart(lost: Floats, sds: Floats, order: Ints) -> Bools:
     """Whether the largest loss is larger than the next beyond noise."""
     worst, runner_up = (np.take_along_axis(lost, order[[i]], axis=0)[0] for i in (0, 1))
     sd = [np.nan_to_num(np.take_along_axis(sds, order[[i]], axis=0)[0]) for i in (0, 1)]
-    return np.asarray((runner_up == 0.0) | (worst - runner_up < -Z95 * np.hypot(*sd)))
+    return np.asarray((runner_up == 0.0) | (worst - runner_up < -ORDERED * np.hypot(*sd)))
 
 
 def use_is_worse(snapshots: Snapshots, derived: Derived, ledger: Ledger, settings: Uncertainties = DEFAULT) -> Bools:
