@@ -1,4 +1,4 @@
-"""What was entered stays: the database refuses UPDATE and DELETE, whatever asks for it, and the chain shows tampering."""
+"""What was entered stays: the database refuses UPDATE and DELETE, and the chain shows tampering."""
 
 from datetime import UTC, datetime, timedelta
 

@@ -1,5 +1,7 @@
 """Entries, review marks and the audit trail can only grow: the database itself refuses UPDATE and DELETE."""
 
+from typing import Any
+
 from django.db import migrations
 
 TABLES = ("ward_entry", "ward_reviewmark", "ward_auditevent")
@@ -27,14 +29,14 @@ BEGIN RAISE EXCEPTION '% is append-only', TG_TABLE_NAME USING ERRCODE = 'restric
 """
 
 
-def _run(schema_editor, script):
+def _run(schema_editor: Any, script: list[str]) -> None:
     # One statement at a time: SQLite triggers hold a semicolon inside, so split after END; or ();
     with schema_editor.connection.cursor() as cursor:
         for statement in script:
             cursor.execute(statement)
 
 
-def forwards(apps, schema_editor):
+def forwards(apps: Any, schema_editor: Any) -> None:
     """Add the triggers."""
     vendor = schema_editor.connection.vendor
     if vendor == "postgresql":
@@ -44,7 +46,7 @@ def forwards(apps, schema_editor):
         _run(schema_editor, ["CREATE TRIGGER" + part for part in text.split("CREATE TRIGGER")[1:]])
 
 
-def backwards(apps, schema_editor):
+def backwards(apps: Any, schema_editor: Any) -> None:
     """Take the triggers away."""
     vendor = schema_editor.connection.vendor
     for table in TABLES:
