@@ -259,3 +259,29 @@ def test_the_form_itself_has_no_inline_style_or_script(world):
 
 def test_the_catalogue_drives_the_form():
     assert set(entry_form.names()) == set(MEASURED) - {"age"}
+
+
+def test_a_form_left_open_asks_whether_its_time_is_the_samples(world):
+    early = (timezone.now() - timedelta(minutes=50)).astimezone(world.unit.zone)
+    opened = f"{early:%Y-%m-%d} {early:%H:%M}"
+    slip = world.gas(date=f"{early:%Y-%m-%d}", clock=f"{early:%H:%M}", opened=opened)
+    html = page(world.client.post(world.url("entry_new"), slip))
+    assert "opened 50 min ago" in html or "opened 51 min ago" in html
+    later = (early + timedelta(minutes=3)).astimezone(world.unit.zone)
+    assert world.client.post(world.url("entry_new"), {**slip, "clock": f"{later:%H:%M}"}).status_code == 302
+
+
+def test_a_confirmed_value_is_marked_as_checked(world):
+    slip = world.gas(peep="33")
+    token = [s.notice.token for s in world.client.post(world.url("entry_new"), slip).context["summary"]]
+    world.client.post(world.url("entry_new"), {**slip, "confirm": token})
+    typed = Entry.objects.get().typed
+    assert typed["peep"] == {"text": "33", "unit": "cm[H2O]", "checked": "yes"}
+    assert "checked" not in typed["hb"]
+
+
+def test_the_numbers_without_a_refused_value_say_so(world):
+    record.record(world.stay, world.people["nurse"], record.NewEntry(
+        timezone.now() - timedelta(hours=1), Site.ARTERIAL, {"hb": 9.0, "po2": 80.0}))  # fmt: skip
+    html = page(world.client.post(world.url("entry_live"), world.gas(hb="102")))
+    assert "Without</span> Hb, which cannot be as typed" in html

@@ -9,7 +9,7 @@ from worksheet.oxygen import plausibility
 from worksheet.oxygen.finding_kinds import Severity
 from worksheet.oxygen.quantities import UnitOfMeasure
 from worksheet.oxygen.readings import Device, FlowMethod, Site
-from worksheet.ward.display import Display
+from worksheet.ward.display import Display, age_words
 from worksheet.ward.models import Entry, Stay, User
 
 from .entry_form import NOTE_LONGEST, SAMPLE_ONLY, Level, Notice, Slip, ValueField
@@ -17,6 +17,7 @@ from .finding_places import FROM_WRONG, PLACES, SAID_ALREADY, TELLS
 from .trial import Trial, others, try_out
 
 LONG_AGO = timedelta(hours=12)
+STALE_CLOCK = timedelta(minutes=20)  # a form left open this long still shows the time at which it was opened
 LEVELS = {
     Severity.IMPOSSIBLE: Level.IMPOSSIBLE,
     Severity.UNLIKELY: Level.UNLIKELY,
@@ -141,9 +142,12 @@ def check_time(slip: Slip, stay: Stay, now: datetime) -> None:
     if stay.discharged_at and moment.at > stay.discharged_at:
         words = f"The time is after the end of the stay ({stay.discharged_at.astimezone(zone):%Y-%m-%d %H:%M})."
         _say(slip, Level.UNLIKELY, "clock", "after_discharge", words, about)
+    if slip.opened == f"{slip.date} {slip.clock}" and now - moment.at > STALE_CLOCK:
+        ago = age_words((now - moment.at).total_seconds() / 3600)
+        words = f"The time is still {slip.clock}, when this form was opened {ago} ago. "
+        _say(slip, Level.UNLIKELY, "clock", "clock_of_opening", words + "Is it the time of the sample?", about)
     if now - moment.at > LONG_AGO:
-        ago = round((now - moment.at).total_seconds() / 3600)
-        words = f"The time is {ago} h ago." if ago < 48 else f"The time is {ago // 24} days ago."
+        words = f"The time is {age_words((now - moment.at).total_seconds() / 3600)} ago."
         _say(slip, Level.NOTE, "clock", "long_ago", words)
 
 

@@ -97,10 +97,11 @@ def _open(desk: Desk) -> HttpResponse:
     else:
         units = desk.user.preferences.get("entry_units", {})
         slip = entry_form.blank(desk.display, units, desk.user.get_username(), zone, now)
+        slip.opened = "" if "clock" in desk.request.GET else f"{slip.date} {slip.clock}"
         slip.date, slip.clock = (desk.request.GET.get(k, v) for k, v in (("date", slip.date), ("clock", slip.clock)))
         slip.moment = moments.read(slip.date, slip.clock, slip.fold, zone, now)
     trial = desk.check(slip)
-    return _show(desk, slip, trial, restored=draft)
+    return _show(desk, slip, trial, restored=draft, restored_at=desk.display.stamp(draft.updated_at) if draft else "")
 
 
 def _show(desk: Desk, slip: Slip, trial: Any, *, refused: bool = False, **more: Any) -> HttpResponse:
@@ -169,7 +170,9 @@ def _correct(desk: Desk, slip: Slip) -> HttpResponse:
             entry = record.correct(desk.replacing, desk.user, new, slip.reason)
             drafts.drop(desk.user, desk.stay, desk.form_name)
     except record.AlreadyReplaced as told:
-        return _conflict(desk, slip, told.by)
+        if told.by is None or told.by.key != slip.key:
+            return _conflict(desk, slip, told.by)
+        entry = told.by  # this very form, sent twice at the same moment
     if not same(entry, desk, new):  # the same form, sent from another tab with other values
         return _conflict(desk, slip, entry)
     return _done(desk, entry, "Corrected")

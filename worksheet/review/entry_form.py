@@ -141,6 +141,7 @@ class Slip:
     reason: str = ""
     key: str = ""
     begun_by: str = ""
+    opened: str = ""  # the time that the form filled in by itself
     use_estimate: bool = False
     confirmed: frozenset[str] = frozenset()
     moment: moments.Moment = field(default_factory=moments.Moment)
@@ -173,6 +174,11 @@ class Slip:
         """A code of a list, 0 where the text is none of it (a notice says so)."""
         return int(text) if text.isdigit() and int(text) in {c.value for c in kind} else 0
 
+    def _checked(self, field_: ValueField) -> dict[str, str]:
+        """The mark that somebody was asked about the value and said it is right."""
+        asked = any(n.level is Level.UNLIKELY and n.token in self.confirmed for n in field_.notices)
+        return {"checked": "yes"} if asked else {}
+
     def new_entry(self) -> NewEntry:
         """The slip as an entry to store; only for a slip without blocking notices."""
         if self.moment.at is None:
@@ -181,7 +187,7 @@ class Slip:
             time=self.moment.at,
             site=Site(self.code(Site, self.site)),
             values=self.values,
-            typed={f.name: f.typed() for f in self.fields.values() if f.value is not None},
+            typed={f.name: f.typed() | self._checked(f) for f in self.fields.values() if f.value is not None},
             device=Device(self.code(Device, self.device)),
             flow_method=FlowMethod(self.code(FlowMethod, self.flow_method)),
             sample=self.sample.strip(),
@@ -225,6 +231,7 @@ def from_post(posted: Mapping[str, str], confirmed: list[str], display: Display,
         sample=posted.get("sample", ""),
         reason=posted.get("reason", ""),
         begun_by=posted.get("begun_by", ""),
+        opened=posted.get("opened", ""),
         device=posted.get("device", "0"),
         flow_method=posted.get("flow_method", "0"),
         note=posted.get("note", "").replace("\r\n", "\n"),

@@ -99,7 +99,9 @@ def read(posted: Mapping[str, str], confirmed: list[str], stay: Stay, display: D
 
 def blank(stay: Stay, display: Display, begun_by: str, zone: ZoneInfo, now: datetime) -> EventForm:
     """An empty form with the time of now."""
-    return EventForm(entry_form.blank(display, {}, begun_by, zone, now), beds=beds_of_unit(stay.unit, stay))
+    slip = entry_form.blank(display, {}, begun_by, zone, now)
+    slip.opened = f"{slip.date} {slip.clock}"
+    return EventForm(slip, beds=beds_of_unit(stay.unit, stay))
 
 
 def of_entry(entry: Entry, stay: Stay, display: Display, begun_by: str) -> EventForm:

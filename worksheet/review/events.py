@@ -15,7 +15,7 @@ from django.views.decorators.http import require_http_methods
 
 from worksheet.oxygen.readings import Event
 from worksheet.ward import audit, record
-from worksheet.ward.models import Entry, Stay
+from worksheet.ward.models import Bed, Draft, Entry, Stay
 
 from . import drafts, event_form
 from .entry import Desk, answered, go, refuse_other_person, same
@@ -83,7 +83,7 @@ def _sent_before(desk: Desk, form: EventForm) -> bool:
 def _record(desk: Desk, form: EventForm) -> Entry | None:
     with transaction.atomic():
         stored, is_new = record.record(desk.stay, desk.user, form.new_entry())
-        if is_new and form.kind is Event.BED_MOVE and form.bed and not _move(desk, form):
+        if is_new and form.kind is Event.BED_MOVE and form.bed and not _move(desk, form.bed):
             transaction.set_rollback(True)
             form.say("bed", "bed_taken", f"Bed {form.bed.name} was taken a moment ago.")
             return None
@@ -115,21 +115,22 @@ def _correct(desk: Desk, form: EventForm) -> Entry | None:
         return None
 
 
-def _move(desk: Desk, form: EventForm) -> bool:
+def _move(desk: Desk, bed: Bed) -> bool:
     """Put the stay into the bed, unless somebody lies there by now."""
-    stay = Stay.objects.select_for_update().select_related("bed").get(pk=desk.stay.pk)
-    if Stay.objects.filter(bed=form.bed).present().exclude(pk=stay.pk).exists():
+    stay = Stay.objects.select_for_update().get(pk=desk.stay.pk)
+    Bed.objects.select_for_update().get(pk=bed.pk)  # two moves into one bed queue
+    if Stay.objects.filter(bed=bed).present().exclude(pk=stay.pk).exists():
         return False
-    before, stay.bed = stay.bed, form.bed
+    before, stay.bed = stay.bed, bed
     stay.save(update_fields=["bed"])
     audit.write(
         desk.user.username, "moved", unit=desk.stay.unit.name, subject=stay.reference,
-        before=before.name if before else "", after=form.bed.name if form.bed else "",
+        before=before.name if before else "", after=bed.name,
     )  # fmt: skip
     return True
 
 
-def _show(desk: Desk, form: EventForm, *, refused: bool = False, restored: object = None) -> HttpResponse:
+def _show(desk: Desk, form: EventForm, *, refused: bool = False, restored: Draft | None = None) -> HttpResponse:
     where = [desk.stay.unit.slug, desk.stay.reference]
     correct = reverse("entry_correct", args=[*where, desk.replacing.pk]) if desk.replacing else ""
     parts = form_parts(desk, form.slip, form_name(desk), correct or reverse("event_new", args=where))
@@ -137,6 +138,7 @@ def _show(desk: Desk, form: EventForm, *, refused: bool = False, restored: objec
         "form": form, "kinds": KIND_WORDS.items(), "devices": DEVICE_WORDS.items(),
         "settings": [line for line in parts["lines"] if line.field.name in SETTINGS],
         "refused": refused, "restored": restored,
+        "restored_at": desk.display.stamp(restored.updated_at) if restored else "",
     }  # fmt: skip
     response = render(desk.request, "review/event.html", context)
     return answered(desk.request, response, bool(refused))

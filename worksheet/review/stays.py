@@ -15,7 +15,7 @@ from django.views.decorators.http import require_http_methods
 from worksheet.ward import audit
 from worksheet.ward.access import person, unit_or_404
 from worksheet.ward.display import Display
-from worksheet.ward.models import Role, Stay, Unit
+from worksheet.ward.models import Bed, Role, Stay, Unit
 
 from . import stay_form
 from .entry import answered, go
@@ -47,6 +47,8 @@ def stay_new(request: HttpRequest, slug: str) -> HttpResponse:
 def _take_in(request: HttpRequest, unit: Unit, form: StayForm) -> Stay | None:
     try:
         with transaction.atomic():
+            if form.bed and not _still_free(form, form.bed):
+                return None
             sizes = {name: form.fields[name].value for name in SIZES}
             stay = Stay.objects.create(
                 unit=unit, patient=stay_form.patient_of(form), bed=form.bed, reference=form.reference,
@@ -57,6 +59,15 @@ def _take_in(request: HttpRequest, unit: Unit, form: StayForm) -> Stay | None:
         form.say("reference", "reference_used", f"Somebody took in a patient as {form.reference} a moment ago.")
         return None
     return stay
+
+
+def _still_free(form: StayForm, bed: Bed) -> bool:
+    """Whether the bed is free now that it is held for this transaction."""
+    Bed.objects.select_for_update().get(pk=bed.pk)
+    if Stay.objects.filter(bed=bed).present().exists():
+        form.say("bed", "bed_taken", "The bed was taken a moment ago.")
+        return False
+    return True
 
 
 @require_http_methods(["GET", "HEAD", "POST"])
