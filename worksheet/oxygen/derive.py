@@ -93,14 +93,16 @@ def oxygen_chain(
 class _Chain:
     """The chain of one block of rows; each link is made once, when first asked for."""
 
-    def __init__(self, raw: Raw, constants: Constants) -> None:
+    def __init__(self, raw: Raw, constants: Constants, made: Raw | None = None) -> None:
         self.raw = raw
         self.constants = constants
-        self._made: dict[str, Floats] = {}
+        self._made: dict[str, Floats] = dict(made or {})
         self._links: dict[str, Callable[[], Floats]] = {
             "bsa": lambda: delivery.body_surface(raw["height"], raw["weight"], constants),
             "co": lambda: _either(raw["cardiac_output"], raw["cardiac_index"] * self.column("bsa")),
             "ci": lambda: _either(raw["cardiac_index"], raw["cardiac_output"] / self.column("bsa")),
+            "cohb_or_0": lambda: _or_zero(raw["cohb"]),
+            "methb_or_0": lambda: _or_zero(raw["methb"]),
             "so2_curve": self._so2_curve,
             "cao2": lambda: _content(raw["hb"], self.arterial.o2hb, raw["po2"], constants),
             "cvo2": self._cvo2,
@@ -148,9 +150,17 @@ class _Chain:
 
     def _so2_curve(self) -> Floats:
         raw = self.raw
-        return _curve(raw["po2"], raw["ph"], raw["pco2"], raw["cohb"], raw["methb"], self.constants)
+        share = self.column("cohb_or_0"), self.column("methb_or_0")
+        return curve.saturation(raw["po2"], raw["ph"], raw["pco2"], 37.0, *share, self.constants)
+
+    @property
+    def paired(self) -> bool:
+        """Whether any row has a venous sample that content can follow from."""
+        return any(not np.all(np.isnan(self.raw[f"venous_{name}"])) for name in ("so2", "o2hb", "po2"))
 
     def _cvo2(self) -> Floats:
+        if not self.paired:
+            return np.full(len(self.raw["hb"]), np.nan)
         return _content(self.venous_or_arterial("hb"), self.venous.o2hb, self.raw["venous_po2"], self.constants)
 
     def _alveolar(self) -> Floats:
@@ -159,9 +169,11 @@ class _Chain:
 
     def _shunt(self) -> Floats:
         raw = self.raw
+        if np.all(np.isnan(self.column("cvo2"))):
+            return self.column("cvo2")
         end = exchange.end_capillary_content(
             raw["hb"], self.arterial.inactive, self.column("pao2_alveolar"), raw["ph"], raw["pco2"],
-            np.nan_to_num(raw["cohb"]), np.nan_to_num(raw["methb"]), self.constants,
+            self.column("cohb_or_0"), self.column("methb_or_0"), self.constants,
         )  # fmt: skip
         return exchange.shunt_fraction(end, self.column("cao2"), self.column("cvo2"))
 
@@ -170,14 +182,18 @@ def _either(first: Floats, second: Floats) -> Floats:
     return np.where(np.isnan(first), second, first)
 
 
+def _or_zero(value: Floats) -> Floats:
+    return np.where(np.isnan(value), 0.0, value)
+
+
 def _curve(po2: Floats, ph: Floats, pco2: Floats, cohb: Floats, methb: Floats, constants: Constants) -> Floats:
     """The curve at 37 °C, with the shifts of the dyshaemoglobins that are known."""
-    return curve.saturation(po2, ph, pco2, 37.0, np.nan_to_num(cohb), np.nan_to_num(methb), constants)
+    return curve.saturation(po2, ph, pco2, 37.0, _or_zero(cohb), _or_zero(methb), constants)
 
 
 def _content(hb: Floats, o2hb: Floats, po2: Floats, constants: Constants) -> Floats:
     """Oxygen content; without a PO2 the dissolved part is not counted (flagged by the caller)."""
-    return content.oxygen_content(hb, o2hb, np.nan_to_num(po2), constants)
+    return content.oxygen_content(hb, o2hb, _or_zero(po2), constants)
 
 
 def derive(snapshots: Snapshots, constants: Constants = DEFAULT) -> Derived:
@@ -196,16 +212,20 @@ def derive(snapshots: Snapshots, constants: Constants = DEFAULT) -> Derived:
         Row i belongs to snapshot i [canonical units]; NaN where something needed is missing.
     """
     n = len(snapshots)
-    values = {name: np.full(n, np.nan) for name in DERIVED}
-    saturation, inactive, flags = np.full(n, np.nan), np.full(n, np.nan), np.zeros(n, dtype=np.int64)
-    table = Derived(MappingProxyType(values), saturation, inactive, flags)
+    values = {name: np.empty(n) for name in DERIVED}
+    table = Derived(MappingProxyType(values), np.empty(n), np.empty(n), np.empty(n, dtype=np.int64))
     for first in range(0, n, _BLOCK):
-        block = np.arange(first, min(first + _BLOCK, n))
+        block = slice(first, min(first + _BLOCK, n))
         site = snapshots.readings.site[block]
-        _everywhere(snapshots, constants, slice(first, first + _BLOCK), table)
+        if not np.all(site == Site.ARTERIAL):
+            for column in (*values.values(), table.saturation, table.inactive):
+                column[block] = np.nan
+        _everywhere(snapshots, constants, block, table)
         for chosen, fill in ((site == Site.ARTERIAL, _arterial), (site > Site.ARTERIAL, _venous)):
-            if np.any(chosen):
-                fill(snapshots, constants, block[chosen], table)
+            if np.all(chosen):
+                fill(snapshots, constants, block, table)
+            elif np.any(chosen):
+                fill(snapshots, constants, first + np.flatnonzero(chosen), table)
     return table
 
 
@@ -217,12 +237,12 @@ def _everywhere(snapshots: Snapshots, constants: Constants, rows: slice, table: 
     table["rox_index"][rows] = exchange.rox_index(spo2, fio2, snapshots["respiratory_rate"][rows])
     high = ~np.isnan(fio2) & (spo2 > exchange.SPO2_LIMIT + 1e-9)
     estimated = np.isin(snapshots.device[rows], LOW_FLOW) & ~np.isnan(fio2)
-    table.flags[rows] |= _bits(high, Flag.SPO2_ABOVE_97) | _bits(estimated, Flag.FIO2_ESTIMATED)
+    table.flags[rows] = _bits(high, Flag.SPO2_ABOVE_97) | _bits(estimated, Flag.FIO2_ESTIMATED)
 
 
 @np.errstate(all="ignore")
-def _arterial(snapshots: Snapshots, constants: Constants, rows: Ints, table: Derived) -> None:
-    chain = _Chain(chain_inputs(snapshots, constants, rows), constants)
+def _arterial(snapshots: Snapshots, constants: Constants, rows: Rows, table: Derived) -> None:
+    chain = _Chain(chain_inputs(snapshots, constants, rows), constants, {"bsa": table["bsa"][rows]})
     own = {name: snapshots[name][rows] for name in ("so2_calculated", "mean_airway_pressure", "temperature")}
     columns = _supply(chain, snapshots["vo2_measured"][rows]) | _lung(chain, own) | _function(chain, own)
     for name, column in columns.items():
@@ -264,7 +284,7 @@ def _function(chain: _Chain, own: Raw) -> dict[str, Floats]:
     warmth = np.where(np.isnan(own["temperature"]), 37.0, own["temperature"])
     extractable = content.extractable_oxygen(
         raw["hb"], chosen.inactive, chosen.saturation, raw["po2"], raw["ph"], raw["pco2"], warmth,
-        np.nan_to_num(raw["cohb"]), np.nan_to_num(raw["methb"]), chain.constants,
+        chain.column("cohb_or_0"), chain.column("methb_or_0"), chain.constants,
     )  # fmt: skip
     return {
         "so2_from_po2": by_curve,
@@ -292,7 +312,9 @@ def measured_saturation(so2: Floats, o2hb: Floats, cohb: Floats, methb: Floats, 
     ndarray
         Functional saturation [0-1]; NaN where it was not measured, whatever a curve may say.
     """
-    active = 1.0 - np.maximum(cohb, 0.0) - np.maximum(methb, 0.0) - np.maximum(np.nan_to_num(sulfhb), 0.0)
+    if np.all(np.isnan(o2hb)):
+        return so2
+    active = 1.0 - np.maximum(cohb, 0.0) - np.maximum(methb, 0.0) - np.maximum(_or_zero(sulfhb), 0.0)
     ratio = o2hb / active
     return _either(so2, np.where((active > 0.0) & (ratio <= 1.005), np.minimum(ratio, 1.0), np.nan))
 
@@ -300,12 +322,16 @@ def measured_saturation(so2: Floats, o2hb: Floats, cohb: Floats, methb: Floats, 
 def _p50(chain: _Chain, measured: Floats) -> Floats:
     """P50 of the venous pair, which says more, else of the arterial one."""
     raw = chain.raw
+    if not chain.paired:
+        return curve.p50_in_vivo(raw["po2"], measured)
     dys = (chain.venous_or_arterial(name) for name in ("cohb", "methb", "sulfhb"))
-    venous = measured_saturation(raw["venous_so2"], raw["venous_o2hb"], *dys)
-    return _either(curve.p50_in_vivo(raw["venous_po2"], venous), curve.p50_in_vivo(raw["po2"], measured))
+    venous = curve.p50_in_vivo(raw["venous_po2"], measured_saturation(raw["venous_so2"], raw["venous_o2hb"], *dys))
+    rest = np.isnan(venous)
+    venous[rest] = curve.p50_in_vivo(raw["po2"][rest], measured[rest])
+    return venous
 
 
-def _arterial_flags(snapshots: Snapshots, chain: _Chain, columns: Raw, rows: Ints) -> Ints:
+def _arterial_flags(snapshots: Snapshots, chain: _Chain, columns: Raw, rows: Rows) -> Ints:
     raw, there = chain.raw, ~np.isnan(columns["cao2"])
     venous = ~np.isnan(columns["cvo2"])
     known = (chain.arterial.flags & Flag.DYSHAEMOGLOBINS_ASSUMED) == 0
@@ -331,7 +357,7 @@ def _arterial_flags(snapshots: Snapshots, chain: _Chain, columns: Raw, rows: Int
 
 
 @np.errstate(all="ignore")
-def _venous(snapshots: Snapshots, constants: Constants, rows: Ints, table: Derived) -> None:
+def _venous(snapshots: Snapshots, constants: Constants, rows: Rows, table: Derived) -> None:
     """A venous row by itself: its curve and P50; its content where it is mixed or central venous blood."""
     own = {name: snapshots.readings[name][rows] for name in VENOUS}
     chain = _Chain(
@@ -356,18 +382,19 @@ def _venous(snapshots: Snapshots, constants: Constants, rows: Ints, table: Deriv
     )
 
 
-def _carried(snapshots: Snapshots, name: str, rows: Ints) -> Bools:
+def _carried(snapshots: Snapshots, name: str, rows: Rows) -> Bools:
     source = snapshots.source[name][rows]
-    return np.asarray((source >= 0) & (source != rows))
+    own = np.arange(rows.start, rows.stop) if isinstance(rows, slice) else rows
+    return np.asarray((source >= 0) & (source != own))
 
 
-def _carried_flow(snapshots: Snapshots, rows: Ints) -> Bools:
+def _carried_flow(snapshots: Snapshots, rows: Rows) -> Bools:
     return _carried(snapshots, "cardiac_output", rows) | _carried(snapshots, "cardiac_index", rows)
 
 
-def _carried_dys(snapshots: Snapshots, rows: Ints) -> Bools:
+def _carried_dys(snapshots: Snapshots, rows: Rows) -> Bools:
     return _carried(snapshots, "cohb", rows) | _carried(snapshots, "methb", rows)
 
 
 def _bits(where: Bools, flag: Flag) -> Ints:
-    return np.where(where, np.int64(flag), np.int64(0))
+    return where * np.int64(flag)
