@@ -49,23 +49,22 @@ def _emptying_between_tests():
 
     Only the tests' own emptying is patched; the program has no such way.
     """
-    from django.db.backends.postgresql.operations import DatabaseOperations as Postgres
-    from django.db.backends.sqlite3.operations import DatabaseOperations as Sqlite
+    from django.db import connection
 
     triggers = importlib.import_module("worksheet.ward.migrations.0002_append_only")
     patch = pytest.MonkeyPatch()
-    for operations in (Sqlite, Postgres):
-        original = operations.execute_sql_flush
+    operations = type(connection.ops)
+    original = operations.execute_sql_flush
 
-        def emptied(self, statements, original=original):
-            if not statements:
-                return
-            with self.connection.schema_editor() as editor:
-                triggers.backwards(None, editor)
-            original(self, statements)
-            with self.connection.schema_editor() as editor:
-                triggers.forwards(None, editor)
+    def emptied(self, statements):
+        if not statements:
+            return
+        with self.connection.schema_editor() as editor:
+            triggers.backwards(None, editor)
+        original(self, statements)
+        with self.connection.schema_editor() as editor:
+            triggers.forwards(None, editor)
 
-        patch.setattr(operations, "execute_sql_flush", emptied)
+    patch.setattr(operations, "execute_sql_flush", emptied)
     yield
     patch.undo()
