@@ -4,6 +4,7 @@ from datetime import timedelta
 
 import pytest
 from django.core.management import CommandError, call_command
+from django.db import connection
 
 from tests.report import world
 from worksheet.oxygen.readings import Site
@@ -52,7 +53,7 @@ def test_span(stay, tmp_path, capsys):
     ],
 )
 def test_bad_input_is_told_in_words(stay, tmp_path, arguments, words):
-    with pytest.raises(CommandError, match="") as told:
+    with pytest.raises(CommandError) as told:
         call_command("timeline_pdf", *arguments, "--output", str(tmp_path / "t.pdf"))
     assert words in str(told.value)
     assert not list(tmp_path.iterdir())
@@ -84,14 +85,21 @@ def test_entries_recorded_later_are_counted_not_held_against_it(stay, printed, c
 
 
 def test_changed_data_are_noticed(stay, printed):
-    entry = Entry.objects.filter(stay=stay).first()
-    tampered = Entry.objects.filter(pk=entry.pk)
-    try:
-        tampered.update(hb=12.0)
-    except Exception:
-        pytest.skip("the database refuses to change an entry: there is nothing to notice")
+    without_guard("ward_entry")
+    Entry.objects.filter(stay=stay, po2=96.0).update(hb=12.0)
     with pytest.raises(CommandError, match="are not those this document was made from"):
         call_command("verify_pdf", str(printed))
+
+
+def without_guard(table: str) -> None:
+    """Take the triggers off that refuse a change: somebody with the keys of the database would."""
+    with connection.cursor() as cursor:
+        if connection.vendor == "postgresql":
+            cursor.execute(f"ALTER TABLE {table} DISABLE TRIGGER USER")
+            return
+        cursor.execute("SELECT name FROM sqlite_master WHERE type = 'trigger' AND tbl_name = %s", [table])
+        for (name,) in cursor.fetchall():
+            cursor.execute(f"DROP TRIGGER {name}")
 
 
 def test_changed_constants_are_noticed(stay, printed):

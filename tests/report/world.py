@@ -19,7 +19,7 @@ def make_stay(reference: str = "T-100", **unit_options) -> Stay:
         slug="north", defaults={"name": "Unit North", "time_zone": "Europe/Zurich", **unit_options}
     )
     patient = Patient.objects.create(system="test", identifier=f"P-{reference}")
-    bed = Bed.objects.create(unit=unit, name=f"N{reference[-1]}", position=1)
+    bed = Bed.objects.create(unit=unit, name=f"N{reference[2:]}", position=1)
     return Stay.objects.create(
         unit=unit, patient=patient, bed=bed, reference=reference, admitted_at=START - timedelta(hours=2),
         height=176.0, weight=79.0, age=91.0,

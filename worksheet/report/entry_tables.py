@@ -6,6 +6,7 @@ from collections.abc import Iterator, Sequence
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from worksheet.oxygen.quantities import CATALOGUE, DERIVED, MEASURED
 from worksheet.oxygen.readings import Event, Flag, Floats, Ints, Site
@@ -101,7 +102,7 @@ def _column(order: Order, name: str) -> list[Cell]:
     own = snap.source[name][rows] == rows
     shown = own | snap.arterial[rows]
     values: Floats = np.where(shown, snap[name][rows], np.nan)
-    return [_cell(order, name, v, "" if mine else "carried") for v, mine in zip(values, own, strict=True)]
+    return _cells(order, name, values, np.where(own, "", "carried"))
 
 
 def _derived_column(order: Order, name: str) -> list[Cell]:
@@ -112,12 +113,16 @@ def _derived_column(order: Order, name: str) -> list[Cell]:
     assumed = (flags & (Flag.DYSHAEMOGLOBINS_ASSUMED | Flag.SATURATION_CALCULATED | Flag.SATURATION_FROM_FINGER)) != 0
     kinds = np.where(carried, "carried", np.where(assumed & content, "assumed", ""))
     values = order.sheet.derived[name][rows]
-    return [_cell(order, name, v, str(kind)) for v, kind in zip(values, kinds, strict=True)]
+    return _cells(order, name, values, kinds)
 
 
-def _cell(order: Order, name: str, value: float, kind: str) -> Cell:
-    text = order.display.value(name, float(value))
-    return [text, kind] if kind and text != MISSING else text
+def _cells(order: Order, name: str, values: Floats, kinds: NDArray[np.str_]) -> list[Cell]:
+    """A column of texts, with its mark where a value has one."""
+    display = order.display
+    decimals = display.decimals(name)
+    shown = display.unit(name).from_canonical(values)
+    texts = [display.number(value, decimals) for value in shown.tolist()]
+    return [[t, kind] if kind and t != MISSING else t for t, kind in zip(texts, kinds.tolist(), strict=True)]
 
 
 def _marks(order: Order, row: int, notes: dict[int, int]) -> str:

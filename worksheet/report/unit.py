@@ -7,17 +7,18 @@ from datetime import datetime
 from typing import Any
 
 from worksheet.charts.bar import LedgerBar
-from worksheet.charts.steps import colour
+from worksheet.charts.steps import STEP, colour
 from worksheet.review.beds import BedRow
 from worksheet.review.unit import rows_of
 from worksheet.review.window import Window
 from worksheet.ward import audit
-from worksheet.ward.display import Display
+from worksheet.ward.display import MISSING, Display
 from worksheet.ward.models import Unit
 
 from . import methods
 from .printing import pdf_of
 
+_MOST_FULL = 20  # beds whose findings are told; above it one line a bed
 _MOST_FINDINGS = 2  # of a bed; the page says how many more there are
 _HEAD = ("Bed", "Newest gas", "Supply now ± 95 %", "Change", "Steps (share of the start)", "O2ER, lactate",
          "Missing, findings")  # fmt: skip
@@ -50,7 +51,7 @@ def unit_review(unit: Unit, window: Window, display: Display, printed_by: str) -
         "counts": _counts(rows),
         "head": list(_HEAD),
         "widths": list(_WIDTHS),
-        "rows": [_row(row, display) for row in rows],
+        "rows": [_brief_row(row, display) if len(rows) > _MOST_FULL else _row(row, display) for row in rows],
         "empty": "No patient is in this unit.",
     }
 
@@ -62,15 +63,32 @@ def _counts(rows: list[BedRow]) -> str:
 
 
 def _row(row: BedRow, display: Display) -> list[Any]:
-    bed = row.stay.bed.name if row.stay.bed else "–"
+    bed = row.stay.bed.name if row.stay.bed else MISSING
     return [
         [f"{bed} · {row.stay.reference}", "strong"],
         _gas(row, display),
         f"{row.now_text}\n± {row.now_half}" if row.now_half else row.now_text,
         f"{row.change_text}\n{row.change_words}" if row.change_text else row.change_words,
         _bar(row.bar, f"{_step_words(row.step)} {row.bar_words}"),
-        f"O2ER {row.o2er_text} %\nlactate {row.lactate_text}",
-        "\n".join(_told(row)) or "–",
+        f"O2ER {row.o2er_text}{'' if row.o2er_text == MISSING else ' %'}\nlactate {row.lactate_text}",
+        "\n".join(_told(row)) or MISSING,
+    ]
+
+
+def _brief_row(row: BedRow, display: Display) -> list[Any]:
+    """One line a bed, for a large unit: the patients' pages hold the sentences."""
+    bed, gas, *_ = _row(row, display)
+    findings = f"{len(row.findings)} findings" if row.findings else ""
+    missing = f"missing {', '.join(row.missing)}" if row.missing else ""
+    extraction = "" if row.o2er_text == MISSING else f"O2ER {row.o2er_text}\u00a0%, "
+    return [
+        bed,
+        gas.replace("\n", ", "),
+        f"{row.now_text} ± {row.now_half}" if row.now_half else row.now_text,
+        f"{row.change_text}{', beyond noise' if row.beyond_noise else ''}" if row.change_text else row.change_words,
+        _bar(row.bar, row.step if row.step in STEP else ""),
+        f"{extraction}lactate {row.lactate_text}",
+        "; ".join(filter(None, (missing, findings))) or MISSING,
     ]
 
 
@@ -91,7 +109,7 @@ def _bar(bar: LedgerBar, words: str) -> dict[str, Any]:
         {"x": p.x, "width": p.width, "colour": colour(p.step.style.role), "hatch": p.step.style.hatch}
         for p in bar.pieces
     ]
-    return {"width": bar.width, "zero": bar.zero, "pieces": pieces, "words": words.strip()}
+    return {"width": bar.width, "zero": bar.zero, "pieces": pieces, "words": words.strip().replace(" %", "\u00a0%")}
 
 
 def _told(row: BedRow) -> list[str]:
