@@ -10,8 +10,8 @@ import numpy as np
 
 from worksheet.charts.bar import LedgerBar, ledger_bar
 from worksheet.oxygen.change import Z95
-from worksheet.oxygen.judgement import STEPS, Review
-from worksheet.oxygen.ledger import Level
+from worksheet.oxygen.judgement import Review
+from worksheet.oxygen.ledger_table import STEPS, Level
 from worksheet.oxygen.next_measurement import NextMeasurement, next_measurement
 from worksheet.oxygen.plausibility import Finding
 from worksheet.oxygen.readings import Flag, Ints

@@ -63,10 +63,6 @@ def constants_in_force(constants: Constants, display: Display) -> Iterator[InFor
 def carry_in_force(carry: CarryLimits) -> Iterator[InForce]:
     """How long each value may stand in for one that was not measured."""
     for item in fields(carry):
-        value = getattr(carry, item.name)
-        told = (
-            "common practice"
-            if value == item.default
-            else f"chosen by the unit (usual: {age_words(float(item.default))})"
-        )  # type: ignore[arg-type]
+        value, usual = float(getattr(carry, item.name)), float(getattr(CarryLimits(), item.name))
+        told = "common practice" if value == usual else f"chosen by the unit (usual: {age_words(usual)})"
         yield InForce(CARRIES[item.name], age_words(value), told)

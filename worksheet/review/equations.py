@@ -1,7 +1,7 @@
 """Each derived quantity as an equation that people can check: in symbols, and with the numbers of one row put in.
 
-The numbers are those of :mod:`worksheet.oxygen.derive`; ``right`` works an equation out again from its terms, and a test
-holds the two to each other.
+The numbers are those of :mod:`worksheet.oxygen.derive`; ``right`` works an equation out again from its terms, and a
+test holds the two to each other.
 """
 
 from __future__ import annotations
@@ -49,6 +49,7 @@ def _content(t: Terms, hb: str, share: str, po2: str) -> float:
     return t["k"] * t[hb] * (1 - t["inactive"]) * t[share] + t["alpha"] * t[po2]
 
 
+_FICK = "By Fick; a measured VO2 stands in where it cannot be had."
 EQUATIONS: Mapping[str, Equation] = {
     "cao2": Equation(
         "CaO2 = k · Hb · (1 − d) · S + α · PaO2", "{k} × {hb} × (1 − {inactive}) × {saturation} + {alpha} × {po2}",
@@ -68,14 +69,15 @@ EQUATIONS: Mapping[str, Equation] = {
     "do2i": Equation("DO2I = 10 · CI · CaO2", "10 × {index} × {cao2}", ("index", "cao2"),
                      lambda t: 10 * t["index"] * t["cao2"], "10 turns dL into L."),
     "vo2": Equation("VO2 = 10 · CO · (CaO2 − CvO2)", "10 × {output} × ({cao2} − {cvo2})", ("output", "cao2", "cvo2"),
-                    lambda t: 10 * t["output"] * (t["cao2"] - t["cvo2"]), "By Fick; a measured VO2 stands in where it cannot be had."),
+                    lambda t: 10 * t["output"] * (t["cao2"] - t["cvo2"]), _FICK),
     "vo2i": Equation("VO2I = 10 · CI · (CaO2 − CvO2)", "10 × {index} × ({cao2} − {cvo2})", ("index", "cao2", "cvo2"),
-                     lambda t: 10 * t["index"] * (t["cao2"] - t["cvo2"]), "By Fick; a measured VO2 stands in where it cannot be had."),
+                     lambda t: 10 * t["index"] * (t["cao2"] - t["cvo2"]), _FICK),
     "o2er": Equation("O2ER = (CaO2 − CvO2) / CaO2", "({cao2} − {cvo2}) / {cao2}", ("cao2", "cvo2"),
                      lambda t: (t["cao2"] - t["cvo2"]) / t["cao2"]),
     "pf_ratio": Equation("P/F = PaO2 / FiO2", "{po2} / {fio2}", ("po2", "fio2"), lambda t: t["po2"] / t["fio2"]),
     "sf_ratio": Equation("S/F = SpO2 (%) / FiO2", "100 × {spo2} / {fio2}", ("spo2", "fio2"),
-                         lambda t: 100 * t["spo2"] / t["fio2"], "Reported up to an SpO2 of 97 % only: above, the curve is flat."),
+                         lambda t: 100 * t["spo2"] / t["fio2"],
+                         "Reported up to an SpO2 of 97 % only: above, the curve is flat."),
     "pao2_alveolar": Equation(
         "PAO2 = FiO2 · (PB − PH2O) − PaCO2 · (FiO2 + (1 − FiO2) / R)",
         "{fio2} × ({pb} − {ph2o}) − {pco2} × ({fio2} + (1 − {fio2}) / {r})", ("fio2", "pb", "ph2o", "pco2", "r"),
@@ -101,15 +103,18 @@ EQUATIONS: Mapping[str, Equation] = {
     "so2_from_po2": Equation(
         "ln(S / (1 − S)) = 1.8747 + x + (3.5 + a) · tanh(0.5343 · x), x = ln(PaO2 / 52.5) − a", "",
         ("po2", "ph", "pco2", "cohb", "methb"), None,
-        "a = −0.88 · (pH − 7.40) + 0.048 · ln(PaCO2 / 40) − 0.7 · MetHb is the shift of the curve; COHb enters by Haldane's law.",
+        "a = −0.88 · (pH − 7.40) + 0.048 · ln(PaCO2 / 40) − 0.7 · MetHb is the shift of the curve; COHb enters by "
+        "Haldane's law.",
     ),
     "gap_calculated": Equation("gap = calculated saturation − SpO2", "{calculated} − {spo2}", ("calculated", "spo2"),
                                lambda t: t["calculated"] - t["spo2"],
                                "The analyser's own calculated saturation, else the curve's."),
     "gap_measured": Equation("gap = measured saturation − SpO2", "{measured} − {spo2}", ("measured", "spo2"),
                              lambda t: t["measured"] - t["spo2"]),
-    "p50": Equation("S(P50) = 0.5 on the curve that goes through the measured PaO2 and sO2", "", ("po2", "measured"), None,
-                    "The displacement of the curve is solved from the measured pair; only for sO2 of 30 to 97 %."),
+    "p50": Equation(
+        "S(P50) = 0.5 on the curve that goes through the measured PaO2 and sO2", "", ("po2", "measured"), None,
+        "The displacement of the curve is solved from the measured pair; only for sO2 of 30 to 97 %.",
+    ),
     "extractable_o2": Equation(
         "extractable O2 = CaO2 − content of the same blood at PcO2 and body temperature", "",
         ("cao2", "end_capillary", "ph", "pco2", "temperature", "inactive"), None,
@@ -129,7 +134,8 @@ DUBOIS = Equation("BSA = 0.007184 · weight^0.425 · height^0.725", "0.007184 ×
                   ("height", "weight"), lambda t: 0.007184 * t["weight"] ** 0.425 * t["height"] ** 0.725)  # fmt: skip
 CURVE_SEVERINGHAUS = Equation(
     "S = 1 / (23400 / (P³ + 150 · P) + 1), P = PaO2 moved by the shifts of pH and PCO2", "",
-    ("po2", "ph", "pco2", "cohb", "methb"), None, "Severinghaus 1979 with the shifts of Kelman 1966, as this site chose.",
+    ("po2", "ph", "pco2", "cohb", "methb"), None,
+    "Severinghaus 1979 with the shifts of Kelman 1966, as this site chose.",
 )  # fmt: skip
 
 

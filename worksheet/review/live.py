@@ -20,7 +20,8 @@ def mark_of(unit: Unit, user: User, stays: Sequence[Stay], window: Window, *more
     """
     newest = Entry.objects.aggregate(newest=Max("pk"))["newest"]
     parts = [
-        newest, f"{window.now:%Y%m%d%H%M}", window.kind, window.since.timestamp() if window.kind == "free" else "", *more,
+        newest, f"{window.now:%Y%m%d%H%M}", window.kind, *more,
+        (window.since, window.until) if window.kind == "free" else "",
         unit.pk, unit.name, unit.constants, unit.carry, unit.uncertainties, unit.units, unit.decimal_comma,
         unit.time_zone, unit.shift_starts, user.pk, user.preferences,
         *((s.pk, s.bed_id, s.reference, s.height, s.weight, s.age, getattr(s, "reviewed_at", None)) for s in stays),

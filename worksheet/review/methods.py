@@ -36,8 +36,9 @@ PARTS = (
     ("Gas exchange", "exchange"), ("Bands of P/F and S/F", "bands"), ("Acid and base", "acidbase"),
     ("Altitude", "altitude"), ("Pairing and carrying forward", "align"), ("Measurement uncertainty", "measurement"),
     ("Propagation of uncertainty", "uncertainty"), ("Change ledger", "ledger"), ("Ledger: the split", "shapley"),
-    ("Real change", "change"), ("Lactate and trends", "trend"), ("Slopes", "slopes"), ("Which step failed", "judgement"),
-    ("What to measure next", "next_measurement"), ("Levers", "levers"), ("Findings", "plausibility"),
+    ("Real change", "change"), ("Lactate and trends", "trend"), ("Slopes", "slopes"),
+    ("Which step failed", "judgement"), ("What to measure next", "next_measurement"), ("Levers", "levers"),
+    ("Findings", "plausibility"),
 )  # fmt: skip
 
 

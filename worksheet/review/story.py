@@ -9,16 +9,19 @@ from functools import cached_property
 
 import numpy as np
 
-from worksheet.oxygen import ledger, levers, verdict
 from worksheet.oxygen.change import Z95
-from worksheet.oxygen.judgement import STEPS
-from worksheet.oxygen.ledger import Level
+from worksheet.oxygen.ledger import window as window_ledger
+from worksheet.oxygen.ledger_table import Ledger
+from worksheet.oxygen.levers import Levers
+from worksheet.oxygen.levers import levers as made_levers
 from worksheet.oxygen.next_measurement import NextMeasurement, next_measurement
 from worksheet.oxygen.quantities import CATALOGUE
 from worksheet.oxygen.readings import Ints
+from worksheet.oxygen.verdict import Evidence, Verdict
+from worksheet.oxygen.verdict import verdict as made_verdict
 
 from . import words
-from .beds import QUANTITY, BedRow
+from .beds import BedRow
 from .saturations import Reconciled, reconcile
 
 NUMBERS = ("do2i", "do2", "cao2", "o2er", "vo2i", "pf_ratio", "aa_gradient", "shunt_fraction", "oxygenation_index",
@@ -68,12 +71,12 @@ class Story:
     row: BedRow
 
     @cached_property
-    def verdict(self) -> verdict.Verdict | None:
+    def verdict(self) -> Verdict | None:
         """The verdict of the window; None without an entry."""
         row, sheet = self.row, self.row.sheet
         if row.place < 0:
             return None
-        return verdict.verdict(
+        return made_verdict(
             sheet.snapshots, sheet.derived, row.review, row.stay.pk, sheet.constants, sheet.settings, row.display
         )
 
@@ -100,10 +103,10 @@ class Story:
         return self.row.display.heading(self.row.quantity)
 
     @cached_property
-    def _unloading(self) -> ledger.Ledger | None:
+    def _unloading(self) -> Ledger | None:
         sheet, found, at = self.row.sheet, self.row.review.ledger, self.row.place
         ends = found.start_row[[at]], found.end_row[[at]]
-        made = ledger.window(sheet.snapshots, sheet.derived, *ends, sheet.constants, sheet.settings, unloading=True)
+        made = window_ledger(sheet.snapshots, sheet.derived, *ends, sheet.constants, sheet.settings, unloading=True)
         return made if made.level[0] == found.level[at] and np.isfinite(made.total[0]) else None
 
     @property
@@ -116,7 +119,7 @@ class Story:
             return ""
         return self.row.display.value(self.row.quantity, float(getattr(self._unloading, name)[0]), signed=True)
 
-    def _step_line(self, item: verdict.Evidence) -> LedgerLine:
+    def _step_line(self, item: Evidence) -> LedgerLine:
         row, found, at = self.row, self.row.review.ledger, self.row.place
         known = math.isfinite(item.share)
         share = float(found.step(item.step)[at]) / float(found.start_supply[at])
@@ -136,13 +139,13 @@ class Story:
         return LedgerLine("total", row.change_number, row.change_percent, judged, ends, self._unloaded("total"))
 
     @cached_property
-    def levers(self) -> levers.Levers | None:
+    def levers(self) -> Levers | None:
         """What each step alone would have to be to bring supply back."""
         row, sheet = self.row, self.row.sheet
         if row.last < 0:
             return None
         start = int(row.review.ledger.start_row[row.place]) if row.level else None
-        return levers.levers(
+        return made_levers(
             sheet.snapshots, sheet.derived, row.last, sheet.constants, start_row=start, speech=row.display
         )
 
@@ -162,7 +165,8 @@ class Story:
         if found is None:
             return ""
         now = display.value(found.name, found.now)
-        return f"{CATALOGUE[found.name].symbol} {display.value(found.name, found.target, with_unit=True)}, {found.why}; now {now}"
+        target = display.value(found.name, found.target, with_unit=True)
+        return f"{CATALOGUE[found.name].symbol} {target}, {found.why}; now {now}"
 
     @property
     def lever_unit(self) -> str:
@@ -216,7 +220,7 @@ class Story:
         return row.rows[sheet.readings.time[row.rows] >= start]
 
 
-def _judged(item: verdict.Evidence) -> str:
+def _judged(item: Evidence) -> str:
     if not math.isfinite(item.share):
         return "not measured at both ends"
     if item.real:
@@ -224,6 +228,3 @@ def _judged(item: verdict.Evidence) -> str:
     if item.share > Z95 * item.sd_share > 0:
         return "gain beyond noise"
     return "within noise"
-
-
-__all__ = ["QUANTITY", "STEPS", "Level", "Story"]

@@ -9,7 +9,7 @@ from django.http import HttpRequest, HttpResponse, HttpResponseNotModified
 from django.shortcuts import render
 from django.utils.cache import patch_vary_headers
 
-from worksheet.oxygen.judgement import STEPS
+from worksheet.oxygen.ledger_table import STEPS
 from worksheet.ward.access import person, unit_or_404
 from worksheet.ward.display import Display
 from worksheet.ward.models import Stay, Unit
@@ -42,7 +42,8 @@ def _context(unit: Unit, window: Window, rows: list[BedRow], step: str, mark: st
     taken = {row.stay.bed_id for row in rows}
     step = step if step in STEPS else ""
     return {
-        "unit": unit, "here": "unit", "window": window, "hours": HOURS, "mark": mark, "stale_hours": f"{STALE_HOURS:.0f}",
+        "unit": unit, "here": "unit", "window": window, "hours": HOURS, "mark": mark,
+        "stale_hours": f"{STALE_HOURS:.0f}",
         "step": step, "steps": STEPS, "keep_step": f"&step={step}" if step else "",
         "rows": [row for row in rows if not step or row.step == step],
         "supply_unit": f"DO2I {display.unit('do2i').label}", "lactate_unit": display.unit("lactate").label,

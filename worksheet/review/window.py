@@ -91,7 +91,8 @@ def _handover(unit: Unit, now: datetime, zone: ZoneInfo, problem: str = "") -> W
 
 def _my_review(stay: Stay, user: User) -> datetime | None:
     if hasattr(stay, "my_review_at"):  # read with the stay, see stays_here
-        return stay.my_review_at
+        at: datetime | None = stay.my_review_at
+        return at
     mark = ReviewMark.objects.filter(stay=stay, user=user).order_by("-at").first()
     return mark.at if mark else None
 
