@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 
 import numpy as np
 
@@ -16,6 +16,7 @@ from worksheet.ward.models import Unit
 
 from .rows import DraftEntry, Fate
 
+BLOCK = 20_000
 IN_WORDS = 500  # entries whose findings are written out in the preview; all are counted
 _OF_ONE_VALUE = ("-impossible", "-unlikely")  # said with the row already
 
@@ -42,16 +43,34 @@ def readings_of(drafts: Sequence[DraftEntry]) -> Readings:
 
 def assess(drafts: Sequence[DraftEntry], unit: Unit) -> Counter[str]:
     """Findings among new drafts, counted by code; those that ask are added to their rows in words."""
-    chosen = [d for d in drafts if d.fate is Fate.NEW]
-    if not chosen:
-        return Counter()
-    constants = unit.constants_in_force()
-    snapshots = align.align(readings_of(chosen), constants.carry)
-    derived = derive.derive(snapshots, constants)
-    # Times in the future were refused before; shifted dates are in the future on purpose: no present time is given.
-    found = plausibility.findings(snapshots, derived, constants, across_stays=True)
-    _say(chosen, found, Display.of(None, unit))
-    return Counter({code: len(rows) for code, rows in found.rows.items()})
+    constants, display = unit.constants_in_force(), Display.of(None, unit)
+    total: Counter[str] = Counter()
+    for chosen in _blocks([d for d in drafts if d.fate is Fate.NEW]):
+        snapshots = align.align(readings_of(chosen), constants.carry)
+        derived = derive.derive(snapshots, constants)
+        # Times in the future were refused before; shifted dates are in the future on purpose: no present time is given.
+        found = plausibility.findings(snapshots, derived, constants, across_stays=True)
+        _say(chosen, found, display)
+        total.update({code: len(rows) for code, rows in found.rows.items()})
+    return total
+
+
+def _blocks(drafts: list[DraftEntry]) -> Iterator[list[DraftEntry]]:
+    """Whole stays, some ten thousand entries at a time: memory stays bounded whatever the file."""
+    if len(drafts) <= BLOCK:
+        if drafts:
+            yield drafts
+        return
+    of_stay: dict[tuple[str, str], list[DraftEntry]] = {}
+    for draft in drafts:
+        of_stay.setdefault((draft.patient.system, draft.patient.identifier), []).append(draft)
+    block: list[DraftEntry] = []
+    for entries in of_stay.values():
+        if block and len(block) + len(entries) > BLOCK:
+            yield block
+            block = []
+        block += entries
+    yield block
 
 
 def _say(drafts: Sequence[DraftEntry], found: plausibility.Findings, display: Display) -> None:

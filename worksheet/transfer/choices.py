@@ -55,5 +55,5 @@ def _column(picked: str, site: str) -> dict[str, Any]:
     name, _, ucum = picked.partition("|")
     if name not in MEASURED or not any(u.ucum == ucum for u in CATALOGUE[name].units):
         raise Refused("A column was given a quantity or unit that does not exist.")
-    code = int(site) if site.isdigit() and int(site) in set(Site) else 0
+    code = int(site) if site.isdecimal() and int(site) in set(Site) else 0
     return {"role": "quantity", "quantity": name, "unit": ucum, "site": code}

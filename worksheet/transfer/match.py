@@ -62,12 +62,19 @@ def match(drafts: list[DraftEntry], unit: Unit, finder: StayFinder, *, overwrite
         draft.key = draft.key or entry_key(unit.slug, stay.reference, draft)
     open_drafts = [d for d in drafts if d.fate is None]
     standing, keys = _stored([d for d in open_drafts if d.stay_id])
-    for draft in open_drafts:
-        mark = (draft.stay_id or -id(stays[id(draft)]), draft.time, int(draft.site))
-        _settle(draft, standing[mark], keys, overwrite)
-        if draft.fate is Fate.NEW:
+    marks = [(draft.stay_id or -id(stays[id(draft)]), draft.time, int(draft.site)) for draft in open_drafts]
+    shared = _repeated(marks)
+    for draft, mark in zip(open_drafts, marks, strict=True):
+        _settle(draft, standing.get(mark) or [], keys, overwrite)
+        if draft.fate is Fate.NEW and mark in shared:
             standing[mark].append(_as_standing(draft))
     return Matched(drafts, finder, stays)
+
+
+def _repeated(marks: list[Identity]) -> set[Identity]:
+    """Samples that more than one draft is about: only those have to be compared with each other."""
+    seen: set[Identity] = set()
+    return {mark for mark in marks if mark in seen or seen.add(mark)}  # type: ignore[func-returns-value]
 
 
 def _as_standing(draft: DraftEntry) -> Standing:

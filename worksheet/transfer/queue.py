@@ -49,7 +49,7 @@ def act(request: HttpRequest, slug: str) -> HttpResponse:
     """Do something with the chosen rows."""
     unit = unit_or_404(request, slug, Role.RECORDER)
     user = person(request)
-    ids = [int(i) for i in request.POST.getlist("row") if i.isdigit()][:500]
+    ids = [int(i) for i in request.POST.getlist("row") if i.isdecimal()][:500]
     rows = list(QueuedRow.objects.visible_to(user).filter(unit=unit, closed_at=None, pk__in=ids))
     action = request.POST.get("action", "")
     if not rows:

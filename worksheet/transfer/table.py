@@ -7,6 +7,7 @@ import re
 from collections import Counter
 from dataclasses import dataclass, field
 from itertools import islice
+from sys import intern
 
 from .cells import shortened
 from .limits import MAX_CELL, MAX_COLUMNS, MAX_ROWS
@@ -155,7 +156,7 @@ def _records(table: Table, lines: list[str], start: int, delimiter: str) -> None
         if last - first > 1:
             _open_quote(table, lines, start + first, start + last, delimiter, cells)
         elif len(cells) == width:
-            table.records.append((start + last, cells))
+            table.records.append((start + last, [intern(c) for c in cells]))  # gas values repeat
         else:
             _odd(table, start + last, cells, width)
 

@@ -199,5 +199,5 @@ def order_of(texts: list[str]) -> tuple[Order, bool]:
 
 def looks_shifted(texts: list[str], now: datetime) -> bool:
     """Whether every date of a file lies so far ahead that it was shifted to protect people (not one slip of a key)."""
-    years = [int(t[:4]) for t in texts if t[:4].isdigit()]
+    years = [int(t[:4]) for t in texts if t[:4].isdecimal()]
     return len(years) >= 10 and len(years) == len(texts) and min(years) > now.year + SHIFTED_YEARS

@@ -33,7 +33,7 @@ class Command(BaseCommand):
 
     def handle(self, *args: Any, **options: Any) -> None:
         host, _, port = options["bind"].rpartition(":")
-        if not host or not port.isdigit() or int(port) > 65535:
+        if not host or not port.isdecimal() or int(port) > 65535:
             raise CommandError(f"'{options['bind']}' is not HOST:PORT, such as 127.0.0.1:2575.")
         try:
             units = routes.read(options["unit_map"])
