@@ -160,10 +160,12 @@ def summary(world):
     quiet, mixed = made.cause == "none", made.cause == "mixed"
     rows, true = gases_with_truth(world)
     low, high = uncertainty.interval("do2i", world.derived["do2i"][rows], world.sds["do2i"][rows])
+    right = np.mean(step[world.single] == made.cause[world.single])
+    either = np.mean((step[mixed] == made.larger[mixed]) | (step[mixed] == "undetermined"))
+    covered = np.mean((low <= true) & (true <= high))
     return [
-        f"- one cause and a true fall ≥ 25 %: right step in {np.mean(step[world.single] == made.cause[world.single]):.1%}",
-        f"- no true change: none in {np.mean(step[quiet] == 'none'):.1%}",
-        f"- mixed: the larger or undetermined in "
-        f"{np.mean((step[mixed] == made.larger[mixed]) | (step[mixed] == 'undetermined')):.1%}",
-        f"- 95 % interval of DO2I covers the truth in {np.mean((low <= true) & (true <= high)):.1%} of {len(rows)} gases",
+        f"- one cause and a true fall ≥ 25 %: right step in {right:.1%} of {int(world.single.sum())}",
+        f"- no true change: none in {np.mean(step[quiet] == 'none'):.1%} of {int(quiet.sum())}",
+        f"- mixed: the larger or undetermined in {either:.1%} of {int(mixed.sum())}",
+        f"- 95 % interval of DO2I covers the truth in {covered:.1%} of {len(rows)} gases",
     ]

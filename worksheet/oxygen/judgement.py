@@ -26,6 +26,7 @@ from .ledger import between, window, window_ends
 from .ledger_table import STEPS, Ledger, Level, Note
 from .measurement import DEFAULT, Uncertainties
 from .readings import Bools, Derived, Flag, Ints, Snapshots
+from .trend import NORMAL
 
 MATERIAL = 0.05  # of the supply at the start; common practice
 ALPHA = 0.05  # one-sided, before the correction for the number of steps
@@ -151,7 +152,7 @@ def use_is_worse(snapshots: Snapshots, derived: Derived, ledger: Ledger, setting
     first, last = ledger.start_row[there], ledger.end_row[there]
     lactate = snapshots["lactate"][first], snapshots["lactate"][last]
     noise = np.hypot(settings.sd("lactate", lactate[0]), settings.sd("lactate", lactate[1]))
-    rises = (lactate[1] - lactate[0] > Z95 * noise) & (lactate[1] >= 2.0)
+    rises = (lactate[1] - lactate[0] > Z95 * noise) & (lactate[1] >= NORMAL)
     # two saturations of 0.8 points each are about 0.012 of the ratio, at both ends 0.017
     extraction = derived["o2er"][last] - derived["o2er"][first]
     worse[there] = rises | (extraction > Z95 * 0.017)

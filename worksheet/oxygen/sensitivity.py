@@ -42,11 +42,16 @@ class Slopes:
         return cls(
             _slope(arterial, rows, rows.route == Route.CURVE, constants),
             _slope(venous, rows, unmeasured & ~np.isnan(derived["cvo2"]), constants),
-            _slope(arterial | {"po2": derived["pao2_alveolar"]}, rows, ~np.isnan(derived["shunt_fraction"]), constants),
+            # at alveolar PO2 the curve is nearly flat: carbon monoxide changes nothing there
+            _slope(
+                arterial | {"po2": derived["pao2_alveolar"]}, rows, ~np.isnan(derived["shunt_fraction"]), constants, 0.0
+            ),
         )
 
 
-def _slope(gas: Mapping[str, Floats], rows: RowFactors, where: Bools, constants: Constants) -> Floats:
+def _slope(
+    gas: Mapping[str, Floats], rows: RowFactors, where: Bools, constants: Constants, co_counts: float = 1.0
+) -> Floats:
     """Slope of the curve by ln PO2 over one SD either side, so that its bend counts; 0 where not asked [0-1]."""
     result = np.zeros(len(where))
     if not np.any(where):
@@ -54,7 +59,7 @@ def _slope(gas: Mapping[str, Floats], rows: RowFactors, where: Bools, constants:
     po2, ph, pco2 = (gas[name][where] for name in ("po2", "ph", "pco2"))
     step = np.maximum(2.5 / po2, 0.03)
     pressures = po2 * np.exp(np.stack([-step, step]))
-    low, high = saturation(pressures, ph, pco2, 37.0, rows.cohb[where], rows.methb[where], constants)
+    low, high = saturation(pressures, ph, pco2, 37.0, co_counts * rows.cohb[where], rows.methb[where], constants)
     result[where] = (high - low) / (2.0 * step)
     return result
 

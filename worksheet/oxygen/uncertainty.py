@@ -13,7 +13,7 @@ References
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -24,7 +24,7 @@ from .factors import Route, RowFactors, row_factors
 from .measurement import DEFAULT, Uncertainties, fio2_sd, input_sds, parts
 from .monte_carlo import MonteCarlo, monte_carlo
 from .quantities import WITH_SD
-from .readings import Bools, Derived, Flag, Snapshots
+from .readings import Bools, Derived, Flag, Ints, Snapshots
 from .sensitivity import Contents, Partials, Slopes, finals
 
 __all__ = [
@@ -57,7 +57,13 @@ class Budget:
 
     def sd(self, name: str) -> Floats:
         """Standard uncertainty of a derived quantity [its canonical unit]."""
-        return np.asarray(np.sqrt(sum(np.nan_to_num(part) for part in self.variance(name).values())))
+        total = np.zeros(len(self.sds["hb"]))
+        for key, partial in self.partials[name].items():
+            part = partial * self.sds[key]
+            part *= part
+            np.copyto(part, 0.0, where=np.isnan(part))  # an input that is missing does not enter
+            total += part
+        return np.sqrt(total)
 
 
 def standard_uncertainties(
@@ -78,10 +84,44 @@ def standard_uncertainties(
     -------
     dict of str to ndarray
         1 SD for each of ``quantities.WITH_SD`` and for cvo2, avdo2, vo2, vo2i, pao2_alveolar and aa_gradient
-        [canonical unit]; NaN where the quantity is NaN.
+        [canonical unit]; NaN where the quantity is NaN and for rows that are not arterial.
     """
-    found = budget(snapshots, derived, constants, settings)
-    return {name: np.where(np.isnan(derived[name]), np.nan, found.sd(name)) for name in found.partials}
+    arterial = np.flatnonzero(snapshots.arterial)
+    own = _of_rows(snapshots, derived, arterial)
+    found = budget(*own, constants, settings)
+    result = {name: np.full(len(snapshots), np.nan) for name in found.partials}
+    for name, column in result.items():
+        column[arterial] = np.where(np.isnan(own[1][name]), np.nan, found.sd(name))
+    return result
+
+
+_NEEDED = (
+    "hb", "po2", "ph", "pco2", "fio2", "cardiac_output", "cardiac_index", "so2", "o2hb", "cohb", "methb", "sulfhb",
+    "barometric_pressure",
+)  # fmt: skip
+_NEEDED_VENOUS = ("ph", "pco2", "po2", "hb", "so2", "o2hb")
+_NEEDED_DERIVED = (
+    "cao2", "cvo2", "avdo2", "do2", "do2i", "vo2", "vo2i", "o2er", "pf_ratio", "shunt_fraction", "pao2_alveolar",
+    "aa_gradient", "bsa",
+)  # fmt: skip
+
+
+def _of_rows(snapshots: Snapshots, derived: Derived, rows: Ints) -> tuple[Snapshots, Derived]:
+    """The columns that uncertainties need, of some rows."""
+    return (
+        replace(
+            snapshots,
+            values={name: snapshots[name][rows] for name in _NEEDED},
+            age={name: snapshots.age[name][rows] for name in _NEEDED},
+            venous={name: snapshots.venous[name][rows] for name in _NEEDED_VENOUS},
+            device=snapshots.device[rows],
+            flow_method=snapshots.flow_method[rows],
+        ),
+        Derived(
+            {name: derived[name][rows] for name in _NEEDED_DERIVED},
+            derived.saturation[rows], derived.inactive[rows], derived.flags[rows],
+        ),
+    )  # fmt: skip
 
 
 @quiet
@@ -177,15 +217,15 @@ def _sds(snapshots: Snapshots, rows: RowFactors, settings: Uncertainties) -> dic
     by_index = parts(snapshots, "cardiac_index", settings).total / snapshots["cardiac_index"]
     return plain | {
         "so2": saturation_sd(snapshots, rows, settings),
-        "so2_venous": np.full(len(snapshots), settings.venous_saturation),
+        "so2_venous": np.full(len(rows.hb), settings.venous_saturation),
         "hb_venous": settings.sd("hb", snapshots.venous["hb"]),
         "po2_venous": settings.sd("po2", snapshots.venous["po2"]),
         "dyshaemoglobins": share_sd(snapshots, rows, settings),
-        "curve": np.full(len(snapshots), settings.curve),
-        "barometric_pressure": np.full(len(snapshots), settings.quantities["barometric_pressure"][0]),
+        "curve": np.full(len(rows.hb), settings.curve),
+        "barometric_pressure": np.full(len(rows.hb), settings.quantities["barometric_pressure"][0]),
         "flow": np.where(np.isnan(flow), by_index, flow),
-        "height": np.full(len(snapshots), settings.quantities["height"][1]),
-        "weight": np.full(len(snapshots), settings.quantities["weight"][1]),
+        "height": np.full(len(rows.hb), settings.quantities["height"][1]),
+        "weight": np.full(len(rows.hb), settings.quantities["weight"][1]),
     }
 
 

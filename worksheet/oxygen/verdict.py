@@ -13,7 +13,7 @@ from .ledger_table import STEPS, UNITS, Ledger, Level, Note
 from .measurement import DEFAULT, Uncertainties
 from .readings import Derived, Flag, Ints, Snapshots
 from .speech import PLAIN, Speech, age, joined
-from .trend import LactateTrend, lactate_trend
+from .trend import NORMAL, LactateTrend, lactate_trend
 from .uncertainty import standard_uncertainties
 
 __all__ = ["Evidence", "Judgement", "Review", "Use", "Verdict", "judge", "limiting_steps", "review", "verdict"]
@@ -274,7 +274,7 @@ def _use(
         sds = standard_uncertainties(snapshots, derived, constants, settings)["o2er"]
         change = now - float(derived["o2er"][known[0]])
         extraction = real_change(change, float(np.hypot(sds[known[0]], sds[known[-1]])))
-    rising = lactate.kind == "rising" or (lactate.kind == "change" and lactate.beyond_noise and lactate.decrease < 0.0)
+    rising = lactate.kind == "rising" or (lactate.beyond_noise and lactate.decrease < 0.0 and lactate.last >= NORMAL)
     worse = rising or (extraction is not None and bool(extraction.low > 0.0))
     said = [text for text in (_extraction_words(extraction, now, speech), _lactate_words(lactate, speech)) if text]
     return Use(extraction, now, lactate, worse, ", ".join(said))
@@ -298,7 +298,7 @@ def _lactate_words(lactate: LactateTrend, speech: Speech) -> str:
         return f"lactate is {lactate.kind} ({now}, {verb} in {speech.number(lactate.time, 0)} h, {span})"
     if lactate.kind == "normal":
         return f"lactate is normal ({now})"
-    if lactate.kind == "change" and lactate.beyond_noise:
+    if lactate.beyond_noise:
         return f"lactate {'fell' if lactate.decrease > 0.0 else 'rose'} to {now}"
     return f"lactate is {now}" if np.isfinite(lactate.last) else ""
 
