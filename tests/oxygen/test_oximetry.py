@@ -46,6 +46,8 @@ GAS = {"po2": 80.0, "so2_curve": 0.95, "spo2": 0.93}
         ({"so2": 0.96, **MEASURED, "sulfhb": 0.02, **GAS}, 0.96, 0.05, 0),
         ({"so2": 0.96, **GAS}, 0.96, 0.036, Flag.DYSHAEMOGLOBINS_ASSUMED),
         ({"so2": 1.004, **MEASURED, **GAS}, 1.0, 0.03, 0),
+        ({"so2": 1.005, **MEASURED, **GAS}, 1.0, 0.03, 0),
+        ({"so2": 0.0, **MEASURED, **GAS}, 0.0, 0.03, 0),
         (GAS, 0.95, 0.036, Flag.SATURATION_CALCULATED | Flag.DYSHAEMOGLOBINS_ASSUMED),
         ({**GAS, **MEASURED}, 0.95, 0.03, Flag.SATURATION_CALCULATED),
         ({"so2": 1.01, **MEASURED, **GAS}, 0.95, 0.03, Flag.SATURATION_CALCULATED),
