@@ -156,7 +156,8 @@ def _records(table: Table, lines: list[str], start: int, delimiter: str) -> None
         if last - first > 1:
             _open_quote(table, lines, start + first, start + last, delimiter, cells)
         elif len(cells) == width:
-            table.records.append((start + last, [intern(c) for c in cells]))  # gas values repeat
+            if "".join(cells).strip():
+                table.records.append((start + last, [intern(c) for c in cells]))  # gas values repeat
         else:
             _odd(table, start + last, cells, width)
 
