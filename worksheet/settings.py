@@ -1,6 +1,7 @@
 """The one settings file. Everything a site may choose comes from ``WORKSHEET_…`` environment variables."""
 
 import secrets
+from datetime import timedelta
 from pathlib import Path
 
 import dj_database_url
@@ -44,7 +45,9 @@ MIDDLEWARE = [
     "django.middleware.csrf.CsrfViewMiddleware",
     "django.contrib.auth.middleware.AuthenticationMiddleware",
     "django_otp.middleware.OTPMiddleware",
+    "worksheet.ward.middleware.session_limits",
     "django.contrib.auth.middleware.LoginRequiredMiddleware",
+    "worksheet.ward.middleware.second_factor",
     "django.contrib.messages.middleware.MessageMiddleware",
     "django.middleware.clickjacking.XFrameOptionsMiddleware",
     "django_htmx.middleware.HtmxMiddleware",
@@ -68,12 +71,16 @@ TEMPLATES = [
                 "django.template.context_processors.request",
                 "django.contrib.auth.context_processors.auth",
                 "django.contrib.messages.context_processors.messages",
+                "worksheet.ward.middleware.session_context",
             ],
             "loaders": [
-                ("django.template.loaders.cached.Loader", [
-                    "django.template.loaders.filesystem.Loader",
-                    "django.template.loaders.app_directories.Loader",
-                ]),
+                (
+                    "django.template.loaders.cached.Loader",
+                    [
+                        "django.template.loaders.filesystem.Loader",
+                        "django.template.loaders.app_directories.Loader",
+                    ],
+                ),
             ],
         },
     },
@@ -93,11 +100,25 @@ if DATABASES["default"]["ENGINE"] == "django.db.backends.sqlite3":
     }
 
 PASSWORD_HASHERS = ["django.contrib.auth.hashers.Argon2PasswordHasher"]
+# NIST SP 800-63B-4: 15 characters where the password stands alone, a list of common ones, no rules of composition.
 AUTH_PASSWORD_VALIDATORS = [
-    {"NAME": "django.contrib.auth.password_validation.MinimumLengthValidator", "OPTIONS": {"min_length": 12}},
+    {"NAME": "django.contrib.auth.password_validation.MinimumLengthValidator", "OPTIONS": {"min_length": 15}},
     {"NAME": "django.contrib.auth.password_validation.CommonPasswordValidator"},
     {"NAME": "django.contrib.auth.password_validation.UserAttributeSimilarityValidator"},
+    {"NAME": "worksheet.ward.passwords.EasyPatternValidator"},
 ]
+SECOND_FACTOR_REQUIRED = env.flag("WORKSHEET_SECOND_FACTOR")
+OTP_TOTP_ISSUER = "Oxygen delivery worksheet"
+
+# Locks the pair of user name and address, so that one mistyped name does not lock a whole ward behind one address.
+AXES_FAILURE_LIMIT = env.number("WORKSHEET_LOGIN_TRIES", 8, 3, 100)
+AXES_LOCKOUT_PARAMETERS = [["username", "ip_address"]]
+AXES_COOLOFF_TIME = timedelta(minutes=15)
+AXES_RESET_ON_SUCCESS = True
+AXES_LOCKOUT_TEMPLATE = "registration/locked.html"
+AXES_HTTP_RESPONSE_CODE = 429
+AXES_DISABLE_ACCESS_LOG = True
+AXES_VERBOSE = False
 
 LANGUAGE_CODE = "en-gb"
 USE_I18N = False
@@ -113,7 +134,14 @@ STORAGES = {
 }
 WHITENOISE_USE_FINDERS = False
 
-SESSION_ENGINE = "django.contrib.sessions.backends.db"
+SESSION_ENGINE = "worksheet.ward.session_store"
+# NIST SP 800-63B-4, AAL2: again after 12-24 h in any case, after an hour at most without use.
+SESSION_IDLE_SECONDS = 60 * env.number("WORKSHEET_IDLE_MINUTES", 45, 5, 60)
+SESSION_ABSOLUTE_SECONDS = 3600 * env.number("WORKSHEET_SESSION_HOURS", 13, 1, 24)
+SESSION_COOKIE_AGE = SESSION_ABSOLUTE_SECONDS
+SESSION_COOKIE_NAME = "__Host-worksheet" if HTTPS else "worksheet"
+CSRF_COOKIE_NAME = "__Host-csrf" if HTTPS else "csrf"
+CSRF_COOKIE_HTTPONLY = True
 SESSION_COOKIE_HTTPONLY = True
 SESSION_COOKIE_SAMESITE = "Lax"
 CSRF_COOKIE_SAMESITE = "Lax"
@@ -124,4 +152,7 @@ SECURE_HSTS_INCLUDE_SUBDOMAINS = HTTPS
 SECURE_HSTS_PRELOAD = HTTPS
 SECURE_REFERRER_POLICY = "same-origin"
 X_FRAME_OPTIONS = "DENY"
+DATA_UPLOAD_MAX_MEMORY_SIZE = 2 * 1024 * 1024  # forms; files have limits of their own
+DATA_UPLOAD_MAX_NUMBER_FIELDS = 2000
+CSRF_FAILURE_VIEW = "worksheet.review.errors.csrf_failure"
 DEFAULT_AUTO_FIELD = "django.db.models.BigAutoField"

@@ -1,9 +1,22 @@
-"""What every answer carries: the content policy and the rule that patient pages are not stored."""
+"""What holds for every request: methods, content policy, what is never stored, how long a login lasts."""
 
+from __future__ import annotations
+
+import time
 from collections.abc import Callable
+from functools import cache
+from typing import Any
+from urllib.parse import urlencode
 
-from django.http import HttpRequest, HttpResponse
+import django_otp
+from django.conf import settings
+from django.contrib.auth import logout
+from django.http import HttpRequest, HttpResponse, HttpResponseNotAllowed
+from django.shortcuts import redirect
+from django.urls import reverse
 
+POLLS = {"live", "progress"}  # ids of the page parts that ask by themselves
+METHODS = ("GET", "HEAD", "POST", "OPTIONS")
 # The hash is that of the empty style element that Plotly fills by script.
 CONTENT_POLICY = "; ".join(
     [
@@ -18,15 +31,80 @@ CONTENT_POLICY = "; ".join(
         "form-action 'self'",
     ]
 )
+HEADERS = {
+    "Content-Security-Policy": CONTENT_POLICY,
+    "Permissions-Policy": "camera=(), geolocation=(), microphone=(), payment=(), usb=()",
+    "Cross-Origin-Resource-Policy": "same-origin",
+    "Cache-Control": "no-store",
+}
+Answer = Callable[[HttpRequest], HttpResponse]
 
 
-def content_policy(get_response: Callable[[HttpRequest], HttpResponse]) -> Callable[[HttpRequest], HttpResponse]:
-    """Middleware that sets the content policy, and ``no-store`` unless the view chose otherwise."""
+def content_policy(get_response: Answer) -> Answer:
+    """Refuse methods that no page has; give each answer its headers unless the view chose its own."""
 
     def middleware(request: HttpRequest) -> HttpResponse:
-        response = get_response(request)
-        response.headers.setdefault("Content-Security-Policy", CONTENT_POLICY)
-        response.headers.setdefault("Cache-Control", "no-store")
+        response = get_response(request) if request.method in METHODS else HttpResponseNotAllowed(METHODS)
+        for name, value in HEADERS.items():
+            response.headers.setdefault(name, value)
         return response
 
     return middleware
+
+
+def session_limits(get_response: Answer) -> Answer:
+    """End a login after some time without use, and after some time in any case.
+
+    A page that updates itself reads the session and never extends it.
+    """
+
+    def middleware(request: HttpRequest) -> HttpResponse:
+        if request.user.is_authenticated:
+            now = time.time()
+            began = request.session.setdefault("began", now)
+            seen = request.session.get("seen", began)
+            if now - began > settings.SESSION_ABSOLUTE_SECONDS or now - seen > settings.SESSION_IDLE_SECONDS:
+                logout(request)
+            elif not is_poll(request) and now - seen > 60:  # a write a minute is enough
+                request.session["seen"] = now
+        return get_response(request)
+
+    return middleware
+
+
+def second_factor(get_response: Answer) -> Answer:
+    """Ask for the second factor where the person has one, or where the site requires one."""
+
+    def middleware(request: HttpRequest) -> HttpResponse:
+        user: Any = request.user
+        if user.is_authenticated and not user.is_verified() and request.path not in _open_paths():
+            if django_otp.user_has_device(user):
+                return redirect(f"{reverse('second_factor')}?{urlencode({'next': request.get_full_path()})}")
+            if settings.SECOND_FACTOR_REQUIRED:
+                return redirect("second_factor_new")
+        return get_response(request)
+
+    return middleware
+
+
+@cache
+def _open_paths() -> frozenset[str]:
+    names = ("second_factor", "second_factor_new", "logout", "login", "health")
+    return frozenset(reverse(name) for name in names)
+
+
+def is_poll(request: HttpRequest) -> bool:
+    """Whether the page asked by itself, not the person."""
+    return request.headers.get("HX-Trigger") in POLLS
+
+
+def seconds_left(request: HttpRequest) -> int:
+    """Seconds until this login ends if nothing is done [s]."""
+    now, began = time.time(), request.session.get("began", time.time())
+    seen = request.session.get("seen", began)
+    return int(min(began + settings.SESSION_ABSOLUTE_SECONDS, seen + settings.SESSION_IDLE_SECONDS) - now)
+
+
+def session_context(request: HttpRequest) -> dict[str, Any]:
+    """For templates: how long this login still lasts."""
+    return {"session_seconds_left": seconds_left(request)} if request.user.is_authenticated else {}

@@ -1,0 +1,21 @@
+"""Addresses of accounts, members, the unit's choices and the trail."""
+
+from django.urls import path
+
+from . import account, health, members, second_factor, trail, unit_settings
+
+urlpatterns = [
+    path("login/", account.LogIn.as_view(), name="login"),
+    path("logout/", account.LogOut.as_view(), name="logout"),
+    path("health/", health.health, name="health"),
+    path("account/", account.account, name="account"),
+    path("account/session-end", account.session_end, name="session_end"),
+    path("account/second-factor/", second_factor.second_factor, name="second_factor"),
+    path("account/second-factor/new/", second_factor.second_factor_new, name="second_factor_new"),
+    path("account/second-factor/remove", second_factor.second_factor_remove, name="second_factor_remove"),
+    path("invitation/<str:token>/", members.invitation, name="invitation"),
+    path("u/<slug:slug>/members/", members.members, name="members"),
+    path("u/<slug:slug>/members/<int:pk>/change", members.member_change, name="member_change"),
+    path("u/<slug:slug>/settings/", unit_settings.unit_settings, name="unit_settings"),
+    path("u/<slug:slug>/trail/", trail.trail, name="trail"),
+]
