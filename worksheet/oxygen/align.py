@@ -159,6 +159,7 @@ class Line:
 
     @classmethod
     def of(cls, readings: Readings) -> Line:
+        """The line of some readings."""
         order = _order(readings)
         stay, time = readings.stay[order], readings.time[order]
         n, same = len(stay), stay[1:] == stay[:-1]

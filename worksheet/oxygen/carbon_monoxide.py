@@ -19,7 +19,6 @@ from __future__ import annotations
 
 import numpy as np
 from numpy.typing import ArrayLike
-from scipy.optimize import elementwise
 
 from .domain import Floats, floats, keep, quiet
 from .tanh_model import (
@@ -169,6 +168,8 @@ def _haldane(odds: Floats, x: Floats, a: Floats, share: Floats) -> tuple[Floats,
 
 def _haldane_root(odds: Floats, x: Floats, a: Floats, share: Floats) -> Floats:
     """The one root of Haldane's law, bracketed by the curve without carbon monoxide and a step above it."""
+    from scipy.optimize import elementwise  # here: it takes a third of a second, and few tables need it
+
     found = elementwise.find_root(
         lambda at, *own: _haldane(at, *own)[0], (odds - 1e-9, odds + 40.0), args=(x, a, share)
     )

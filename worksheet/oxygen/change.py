@@ -15,7 +15,6 @@ from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import ArrayLike
-from scipy.special import ndtr
 
 from .domain import Bools, Floats, floats, quiet
 
@@ -82,6 +81,8 @@ def probability_of_fall(change: ArrayLike, sd: ArrayLike, more_than: ArrayLike =
     change, sd, more_than = floats(change, sd, more_than)
     fall = -change - more_than
     exact = np.where(fall > 0.0, 1.0, 0.0) + 0.0 * fall
+    from scipy.special import ndtr  # here: importing it is a third of the start-up of a command that needs none
+
     return np.asarray(np.where(sd > 0.0, ndtr(fall / sd), np.where(sd == 0.0, exact, np.nan)))
 
 

@@ -34,7 +34,7 @@ _OWN = (
 _SHARED = ("hb", "cohb", "methb", "sulfhb")
 CHAIN_INPUTS: tuple[str, ...] = (*_OWN, *(f"venous_{name}" for name in VENOUS if name != "lactate"))
 """Raw columns that :func:`oxygen_chain` reads [canonical units], NaN where not measured."""
-_BLOCK = 16_384  # rows that are worked on at a time: temporaries stay in the processor's cache
+_BLOCK = 32_768  # rows that are worked on at a time: temporaries stay in the processor's cache
 
 Raw = Mapping[str, Floats]
 Rows = slice | Ints | NDArray[np.bool_]

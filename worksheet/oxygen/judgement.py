@@ -14,10 +14,10 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from statistics import NormalDist
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.special import ndtri
 
 from .change import Z95
 from .constants import Constants
@@ -31,6 +31,8 @@ from .trend import NORMAL
 MATERIAL = 0.05  # of the supply at the start; common practice
 ALPHA = 0.05  # one-sided, before the correction for the number of steps
 ORDERED = 1.6448536269514722  # one-sided 95 %: the larger of two losses
+# One-sided limits by the number of steps tested; 0 tested counts as 1
+_CRITICAL = np.array([-NormalDist().inv_cdf(ALPHA / max(tested, 1)) for tested in range(len(STEPS) + 1)])
 NONE, UNDETERMINED = "none", "undetermined"
 Words = NDArray[np.str_]
 
@@ -108,7 +110,7 @@ def conclude(part: Mapping[str, Floats], sd: Mapping[str, Floats], missing_could
     parts, sds = (np.stack([table[name] for name in STEPS]) for table in (part, sd))
     known = ~np.isnan(parts) & ~np.isnan(sds)
     tested = np.sum(known & (sds > 0.0), axis=0)
-    critical = -ndtri(ALPHA / np.maximum(tested, 1))
+    critical = _CRITICAL[tested]
     real = known & (parts + critical * sds < 0.0)
     material = known & (parts <= -MATERIAL)
     lost = np.where(real & material, parts, 0.0)

@@ -13,7 +13,6 @@ from functools import lru_cache
 from typing import NamedTuple
 
 import numpy as np
-from scipy.special import stdtrit
 
 from .domain import Floats
 
@@ -69,6 +68,8 @@ def least_squares(times: Floats, values: Floats, floor: float = 0.0) -> Line:
     left = values - intercept - slope * times
     residual = float(left @ left) / (n - 2)
     # the wider of the two: by what the points show (Student's t) and by what is known of the measurement (normal)
+    from scipy.special import stdtrit  # here: importing it is a third of the start-up of a command that needs none
+
     reach = max(float(stdtrit(n - 2, 0.975)) * np.sqrt(residual), Z95 * np.sqrt(floor))
     half = float(reach / np.sqrt(spread))
     return Line(slope, intercept, slope - half, slope + half)
