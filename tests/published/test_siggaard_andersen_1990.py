@@ -1,5 +1,5 @@
 """Siggaard-Andersen O, Fogh-Andersen N, Gøthgen IH, Larsen VH: The oxygen status of the arterial blood revised.
-Scand J Clin Lab Invest 1990;50 Suppl 203:17-28.
+Scand J Clin Lab Invest 1990;50 Suppl 203:17-28 (authors from memory).
 
 From the abstract: extractable oxygen is what is extracted at a tension of 5.0 kPa; a normal arterio-venous difference
 is 2.3 mmol/L, so normal arterial blood (compensation factor 1.0) holds 2.3 mmol/L of it.
