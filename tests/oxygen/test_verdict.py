@@ -66,6 +66,22 @@ def test_a_loss_that_flow_made_up_for():
     assert "made up for it" in said.sentences[1]
 
 
+def test_probability_of_a_fall():
+    said = verdict_of({}, {"hb": 7.0})
+    assert said.probability_of_fall() > said.probability_of_fall(0.10) > said.probability_of_fall(0.30)
+    assert said.probability_of_fall(-float(said.total.change) / said.start_supply) == pytest.approx(0.5)
+    assert np.isnan(verdict_of({}).probability_of_fall())
+    low, high = said.evidence[1].interval
+    assert low < said.evidence[1].change < high < 0.0
+
+
+def test_content_is_not_made_up_for_by_flow():
+    """Flow known early only: its rise is judged, but does not explain a content."""
+    said = verdict_of({"cardiac_output": 4.0}, {"cardiac_output": 7.5}, {"cardiac_output": None, "hb": 7.0})
+    assert said.unit == "mL/dL"
+    assert "made up" not in said.text
+
+
 def test_two_losses_that_cannot_be_ordered():
     said = verdict_of({}, {"hb": 7.0, "cardiac_output": 5.0})
     assert said.limiting_step == "haemoglobin"

@@ -29,7 +29,8 @@ from .sensitivity import Contents, Partials, Slopes, finals
 
 __all__ = [
     "DEFAULT", "Budget", "MonteCarlo", "Partials", "Uncertainties", "budget", "first_order_doubtful", "input_sds",
-    "interval", "monte_carlo", "standard_uncertainties",
+    "interval", "monte_carlo", "sds_of_rows",
+    "standard_uncertainties",
 ]  # fmt: skip
 
 Z95 = 1.959963984540054
@@ -87,12 +88,37 @@ def standard_uncertainties(
         [canonical unit]; NaN where the quantity is NaN and for rows that are not arterial.
     """
     arterial = np.flatnonzero(snapshots.arterial)
-    own = _of_rows(snapshots, derived, arterial)
-    found = budget(*own, constants, settings)
-    result = {name: np.full(len(snapshots), np.nan) for name in found.partials}
+    found = sds_of_rows(snapshots, derived, arterial, constants, settings)
+    result = {name: np.full(len(snapshots), np.nan) for name in found}
     for name, column in result.items():
-        column[arterial] = np.where(np.isnan(own[1][name]), np.nan, found.sd(name))
+        column[arterial] = found[name]
     return result
+
+
+def sds_of_rows(
+    snapshots: Snapshots, derived: Derived, rows: Ints, constants: Constants, settings: Uncertainties = DEFAULT
+) -> dict[str, Floats]:
+    """The same as :func:`standard_uncertainties`, for some arterial rows.
+
+    Parameters
+    ----------
+    snapshots, derived : Snapshots, Derived
+        The rows and what follows from them.
+    rows : ndarray of int64
+        Which rows [row number].
+    constants : Constants
+        Constants in force.
+    settings : Uncertainties
+        Those in force.
+
+    Returns
+    -------
+    dict of str to ndarray
+        1 SD, one for each of the given rows [canonical unit]; NaN where the quantity is NaN.
+    """
+    own = _of_rows(snapshots, derived, rows)
+    found = budget(*own, constants, settings)
+    return {name: np.where(np.isnan(own[1][name]), np.nan, found.sd(name)) for name in found.partials}
 
 
 _NEEDED = (

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from .change import RealChange, real_change
+from .change import Z95, RealChange, probability_of_fall, real_change
 from .constants import Constants
 from .judgement import MATERIAL, NONE, UNDETERMINED, Judgement, Review, judge, limiting_steps, review
 from .ledger_table import STEPS, UNITS, Ledger, Level, Note
@@ -14,7 +14,7 @@ from .measurement import DEFAULT, Uncertainties
 from .readings import Derived, Flag, Ints, Snapshots
 from .speech import PLAIN, Speech, age, joined
 from .trend import NORMAL, LactateTrend, lactate_trend
-from .uncertainty import standard_uncertainties
+from .uncertainty import sds_of_rows
 
 __all__ = ["Evidence", "Judgement", "Review", "Use", "Verdict", "judge", "limiting_steps", "review", "verdict"]
 
@@ -49,6 +49,11 @@ class Evidence:
     real: bool
     material: bool
     words: str
+
+    @property
+    def interval(self) -> tuple[float, float]:
+        """95 % interval of the contribution [unit of the level]."""
+        return self.change - Z95 * self.sd, self.change + Z95 * self.sd
 
 
 @dataclass(frozen=True)
@@ -96,6 +101,8 @@ class Verdict:
         Extraction and lactate.
     basis : tuple of str
         What is assumed, carried, missing or not re-measured.
+    start_supply : float
+        Supply at the start [unit of the change].
     """
 
     sentences: tuple[str, ...]
@@ -105,6 +112,13 @@ class Verdict:
     evidence: tuple[Evidence, ...]
     use: Use
     basis: tuple[str, ...]
+    start_supply: float = np.nan
+
+    def probability_of_fall(self, share: float = 0.0) -> float:
+        """Probability that supply truly fell by more than a share of that at the start [0-1]."""
+        if self.total is None:
+            return np.nan
+        return float(probability_of_fall(self.total.change, self.total.sd, share * self.start_supply))
 
     @property
     def text(self) -> str:
@@ -156,7 +170,8 @@ def verdict(
     total = real_change(one.total[0], one.sd["total"][0])
     sentences = (_supply(one, total, snapshots, speech), _cause(step, evidence, total, use))
     basis = _basis(snapshots, derived, one, use, speech)
-    return Verdict(sentences, step, total, UNITS[int(one.level[0])], evidence, use, basis)
+    start = float(one.start_supply[0])
+    return Verdict(sentences, step, total, UNITS[int(one.level[0])], evidence, use, basis, start)
 
 
 _NOTHING = "Nothing to compare: two arterial gases with haemoglobin are needed."
@@ -177,7 +192,7 @@ def _supply(one: Ledger, total: RealChange, snapshots: Snapshots, speech: Speech
     level = Level(int(one.level[0]))
     name, start = QUANTITY[level], float(one.start_supply[0])
     since = speech.clock(float(snapshots.readings.time[one.start_row[0]]))
-    share, half = 100.0 * float(total.change) / start, 100.0 * 1.96 * float(total.sd) / start
+    share, half = 100.0 * float(total.change) / start, 100.0 * Z95 * float(total.sd) / start
     if not bool(total.beyond_noise):
         change = f"{speech.number(share, 0, True)} % ± {speech.number(half, 0)}"
         return f"The change of {_NAMES[level].lower()} since {since} is inside measurement noise ({change})."
@@ -194,10 +209,10 @@ def _cause(step: str, evidence: tuple[Evidence, ...], total: RealChange, use: Us
         said = (
             f"{joined([item.words for item in lost])} both took supply; which took more cannot be told"
             if len(lost) > 1
-            else "No step that was measured explains it; flow was not measured and could be the cause"
+            else "No step that was measured lost supply; flow was not measured and could be the cause"
         )
     elif step == NONE:
-        said = "No step lost supply beyond noise"
+        said = "No single step lost supply beyond noise"
     else:
         said = _named(by_name[step], evidence, bool(total.high < 0.0))
     return _capital(f"{said}{'; ' + use.words if use.words else ''}.")
@@ -207,7 +222,9 @@ def _named(worst: Evidence, evidence: tuple[Evidence, ...], fell: bool) -> str:
     """The step that failed, what else was lost, and what made up for it."""
     losses = -sum(min(item.share, 0.0) for item in evidence if item.real or item is worst)
     others = [item.step for item in evidence if item is not worst and item.real and item.material]
-    gains = [item.words for item in evidence if item.share >= MATERIAL and item.share > 2.0 * item.sd_share]
+    # flow counts only where supply is delivery: a content that fell is not made up for by flow
+    counted = [item for item in evidence if item.change > 0.0]
+    gains = [item.words for item in counted if item.share >= MATERIAL and item.share > Z95 * item.sd_share]
     if fell:
         said = f"{_part_words(-worst.share / losses)} of the loss is {worst.words}"
         said += f", the rest {joined(others)}" if others else ""
@@ -271,9 +288,8 @@ def _use(
     if len(known):
         now = float(derived["o2er"][known[-1]])
     if len(known) > 1:
-        sds = standard_uncertainties(snapshots, derived, constants, settings)["o2er"]
-        change = now - float(derived["o2er"][known[0]])
-        extraction = real_change(change, float(np.hypot(sds[known[0]], sds[known[-1]])))
+        sds = sds_of_rows(snapshots, derived, known[[0, -1]], constants, settings)["o2er"]
+        extraction = real_change(now - float(derived["o2er"][known[0]]), float(np.hypot(*sds)))
     rising = lactate.kind == "rising" or (lactate.beyond_noise and lactate.decrease < 0.0 and lactate.last >= NORMAL)
     worse = rising or (extraction is not None and bool(extraction.low > 0.0))
     said = [text for text in (_extraction_words(extraction, now, speech), _lactate_words(lactate, speech)) if text]
