@@ -67,7 +67,10 @@ def test_a_correction_sent_twice_is_stored_once(world, entry):
 def test_the_second_of_two_correctors_sees_both_versions_and_loses_nothing(world, entry):
     mine = form_of(world.client.get(world.url("entry_correct", entry.pk)), hb="8.9", reason="wrong line")
     record.correct(
-        entry, world.people["other"], record.NewEntry(entry.time, Site.ARTERIAL, {"hb": 9.1, "po2": 88.0}), "clot"
+        entry,
+        world.people["other"],
+        record.NewEntry(entry.time, Site.ARTERIAL, {"hb": 9.1, "po2": 88.0, "ph": 7.31}),
+        "clot",
     )
     answer = world.client.post(world.url("entry_correct", entry.pk), mine)
     html = answer.content.decode()
@@ -78,9 +81,11 @@ def test_the_second_of_two_correctors_sees_both_versions_and_loses_nothing(world
     assert rows["Hb"] == ["9.8 g/dL", "9.1 g/dL", "8.9 g/dL"]
     theirs = Entry.objects.get(replaces=entry)
     assert world.url("entry_correct", theirs.pk) in html, "saving again corrects the newer version"
-    again = {**mine, "key": answer.context["slip"].key}
+    assert rows["pH"] == ["7.40", "7.31", "not changed; theirs is in the form now"]
+    again = form_of(answer, reason="wrong line")
+    assert (again["hb"], again["ph"]) == ("8.9", "7.31"), "mine where I changed it, theirs where I did not"
     assert world.client.post(world.url("entry_correct", theirs.pk), again).status_code == 302
-    assert Entry.objects.current().get().hb == 8.9
+    assert (Entry.objects.current().get().hb, Entry.objects.current().get().ph) == (8.9, 7.31)
 
 
 def test_correcting_what_was_struck_out_meanwhile_becomes_a_new_entry(world, entry):

@@ -188,11 +188,15 @@ def _conflict(desk: Desk, slip: Slip, by: Entry | None) -> HttpResponse:
     assert desk.replacing is not None  # noqa: S101 - the caller looked
     theirs = newest(by or desk.replacing)
     mine = record.build(desk.stay, desk.user, slip.new_entry())
-    rows = conflict_rows(desk.display, desk.replacing, theirs, mine)
+    replaced, rows = desk.replacing, conflict_rows(desk.display, desk.replacing, theirs, mine)
     drafts.drop(desk.user, desk.stay, desk.form_name)
     desk.replacing = None if theirs.struck else theirs
     fresh = desk.posted()
     fresh.key = uuid.uuid4().hex
+    if not theirs.struck:
+        before = entry_form.from_entry(replaced, desk.display, "", desk.stay.unit.zone)
+        entry_form.take_over(fresh, before, entry_form.from_entry(theirs, desk.display, "", desk.stay.unit.zone))
+        fresh.moment = moments.read(fresh.date, fresh.clock, fresh.fold, desk.stay.unit.zone, timezone.now())
     return _show(desk, fresh, desk.check(fresh), refused=True, conflict=theirs, conflict_rows=rows)
 
 

@@ -263,6 +263,23 @@ def from_entry(entry: Entry, display: Display, begun_by: str, zone: ZoneInfo) ->
     )
 
 
+def take_over(mine: Slip, before: Slip, theirs: Slip) -> None:
+    """Where I changed nothing, a colleague's correction comes into my form; what I typed stays."""
+    for part in ("site", "device", "flow_method", "sample", "note"):
+        if getattr(mine, part) == getattr(before, part):
+            setattr(mine, part, getattr(theirs, part))
+    if (mine.date, mine.clock) == (before.date, before.clock):
+        mine.date, mine.clock, mine.fold = theirs.date, theirs.clock, theirs.fold
+    for name, field_ in mine.fields.items():
+        old, new = before.fields[name].value, theirs.fields[name].value
+        if old != new and not field_.notices and _alike(field_.value, old):
+            mine.fields[name] = theirs.fields[name]
+
+
+def _alike(one: float | None, other: float | None) -> bool:
+    return one == other or (one is not None and other is not None and abs(one - other) < 1e-9)
+
+
 def read_value(name: str, posted: Mapping[str, str], display: Display) -> ValueField:
     """One quantity as typed: its text and the unit chosen beside it."""
     quantity = CATALOGUE[name]

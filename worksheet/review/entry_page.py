@@ -144,4 +144,5 @@ def conflict_rows(display: Display, before: Entry, theirs: Entry, mine: Entry) -
     versions = [dict(facts(display, entry)) for entry in (before, theirs, mine)]
     labels = list(dict.fromkeys(label for version in versions for label in version))
     rows = [(label, *(version.get(label, "–") for version in versions)) for label in labels]
-    return [(a, b, c, d) for a, b, c, d in rows if len({b, c, d}) > 1]
+    same = "not changed; theirs is in the form now" if not theirs.struck else "not changed"
+    return [(a, b, c, same if d == b else d) for a, b, c, d in rows if len({b, c, d}) > 1]

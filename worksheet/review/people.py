@@ -11,7 +11,7 @@ from worksheet.ward.models import Role, Stay, Unit
 
 def stay_for(request: HttpRequest, slug: str, ref: str, role: Role = Role.RECORDER) -> Stay:
     """The stay, if this person has the role in its unit."""
-    return stay_or_404(request, unit_or_404(request, slug, role), ref, role)
+    return stay_or_404(request, unit_or_404(request, slug), ref, role)
 
 
 def patient_page(stay: Stay) -> str:

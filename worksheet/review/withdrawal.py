@@ -48,6 +48,7 @@ def _show(desk: Desk, reason: str, problem: str) -> HttpResponse:
     latest = newest(desk.replacing)
     context = {
         "stay": desk.stay,
+        "unit": desk.stay.unit,
         "entry": desk.replacing,
         "facts": facts(desk.display, desk.replacing),
         "latest": latest if latest != desk.replacing else None,
