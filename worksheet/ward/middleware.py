@@ -107,4 +107,5 @@ def seconds_left(request: HttpRequest) -> int:
 
 def session_context(request: HttpRequest) -> dict[str, Any]:
     """For templates: how long this login still lasts."""
-    return {"session_seconds_left": seconds_left(request)} if request.user.is_authenticated else {}
+    user = getattr(request, "user", None)  # not there yet where a request is refused at the door
+    return {"session_seconds_left": seconds_left(request)} if user is not None and user.is_authenticated else {}
