@@ -128,3 +128,15 @@ def test_a_cell_in_another_unit_than_its_column_is_refused(bring):
 def test_no_number_is_guessed_from_odd_texts(bring, text):
     seen = bring(f'stay;time;hb\nA;2026-02-11T05:40:00Z;"{text}"\nA;2026-02-11T06:40:00Z;9.5\nA;2026-02-11T07:40:00Z;9.6\n', confirmed=True)
     assert seen.rows[0].fate == "invalid"
+
+
+def test_time_beside_date_is_the_clock_and_sample_may_be_the_site(bring):
+    text = (
+        "Patient;Date;Time;Sample;pO2 (kPa);pH\n1;11.02.2026;05:40;arterial;12,1;7,30\n1;11.02.2026;06:40;venous;5,1;7,28\n"
+        "1;11.02.2026;06:50;umbilical;5,1;7,28\nTotal;3\n"
+    )
+    with pytest.raises(Refused, match="no time zone"):
+        bring(text)
+    seen = bring(text, zone=ZURICH, order="dmy", confirmed=True)
+    assert [r.fate for r in seen.rows] == ["new", "new", "invalid", "not understood"]
+    assert [e.site for e in Entry.objects.order_by("time")] == [1, 4]

@@ -13,7 +13,7 @@ from worksheet.oxygen.quantities import CATALOGUE, DERIVED, MEASURED, WITH_SD, Q
 from worksheet.oxygen.readings import Site
 
 from .cells import number, shortened
-from .names import column_named
+from .names import column_named, site_named
 from .table import Table
 from .times import Order, order_of
 
@@ -77,7 +77,7 @@ def propose(table: Table, saved: Mapping[str, Any] | None = None) -> Plan:
     kept = (saved or {}).get("columns", {})
     contract = {"stay", "time"} <= set(table.header) and len(set(table.header) & set(MEASURED)) >= 1
     columns = tuple(_column(i, h, texts[i], comma, kept.get(h), contract) for i, h in enumerate(table.header))
-    columns = _without_doubles(columns)
+    columns = _without_doubles(columns if contract else _by_content(columns, texts))
     order, order_sure = _date_order(columns, texts)
     if saved and saved.get("order"):
         order, order_sure = saved["order"], True
@@ -115,7 +115,7 @@ def _column(index: int, header: str, texts: list[str], comma: bool | None, kept:
         quantity = CATALOGUE.get(kept["quantity"]) if kept["role"] == "quantity" else None
         unit = next((u for u in quantity.units if u.ucum == kept["unit"]), None) if quantity else None
         if quantity is None or unit is not None:
-            return Column(index, header, kept["role"], quantity, unit, Site(kept["site"]), "saved mapping of the unit")
+            return Column(index, header, kept["role"], quantity, unit, Site(kept["site"]), "as chosen")
     if contract:
         if header in MEASURED:
             return _contract_column(index, CATALOGUE[header], texts, comma)
@@ -176,6 +176,20 @@ def _fitting(quantity: Quantity, texts: list[str], comma: bool | None) -> list[U
     ]
     distinct = {(u.factor, u.offset): u for u, s in reversed(share) if s >= 0.9}
     return list(distinct.values())
+
+
+def _by_content(columns: tuple[Column, ...], texts: list[list[str]]) -> tuple[Column, ...]:
+    """Headers that mean two things: "Time" beside "Date" is the clock, "Sample" may say where it was drawn."""
+    roles = {c.role for c in columns}
+    out = []
+    for c in columns:
+        if c.role == "time" and "date" in roles and "clock" not in roles:
+            c = replace(c, role="clock")
+        elif c.role == "sample" and "site" not in roles and texts[c.index]:
+            named = sum(site_named(t) is not None for t in texts[c.index])
+            c = replace(c, role="site") if 2 * named >= len(texts[c.index]) else c
+        out.append(c)
+    return tuple(out)
 
 
 def _without_doubles(columns: tuple[Column, ...]) -> tuple[Column, ...]:

@@ -11,6 +11,7 @@ from django.shortcuts import redirect, render
 from django.utils import timezone
 from django.views.decorators.http import require_GET, require_POST
 
+from worksheet.oxygen.quantities import CATALOGUE
 from worksheet.ward import audit
 from worksheet.ward.access import person, stay_or_404, unit_or_404
 from worksheet.ward.display import Display
@@ -39,7 +40,7 @@ def queue(request: HttpRequest, slug: str) -> HttpResponse:
 def _values(row: QueuedRow) -> str:
     cells = row.data.get("cells", {})
     if cells:
-        return ", ".join(f"{name} {cell['text']} {cell['unit']}".strip() for name, cell in cells.items())
+        return ", ".join(f"{CATALOGUE[name].symbol} {cell['text']} {cell['unit']}".strip() for name, cell in cells.items())
     raw = row.data.get("raw", "")
     return ", ".join(f"{k} {v}" for k, v in raw.items() if v)[:300] if isinstance(raw, dict) else str(raw)[:300]
 

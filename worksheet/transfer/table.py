@@ -182,7 +182,7 @@ def _odd(table: Table, line: int, cells: list[str], width: int) -> None:
         return
     if len(cells) == width:
         table.records.append((line, cells))
-    elif len(filled) == 1 and (len(cells) == 1 or _FOOTER.match(filled[0].strip())):
+    elif len(cells) == 1 or (len(filled) <= 2 and _FOOTER.match(filled[0].strip())):
         table.skipped.append((line, cells))
     else:
         table.broken[line] = f"it has {len(cells)} cells, the header has {width}"
