@@ -58,23 +58,48 @@
     return ticks;
   }
 
-  function timeTicks(clock, low, high) {
-    const step = STEPS_H.find((s) => (high - low) / s <= 9) ?? 672;
+  function timeTicks(clock, low, high, most) {
+    const step = STEPS_H.find((s) => (high - low) / s <= most) ?? 672;
     return clock.zone ? wallTicks(clock.zone, low, high, step) : elapsedTicks(clock.origin, low, high, step);
   }
 
-  function retick(box, figure, change) {
-    if (change["xaxis.tickvals"]) return; // our own
+  const LABEL_PX = 62; // what a time takes on the axis, with room
+  const LETTER_PX = 7.5;
+
+  // The ticks that fit: the figure's own where there is room, else fewer; after a zoom, times of the span shown.
+  function ticksFor(figure, range, length) {
     const own = figure.layout.xaxis;
-    const from = change["xaxis.range[0]"] ?? change["xaxis.range"]?.[0];
-    const to = change["xaxis.range[1]"] ?? change["xaxis.range"]?.[1];
-    if (from !== undefined) {
-      const ticks = timeTicks(figure.clock, from, to);
-      Plotly.relayout(box, { "xaxis.tickvals": ticks.map((t) => t[0]), "xaxis.ticktext": ticks.map((t) => t[1]) });
-    } else if (change["xaxis.autorange"]) {
-      Plotly.relayout(box, { "xaxis.range": own.range, "xaxis.tickvals": own.tickvals, "xaxis.ticktext": own.ticktext });
+    const all = own.tickvals.map((value, i) => [value, own.ticktext[i]]);
+    if (figure.clock) {
+      const whole = Math.abs(range[0] - own.range[0]) < 1e-6 && Math.abs(range[1] - own.range[1]) < 1e-6;
+      const most = Math.min(9, Math.max(2, Math.floor(length / LABEL_PX)));
+      return whole && all.length <= most ? all : timeTicks(figure.clock, range[0], range[1], most);
     }
+    const widest = Math.max(1, ...own.ticktext.map((text) => text.length)) * LETTER_PX + 12;
+    const every = Math.ceil((all.length * widest) / length);
+    return all.filter((_, i) => (all.length - 1 - i) % every === 0);
   }
+
+  function fitTicks(box, figure) {
+    const axis = box._fullLayout?.xaxis;
+    if (!axis || !(axis._length > 0)) return;
+    const ticks = ticksFor(figure, axis.range, axis._length);
+    const texts = ticks.map((tick) => tick[1]);
+    if (texts.join("|") === (axis.ticktext ?? []).join("|")) return;
+    Plotly.relayout(box, { "xaxis.tickvals": ticks.map((tick) => tick[0]), "xaxis.ticktext": texts });
+  }
+
+  // A box changes its width with the window, and when the page around it is laid out anew.
+  const widths = new WeakMap();
+  const watcher = new ResizeObserver((entries) => {
+    for (const { target: box, contentRect } of entries) {
+      if (!drawn.has(box) || Math.abs((widths.get(box) ?? 0) - contentRect.width) < 1) continue;
+      widths.set(box, contentRect.width);
+      requestAnimationFrame(() => {
+        if (box.isConnected && contentRect.width > 0) Plotly.Plots.resize(box)?.then?.(() => fitTicks(box, drawn.get(box)));
+      });
+    }
+  });
 
   // --- mounting ---
 
@@ -85,7 +110,12 @@
     drawn.set(box, figure);
     const { data, layout } = inTheme(figure);
     Plotly.newPlot(box, data, { ...layout, transition: { duration: calm.matches ? 0 : 150 } }, figure.config);
-    if (figure.clock) box.on("plotly_relayout", (change) => retick(box, figure, change));
+    box.on("plotly_relayout", (change) => {
+      if (!change["xaxis.tickvals"]) fitTicks(box, figure);
+    });
+    widths.set(box, box.clientWidth);
+    watcher.observe(box);
+    fitTicks(box, figure);
     box.querySelectorAll("svg.main-svg").forEach((svg) => svg.setAttribute("aria-hidden", "true")); // alt and table say it
     box.dataset.drawn = "yes";
   }
@@ -93,6 +123,7 @@
   function forget() {
     for (const box of drawn.keys()) {
       if (!box.isConnected) {
+        watcher.unobserve(box);
         Plotly.purge(box);
         drawn.delete(box);
       }
@@ -110,6 +141,7 @@
     for (const [box, figure] of drawn) {
       const { data, layout } = inTheme(figure);
       Plotly.react(box, data, layout, figure.config);
+      fitTicks(box, figure);
     }
   }
 

@@ -1,6 +1,7 @@
 """The charts in a browser: under the strict policy, in both themes, zoomed, resized, after a swap, without a shift."""
 
 import http.server
+import itertools
 import threading
 import time
 
@@ -192,3 +193,17 @@ def test_first_chart_is_there_within_a_second(page, address):
     page.reload()
     page.wait_for_selector('[data-chart="data-strip"][data-drawn]')
     assert time.perf_counter() - start < 3
+
+
+@pytest.mark.parametrize("width", [380, 620, 1100])
+def test_labels_of_the_time_axis_do_not_run_into_each_other(page, address, width):
+    page.set_viewport_size({"width": width, "height": 900})
+    open_charts(page, address)
+    page.wait_for_timeout(300)
+    for kind in ("strip", "ledger"):
+        boxes = page.evaluate(
+            f"[...document.querySelectorAll('[data-chart-kind={kind}] .xtick text')].map(t => "
+            "[t.getBoundingClientRect().left, t.getBoundingClientRect().right])"
+        )
+        assert len(boxes) >= 2
+        assert all(right <= left for (_, right), (left, _) in itertools.pairwise(sorted(boxes)))

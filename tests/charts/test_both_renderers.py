@@ -43,7 +43,8 @@ def traces_of(chart):
     """Plotly traces by (name, axis), contours and lower edges of bands left out."""
     found = page_renderer.figure(chart)
     names = {s.name for s in chart.series}
-    return [t for t in found["data"] if t["name"] in names], found["layout"]
+    data = [trace | {"name": trace["name"].replace("<br>", " ")} for trace in found["data"]]
+    return [trace for trace in data if trace["name"] in names], found["layout"]
 
 
 def test_plotly_accepts_every_figure(charts):

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import math
+import textwrap
 from typing import Any
 
 from .description import Axis, Chart, Series
@@ -15,7 +16,7 @@ _X_DIGITS = 5  # of a position or an hour; the readout finds its words by this t
 _SYMBOL = {"circle": "circle", "square": "square", "diamond": "diamond", "triangle": "triangle-up", "cross": "x"}
 CONFIG = {
     "displaylogo": False,
-    "responsive": True,
+    "responsive": False,  # the page's script watches each box
     "scrollZoom": False,
     "doubleClick": "reset",
     "showTips": False,
@@ -61,13 +62,18 @@ def _traces(chart: Chart, series: Series, place: str, theme: str) -> list[dict[s
 
 def _base(chart: Chart, series: Series, place: str) -> dict[str, Any]:
     return {
-        "name": series.name,
+        "name": _wrapped(series.name) if _by_panel(chart) else series.name,
         "x": _times(series.x),
         "yaxis": place,
         "xaxis": "x",
         "showlegend": series.legend,
         "customdata": [[series.note(i)] for i in range(len(series.x))],
     } | ({"legend": place.replace("y", "legend")} if _by_panel(chart) else {})
+
+
+def _wrapped(name: str) -> str:
+    """A name of the legend beside a panel, no wider than the margin."""
+    return "<br>".join(textwrap.wrap(name, 18))
 
 
 def _hover(chart: Chart, series: Series, value: str = "y") -> str:
@@ -162,7 +168,7 @@ def _layout(chart: Chart, places: dict[str, str], theme: str) -> dict[str, Any]:
     layout: dict[str, Any] = {
         "height": chart.height,
         "autosize": True,
-        "margin": {"l": 74, "r": 136 if _by_panel(chart) else 16, "t": 46, "b": 52},
+        "margin": {"l": 74, "r": 136 if _by_panel(chart) else 40 if chart.x_words else 16, "t": 46, "b": 52},
         "font": {"family": _FONT, "size": 13, "color": colour("ink", theme)},
         "paper_bgcolor": colour("paper", theme),
         "plot_bgcolor": colour("paper", theme),
@@ -207,6 +213,7 @@ def _x_axis(chart: Chart, theme: str, anchor: str) -> dict[str, Any]:
         "linecolor": colour("soft", theme),
         "zeroline": False,
         "ticklabeloverflow": "allow",
+        "tickangle": 0,
         "anchor": anchor,
         "fixedrange": chart.clock is None,
     }
