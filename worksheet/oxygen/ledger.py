@@ -8,20 +8,18 @@ curve), **flow** output or index. A window is the sum of its consecutive ledgers
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from dataclasses import replace
 
 import numpy as np
 
+from .comparison import compare
 from .constants import Constants
 from .domain import Floats
 from .factors import Route, row_factors
-from .footing import Pair
-from .ledger_noise import step_sds
 from .ledger_table import STEPS, UNITS, Ledger, Level, Note
 from .measurement import DEFAULT, Uncertainties
 from .readings import Bools, Codes, Derived, Ints, Snapshots
-from .shapley import SHIFTS, Factors, Split, split
+from .shapley import Factors, split
 
 __all__ = [
     "STEPS", "UNITS", "Factors", "Ledger", "Level", "Note", "between", "consecutive", "extractable", "split",
@@ -58,7 +56,7 @@ def between(
     Ledger
         One row for each pair.
     """
-    return _compare(snapshots, derived, start_rows, end_rows, constants, settings, level, False)
+    return compare(snapshots, derived, start_rows, end_rows, constants, settings, level, False)
 
 
 def extractable(
@@ -90,7 +88,7 @@ def extractable(
     Ledger
         One row for each pair: oxygen that can be unloaded, times flow where it is known [unit of the level].
     """
-    return _compare(snapshots, derived, start_rows, end_rows, constants, settings, level, True)
+    return compare(snapshots, derived, start_rows, end_rows, constants, settings, level, True)
 
 
 def consecutive(
@@ -113,71 +111,6 @@ def consecutive(
         Row i belongs to snapshot i; NaN for rows that are not arterial or have none before them.
     """
     return between(snapshots, derived, snapshots.previous, np.arange(len(snapshots)), constants, settings)
-
-
-def _compare(
-    snapshots: Snapshots, derived: Derived, start_rows: Ints, end_rows: Ints, constants: Constants,
-    settings: Uncertainties, most: Codes | None, unloading: bool,
-) -> Ledger:  # fmt: skip
-    ends = np.asarray(start_rows, dtype=np.int64), np.asarray(end_rows, dtype=np.int64)
-    level = _common_level(derived, *ends, most)
-    kept = np.flatnonzero(level > Level.NONE)
-    rows = row_factors(snapshots, derived)
-    pair = Pair.of(rows, snapshots, derived, ends[0][kept], ends[1][kept], level[kept], constants, unloading)
-    found = split(pair.start, pair.end, constants)
-    sds = step_sds(
-        snapshots, rows, pair.start_row, pair.end_row, level[kept], pair.start, pair.end, found, constants, settings
-    )
-    return _table(ends, level, kept, pair, found, sds, constants)
-
-
-def _common_level(derived: Derived, start_rows: Ints, end_rows: Ints, most: Codes | None) -> Codes:
-    """Highest level whose supply is known at both ends."""
-    level = np.zeros(len(start_rows), dtype=np.int8)
-    there = (start_rows >= 0) & (end_rows >= 0)
-    for code, name in ((Level.CAO2, "cao2"), (Level.DO2, "do2"), (Level.DO2I, "do2i")):
-        known = ~np.isnan(derived[name])
-        both = there.copy()
-        both[there] = known[start_rows[there]] & known[end_rows[there]]
-        level[both if most is None else both & (np.asarray(most) >= code)] = code
-    return level
-
-
-def _table(
-    ends: tuple[Ints, Ints], level: Codes, kept: Ints, pair: Pair, found: Split, sds: Mapping[str, Floats],
-    constants: Constants,
-) -> Ledger:  # fmt: skip
-    """Spread the comparisons that exist over all that were asked for."""
-
-    def spread(values: Floats) -> Floats:
-        result = np.full(len(level), np.nan)
-        result[kept] = values
-        return result
-
-    terms = dict(found.terms)
-    blind = (pair.notes & Note.PO2_MISSING) != 0
-    terms["po2"] = np.where(blind, terms["residual"], terms["po2"])
-    terms["residual"] = np.where(blind, 0.0, terms["residual"])
-    sds = dict(sds) | {"lung": np.where(blind, sds["saturation"], sds["lung"])}
-    shift = sum(terms[name] for name in (*SHIFTS, "active", "unloading"))
-    notes = np.zeros(len(level), dtype=np.int64)
-    notes[kept] = pair.notes
-    return Ledger(
-        np.where(level > 0, ends[0], -1),
-        np.where(level > 0, ends[1], -1),
-        level,
-        spread(terms["po2"] + terms["dissolved"]),
-        spread(terms["hb"]),
-        spread(np.asarray(shift + terms["residual"])),
-        spread(terms["flow"]),
-        spread(found.total),
-        spread(terms["residual"]),
-        spread(pair.start.supply(constants)),
-        spread(pair.end.supply(constants)),
-        {name: spread(values) for name, values in sds.items()},
-        notes,
-        {name: spread(terms[name]) for name in ("po2", "dissolved", "active", *SHIFTS, "unloading")},
-    )
 
 
 def window_ends(
@@ -260,7 +193,7 @@ def window(
     Ledger
         One row for each window.
     """
-    ends = _compare(snapshots, derived, start_rows, end_rows, constants, settings, None, unloading)
+    ends = compare(snapshots, derived, start_rows, end_rows, constants, settings, None, unloading)
     owner, each = _intervals(snapshots, derived, ends, constants, settings, unloading)
     if not len(owner):
         return ends
@@ -306,7 +239,7 @@ def intervals(
         One row for each interval, in time order, all at one level; empty without a comparison.
     """
     first, last = np.array([start_row]), np.array([end_row])
-    ends = _compare(snapshots, derived, first, last, constants, settings, None, False)
+    ends = compare(snapshots, derived, first, last, constants, settings, None, False)
     return _intervals(snapshots, derived, ends, constants, settings, False)[1]
 
 
@@ -315,7 +248,7 @@ def _intervals(
 ) -> tuple[Ints, Ledger]:
     """The intervals of each window: whose they are, and their ledgers."""
     owner, low, high = _chain(snapshots, derived, ends)
-    return owner, _compare(snapshots, derived, low, high, constants, settings, ends.level[owner], unloading)
+    return owner, compare(snapshots, derived, low, high, constants, settings, ends.level[owner], unloading)
 
 
 def _chain(snapshots: Snapshots, derived: Derived, ends: Ledger) -> tuple[Ints, Ints, Ints]:

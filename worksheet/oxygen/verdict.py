@@ -13,14 +13,12 @@ from .ledger_table import STEPS, UNITS, Ledger, Level, Note
 from .measurement import DEFAULT, Uncertainties
 from .readings import Derived, Flag, Ints, Snapshots
 from .speech import PLAIN, Speech, age, joined
-from .trend import NORMAL, LactateTrend, lactate_trend
-from .uncertainty import sds_of_rows
+from .use import Use, use_of
 
 __all__ = ["Evidence", "Judgement", "Review", "Use", "Verdict", "judge", "limiting_steps", "review", "verdict"]
 
 QUANTITY = {Level.DO2I: "do2i", Level.DO2: "do2", Level.CAO2: "cao2"}
 _NAMES = {Level.DO2I: "Delivery", Level.DO2: "Delivery", Level.CAO2: "Arterial oxygen content"}
-CRITICAL_EXTRACTION = 0.60  # Ronco 1993, JAMA 270:1724
 
 
 @dataclass(frozen=True)
@@ -54,31 +52,6 @@ class Evidence:
     def interval(self) -> tuple[float, float]:
         """95 % interval of the contribution [unit of the level]."""
         return self.change - Z95 * self.sd, self.change + Z95 * self.sd
-
-
-@dataclass(frozen=True)
-class Use:
-    """What the tissues made of it: extraction at both ends and the course of lactate.
-
-    Attributes
-    ----------
-    extraction : RealChange or None
-        Change of O2ER, None where it is not known at both ends [0-1].
-    now : float
-        O2ER at the end, NaN where not known [0-1].
-    lactate : LactateTrend
-        Course of lactate in the window.
-    worse : bool
-        Whether either worsened beyond noise.
-    words : str
-        Empty where nothing is known.
-    """
-
-    extraction: RealChange | None
-    now: float
-    lactate: LactateTrend
-    worse: bool
-    words: str
 
 
 @dataclass(frozen=True)
@@ -162,10 +135,10 @@ def verdict(
         raise KeyError(f"no stay {stay} in this review")
     one, step = found.ledger.take(np.array([at])), str(found.judgement.step[at])
     if one.level[0] == Level.NONE:
-        use = _use(snapshots, derived, constants, settings, _rows_of(snapshots, stay), speech)
+        use = use_of(snapshots, derived, constants, settings, _rows_of(snapshots, stay), speech)
         return Verdict((_NOTHING,), step, None, "", (), use, ())
     rows = _rows_of(snapshots, stay, int(one.start_row[0]), int(one.end_row[0]))
-    use = _use(snapshots, derived, constants, settings, rows, speech)
+    use = use_of(snapshots, derived, constants, settings, rows, speech)
     evidence = tuple(_evidence(snapshots, derived, found, at, name, speech) for name in STEPS)
     total = real_change(one.total[0], one.sd["total"][0])
     sentences = (_supply(one, total, snapshots, speech), _cause(step, evidence, total, use))
@@ -275,48 +248,6 @@ def _step_words(snapshots: Snapshots, derived: Derived, step: str, ends: tuple[i
             first = speech.value(name, values[0])
             return f"{said.rstrip()} {first} → {speech.value(name, values[1], with_unit=True)})".replace("( ", "(")
     return {"lung": "the lung"}.get(step, step)
-
-
-def _use(
-    snapshots: Snapshots, derived: Derived, constants: Constants, settings: Uncertainties, rows: Ints, speech: Speech
-) -> Use:
-    """Extraction at both ends, lactate over the window."""
-    readings = snapshots.readings
-    lactate = lactate_trend(readings.time[rows], readings["lactate"][rows], readings.site[rows], settings)
-    known = rows[~np.isnan(derived["o2er"][rows])]
-    extraction, now = None, np.nan
-    if len(known):
-        now = float(derived["o2er"][known[-1]])
-    if len(known) > 1:
-        sds = sds_of_rows(snapshots, derived, known[[0, -1]], constants, settings)["o2er"]
-        extraction = real_change(now - float(derived["o2er"][known[0]]), float(np.hypot(*sds)))
-    rising = lactate.kind == "rising" or (lactate.beyond_noise and lactate.decrease < 0.0 and lactate.last >= NORMAL)
-    worse = rising or (extraction is not None and bool(extraction.low > 0.0))
-    said = [text for text in (_extraction_words(extraction, now, speech), _lactate_words(lactate, speech)) if text]
-    return Use(extraction, now, lactate, worse, ", ".join(said))
-
-
-def _extraction_words(extraction: RealChange | None, now: float, speech: Speech) -> str:
-    if not np.isfinite(now):
-        return ""
-    value = speech.value("o2er", now, with_unit=True)
-    beyond = " (near the critical range)" if now >= CRITICAL_EXTRACTION else ""
-    if extraction is None or not bool(extraction.beyond_noise):
-        return f"extraction is {value}{beyond}"
-    return f"extraction {'rose' if extraction.change > 0.0 else 'fell'} to {value}{beyond}"
-
-
-def _lactate_words(lactate: LactateTrend, speech: Speech) -> str:
-    now = speech.value("lactate", lactate.last, with_unit=True)
-    if lactate.kind in ("rising", "falling"):
-        verb = "doubling" if lactate.kind == "rising" else "halving"
-        span = f"{speech.number(lactate.time_low, 0)}–{speech.number(lactate.time_high, 0)}"
-        return f"lactate is {lactate.kind} ({now}, {verb} in {speech.number(lactate.time, 0)} h, {span})"
-    if lactate.kind == "normal":
-        return f"lactate is normal ({now})"
-    if lactate.beyond_noise:
-        return f"lactate {'fell' if lactate.decrease > 0.0 else 'rose'} to {now}"
-    return f"lactate is {now}" if np.isfinite(lactate.last) else ""
 
 
 _NOTE_WORDS = (
