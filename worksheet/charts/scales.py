@@ -165,7 +165,10 @@ def value_axis(
     first, last = math.floor(low / step + 1e-9), math.ceil(high / step - 1e-9)
     places = max(0, -math.floor(math.log10(step) + 1e-9))
     ticks = tuple((round(n * step, 9), display.number(n * step, places)) for n in range(first, last + 1))
-    return Axis(key, title, round(first * step, 9), round(last * step, 9), ticks, decimals, domain, empty)
+    low, high = round(first * step, 9), round(last * step, 9)
+    if ceiling is not None and high >= ceiling:
+        high += 0.05 * (high - low)  # room for a marker on the ceiling itself
+    return Axis(key, title, low, high, ticks, decimals, domain, empty)
 
 
 def time_axis(low: float, high: float, scale: TimeScale, most: int = 9) -> Axis:
