@@ -58,10 +58,13 @@ def fill(unit, user, beds, hours=72.0, every=4.0):
         for n, ago in enumerate(np.arange(0.3, hours, every)):
             hb = 10.5 - (3.5 * max(0.0, 1 - ago / 10) if number % 3 == 0 else 0.0)
             values = gas(hb=round(hb, 1), po2=float(round(92 + rng.normal(0, 2))))
-            arterial = record.NewEntry(now - timedelta(hours=float(ago)), Site.ARTERIAL, values, device=Device.VENTILATOR,
+            when = now - timedelta(hours=float(ago))
+            arterial = record.NewEntry(when, Site.ARTERIAL, values, device=Device.VENTILATOR,
                                        flow_method=FlowMethod.THERMODILUTION, key=f"{stay.pk}-{n}")  # fmt: skip
-            venous = record.NewEntry(now - timedelta(hours=float(ago) + 0.05), Site.CENTRAL_VENOUS,
-                                     {"ph": 7.35, "pco2": 46.0, "po2": 37.0, "so2": 0.69}, key=f"{stay.pk}-{n}v")  # fmt: skip
+            venous_values = {"ph": 7.35, "pco2": 46.0, "po2": 37.0, "so2": 0.69}
+            venous = record.NewEntry(
+                when - timedelta(minutes=3), Site.CENTRAL_VENOUS, venous_values, key=f"{stay.pk}-{n}v"
+            )
             entries += [record.build(stay, user, arterial), record.build(stay, user, venous)]
     Entry.objects.bulk_create(entries)
 

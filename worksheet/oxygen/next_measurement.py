@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from .constants import Constants
-from .factors import Route, row_factors
+from .factors import Route, RowFactors, row_factors
 from .measurement import DEFAULT, Uncertainties, parts
 from .readings import Derived, FlowMethod, Snapshots
 from .speech import PLAIN, Speech, age
@@ -80,6 +80,7 @@ def next_measurement(
     target: str | None = None,
     speech: Speech = PLAIN,
     known: Budget | None = None,
+    factors: RowFactors | None = None,
 ) -> NextMeasurement | None:
     """The one fresh measurement that would remove most of the variance of supply, or of extraction.
 
@@ -99,6 +100,8 @@ def next_measurement(
         How numbers are said.
     known : Budget, optional
         Of :func:`~.uncertainty.budget`, so that many rows share one.
+    factors : RowFactors, optional
+        Of :func:`~.factors.row_factors`, likewise.
 
     Returns
     -------
@@ -111,7 +114,8 @@ def next_measurement(
     found = known or budget(snapshots, derived, constants, settings)
     variance = {name: float(np.nan_to_num(part[row])) for name, part in found.variance(target).items()}
     whole = sum(variance.values())
-    candidates = _candidates(snapshots, derived, row, found, target, variance, settings)
+    rows = factors or row_factors(snapshots, derived)
+    candidates = _candidates(snapshots, rows, row, found, target, variance, settings)
     ranked = sorted(
         (
             Candidate(name, LABELS[name], removed / whole, float(np.sqrt(max(whole - removed, 0.0))), reason)
@@ -126,7 +130,7 @@ def next_measurement(
 
 
 def _candidates(
-    snapshots: Snapshots, derived: Derived, row: int, found: Budget, target: str, variance: dict[str, float],
+    snapshots: Snapshots, rows: RowFactors, row: int, found: Budget, target: str, variance: dict[str, float],
     settings: Uncertainties,
 ) -> list[tuple[str, float, str]]:  # fmt: skip
     """Name, variance removed and reason of each measurement that the target rests on."""
@@ -135,7 +139,7 @@ def _candidates(
         if variance.get(name, 0.0) > 0.0 and np.isfinite(snapshots[quantity][row]):
             removed, reason = _fresh(snapshots, row, quantity, variance[name], settings)
             result.append((name, removed, reason))
-    result.append(_co_oximetry(snapshots, derived, row, found, target, variance, settings))
+    result.append(_co_oximetry(rows, row, found, target, variance, settings))
     if "so2_venous" in variance:
         result.append(("venous", 0.5 * variance["so2_venous"], "a repeat halves its scatter"))
     return [one for i, one in enumerate(result) if one[0] not in {other[0] for other in result[:i]}]
@@ -155,11 +159,9 @@ def _fresh(
 
 
 def _co_oximetry(
-    snapshots: Snapshots, derived: Derived, row: int, found: Budget, target: str, variance: dict[str, float],
-    settings: Uncertainties,
+    rows: RowFactors, row: int, found: Budget, target: str, variance: dict[str, float], settings: Uncertainties
 ) -> tuple[str, float, str]:  # fmt: skip
     """What measured saturation and dyshaemoglobins would remove."""
-    rows = row_factors(snapshots, derived)
     calculated = int(rows.route[row]) in (Route.CURVE, Route.FINGER)
     assumed = not bool(rows.dys_known[row])
     removed, reasons = 0.0, []

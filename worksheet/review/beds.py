@@ -7,14 +7,17 @@ from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
+from django.urls import reverse
+from django.utils.safestring import SafeString
 
 from worksheet.charts.bar import LedgerBar, ledger_bar
 from worksheet.oxygen.change import Z95
+from worksheet.oxygen.factors import RowFactors, row_factors
 from worksheet.oxygen.judgement import Review
 from worksheet.oxygen.ledger_table import STEPS, Level
 from worksheet.oxygen.next_measurement import NextMeasurement, next_measurement
 from worksheet.oxygen.plausibility import Finding
-from worksheet.oxygen.readings import Flag, Ints
+from worksheet.oxygen.readings import Bools, Flag, Ints
 from worksheet.oxygen.trend import LactateTrend, lactate_trend
 from worksheet.oxygen.uncertainty import Budget, budget
 from worksheet.ward.display import MISSING, Display, age_words
@@ -22,10 +25,11 @@ from worksheet.ward.models import Stay
 from worksheet.ward.sheet import Sheet
 
 from . import words
+from .bar_svg import bar_svg
 from .window import Window
 
 STALE_HOURS = 6.0  # a gas older than this is called stale on the page; common practice
-LACTATE_HOURS = 24.0  # the course of lactate looks back this far; common practice
+LACTATE_HOURS = 24.0  # how far the course of lactate looks back without two gases to compare; common practice
 QUANTITY = {Level.CAO2: "cao2", Level.DO2: "do2", Level.DO2I: "do2i"}
 _QUIET = {"spo2-above-97", "duplicate-sample"}  # true of most healthy rows: said on the patient page only
 _SHOWN = 0.02  # a contribution below two percent of supply is not said
@@ -44,6 +48,16 @@ class Ward:
     def budget(self) -> Budget:
         """What each number's uncertainty is made of."""
         return budget(self.sheet.snapshots, self.sheet.derived, self.sheet.constants, self.sheet.settings)
+
+    @cached_property
+    def factors(self) -> RowFactors:
+        """What the numbers of each row are made of."""
+        return row_factors(self.sheet.snapshots, self.sheet.derived)
+
+    @cached_property
+    def remarkable(self) -> Bools:
+        """Rows with a finding."""
+        return np.asarray(self.sheet.findings.worst() > 0)
 
     @cached_property
     def largest(self) -> float:
@@ -85,6 +99,16 @@ class BedRow:
     def review(self) -> Review:
         """The review of all stays of the page."""
         return self.ward.review
+
+    @cached_property
+    def key(self) -> str:
+        """What ids in the page are made of."""
+        return str(self.stay.pk)
+
+    @property
+    def url(self) -> str:
+        """Address of the patient page, over the same window."""
+        return f"{reverse('patient', args=[self.sheet.unit.slug, self.stay.reference])}?{self.window.query}"
 
     @cached_property
     def rows(self) -> Ints:
@@ -278,6 +302,11 @@ class BedRow:
         return ledger_bar({name: self.part(name) for name in STEPS}, self.ward.largest)
 
     @property
+    def bar_svg(self) -> SafeString:
+        """The bar as it stands in the page; the words beside it say the same."""
+        return bar_svg(self.bar)
+
+    @property
     def bar_words(self) -> str:
         """All four steps in words, for those who do not see the bar."""
         known = [(name, self.part(name)) for name in STEPS if math.isfinite(self.part(name))]
@@ -313,9 +342,14 @@ class BedRow:
 
     @cached_property
     def lactate(self) -> LactateTrend:
-        """The course of lactate over the last 24 h of the window."""
-        keep = self.rows[self.sheet.readings.time[self.rows] > self.window.until_hours - LACTATE_HOURS]
-        table = self.sheet.readings
+        """The course of lactate between the gases compared, as the verdict sees it; without two, over the last 24 h."""
+        table, found = self.sheet.readings, self.review.ledger
+        time = table.time[self.rows]
+        if self.level:
+            ends = table.time[[int(found.start_row[self.place]), int(found.end_row[self.place])]]
+            keep = self.rows[(time >= ends[0]) & (time <= ends[1])]
+        else:
+            keep = self.rows[time > self.window.until_hours - LACTATE_HOURS]
         return lactate_trend(table.time[keep], table["lactate"][keep], table.site[keep], self.sheet.settings)
 
     @property
@@ -337,7 +371,7 @@ class BedRow:
     def findings(self) -> tuple[Finding, ...]:
         """Findings about the rows of the window, newest row first, each kind once."""
         recent = self.rows[self.sheet.readings.time[self.rows] >= self.window.since_hours][::-1]
-        recent = recent[self.sheet.findings.worst()[recent] > 0]
+        recent = recent[self.ward.remarkable[recent]]
         seen: dict[str, Finding] = {}
         for row in recent.tolist():
             for finding in self.sheet.findings.of_row(row, self.show):
@@ -368,7 +402,7 @@ class BedRow:
         sheet = self.sheet
         return next_measurement(
             sheet.snapshots, sheet.derived, row, sheet.constants, sheet.settings, speech=self.display,
-            known=self.ward.budget,
+            known=self.ward.budget, factors=self.ward.factors,
         )  # fmt: skip
 
     @property

@@ -5,9 +5,7 @@ from __future__ import annotations
 import hashlib
 from collections.abc import Sequence
 
-from django.db.models import Max
-
-from worksheet.ward.models import Entry, Stay, Unit, User
+from worksheet.ward.models import Stay, Unit, User
 
 from .window import Window
 
@@ -18,9 +16,8 @@ def mark_of(unit: Unit, user: User, stays: Sequence[Stay], window: Window, *more
     The newest entry of all units is asked for, because that is one step in an index however long the history is. The
     minute is in it because ages are shown in minutes; so nothing is ever late by more than that.
     """
-    newest = Entry.objects.aggregate(newest=Max("pk"))["newest"]
     parts = [
-        newest, f"{window.now:%Y%m%d%H%M}", window.kind, *more,
+        getattr(stays[0], "newest_entry", None) if stays else None, f"{window.now:%Y%m%d%H%M}", window.kind, *more,
         (window.since, window.until) if window.kind == "free" else "",
         unit.pk, unit.name, unit.constants, unit.carry, unit.uncertainties, unit.units, unit.decimal_comma,
         unit.time_zone, unit.shift_starts, user.pk, user.preferences,

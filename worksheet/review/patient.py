@@ -17,32 +17,33 @@ from worksheet.ward import audit
 from worksheet.ward.access import person, stay_or_404, unit_or_404
 from worksheet.ward.display import Display
 from worksheet.ward.models import ReviewMark, Role, Stay, Unit, User
-from worksheet.ward.sheet import open_sheet
+from worksheet.ward.sheet import derived_sheet, readings_from
 
 from .beds import bed_rows
-from .entries_table import about_entries, entry_lines, headings
+from .entries_table import about_entries, entry_lines, headings, standing
 from .reach import entries_in_reach
-from .stays_here import find, present
+from .stays_here import find, present_at
 from .story import Story
 from .window import HOURS, window_of
 
 
 def patient(request: HttpRequest, slug: str, ref: str) -> HttpResponse:
     """One stay over the review window."""
-    unit, user = unit_or_404(request, slug), person(request)
-    line = present(unit, user)
-    stay = next((one for one in line if one.reference == ref), None) or find(request, unit, ref)
+    user = person(request)
+    line = present_at(slug, user)
+    stay = next((one for one in line if one.reference == ref), None) or find(request, unit_or_404(request, slug), ref)
+    unit = stay.unit
     window, display = window_of(request.GET, unit, user, stay), Display.of(user, unit)
-    sheet = open_sheet(unit, [stay], entries_in_reach(unit, [stay.pk], window))
+    about = about_entries(entries_in_reach(unit, [stay.pk], window, current=False))
+    sheet = derived_sheet(unit, [stay], *readings_from(standing(about), [stay]))
     story = Story(bed_rows(sheet, window, display)[0])
     audit.write(user.username, "viewed", unit=unit.name, subject=stay.reference, window=window.kind)
     history = request.GET.get("history") == "1"
     rows = story.rows_in_window()
-    since = float(sheet.readings.time[rows[0]]) if len(rows) else window.since_hours
     context = {
         "unit": unit, "stay": stay, "window": window, "hours": HOURS, "row": story.row, "story": story,
         "charts": draw(story), **neighbours(line, stay), "history": history, "headings": headings(display),
-        "lines": entry_lines(sheet, stay, rows, display, about_entries(stay, window, since, history=history), history),
+        "lines": entry_lines(sheet, stay, rows, display, about, history, story.span()),
         "may_record": may_record(user, stay), "day": day_of(stay, window.until_hours),
         "free_from": f"{display.local(window.since):%Y-%m-%dT%H:%M}",
         "free_to": f"{display.local(window.until):%Y-%m-%dT%H:%M}",

@@ -19,6 +19,7 @@ from worksheet.oxygen.quantities import CATALOGUE
 from worksheet.oxygen.readings import Ints
 from worksheet.oxygen.verdict import Evidence, Verdict
 from worksheet.oxygen.verdict import verdict as made_verdict
+from worksheet.ward.display import Display
 
 from . import words
 from .beds import BedRow
@@ -127,7 +128,7 @@ class Story:
             item.step,
             words.plus_minus(row.display, row.quantity, item.change, item.sd, signed=True) if known else "not known",
             words.percent(row.display, share) if known else "",
-            _judged(item),
+            _judged(item, row.display),
             item.words if known else _WORDS[item.step],
             self._unloaded(item.step) if known else "",
         )
@@ -211,20 +212,26 @@ class Story:
         """Id of the entry of the newest gas."""
         return int(self.row.sheet.entry_ids[self.row.last]) if self.row.last >= 0 else 0
 
-    def rows_in_window(self) -> Ints:
-        """The stay's rows of the window, and the one that the comparison starts from."""
-        row, sheet = self.row, self.row.sheet
+    def span(self) -> tuple[float, float]:
+        """From the gas that the comparison starts from, or the start of the window, to its end [h since the epoch]."""
+        row = self.row
         start = row.window.since_hours
         if row.level:
-            start = min(start, float(sheet.readings.time[int(row.review.ledger.start_row[row.place])]))
-        return row.rows[sheet.readings.time[row.rows] >= start]
+            start = min(start, float(row.sheet.readings.time[int(row.review.ledger.start_row[row.place])]))
+        return start, row.window.until_hours
+
+    def rows_in_window(self) -> Ints:
+        """The stay's rows of that span."""
+        return self.row.rows[self.row.sheet.readings.time[self.row.rows] >= self.span()[0]]
 
 
-def _judged(item: Evidence) -> str:
+def _judged(item: Evidence, display: Display) -> str:
+    """What is concluded about a step, with the share that this was concluded from."""
     if not math.isfinite(item.share):
         return "not measured at both ends"
+    said = "within noise"
     if item.real:
-        return "loss beyond noise" if item.material else "loss beyond noise, below 5 %"
-    if item.share > Z95 * item.sd_share > 0:
-        return "gain beyond noise"
-    return "within noise"
+        said = "loss beyond noise" if item.material else "loss beyond noise, below 5 %"
+    elif item.share > Z95 * item.sd_share > 0:
+        said = "gain beyond noise"
+    return f"{said} ({words.percent(display, item.share)} ± {display.number(100 * Z95 * item.sd_share, 0)})"

@@ -6,6 +6,7 @@ import time
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from functools import cached_property
+from typing import Any
 
 import numpy as np
 
@@ -18,7 +19,7 @@ from worksheet.oxygen.readings import Derived, Floats, Ints, Readings, Snapshots
 from .models import Entry, Stay, Unit
 from .models.entries import EntryQuerySet
 
-_COLUMNS = ("id", "stay_id", "time", "site", "device", "flow_method", "event", *MEASURED)
+COLUMNS = ("id", "stay_id", "time", "site", "device", "flow_method", "event", *MEASURED)
 _STAY_FACTS = ("height", "weight", "age")
 
 
@@ -75,7 +76,11 @@ class Sheet:
 
 def readings_of(entries: EntryQuerySet, stays: Iterable[Stay] = ()) -> tuple[Readings, Ints]:
     """The entries as a table, and their ids. Height, weight and age of the stay fill rows that have none."""
-    rows = list(entries.order_by("stay_id", "time", "id").values_list(*_COLUMNS))
+    return readings_from(list(entries.order_by("stay_id", "time", "id").values_list(*COLUMNS)), stays)
+
+
+def readings_from(rows: Sequence[tuple[Any, ...]], stays: Iterable[Stay] = ()) -> tuple[Readings, Ints]:
+    """The same from rows of :data:`COLUMNS` that somebody read together with more, ordered by stay, time and id."""
     if not rows:
         return Readings.build([], [], [], {}), np.zeros(0, dtype=np.int64)
     ids, stay, times, site, device, method, event, *values = zip(*rows, strict=True)
