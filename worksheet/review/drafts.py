@@ -18,6 +18,7 @@ from worksheet.ward.display import Display
 from worksheet.ward.models import Draft, Entry, Role, Stay, User
 
 from .people import stay_for
+from .texts import plain, posted
 
 LARGEST = 20_000  # characters of one draft
 _FORM = re.compile(r"entry|event|correct-\d{1,18}", re.ASCII)
@@ -42,15 +43,17 @@ def draft_save(request: HttpRequest, slug: str, ref: str) -> HttpResponse:
         return redirect(_form_address(stay, name))
     if request.POST.get("begun_by", user.get_username()) != user.get_username():
         return _refused(409, f"This form was begun by {request.POST['begun_by']}; you are {user.get_username()}.")
-    if Entry.objects.visible_to(user).filter(key=request.POST.get("key", "")).exists():
+    if Entry.objects.visible_to(user).filter(key=plain(request.POST.get("key", ""))).exists():
         return _refused(409, "This form was already recorded.")
     Draft.objects.update_or_create(user=user, stay=stay, form=name, defaults={"data": data})
     return JsonResponse({"saved": Display.of(user, stay.unit).clock(timezone.now())})
 
 
 def _kept(request: HttpRequest) -> dict[str, str | list[str]]:
-    lists = {name: request.POST.getlist(name) for name in request.POST if name not in _NOT_KEPT}
-    return {name: texts if name == "confirm" else texts[-1] for name, texts in lists.items() if texts}
+    kept: dict[str, str | list[str]] = {k: v for k, v in posted(request.POST).items() if k not in _NOT_KEPT}
+    if "confirm" in kept:
+        kept["confirm"] = [plain(token) for token in request.POST.getlist("confirm")]
+    return kept
 
 
 def _refused(status: int, words: str) -> HttpResponse:

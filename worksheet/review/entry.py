@@ -129,7 +129,7 @@ def _save(desk: Desk) -> HttpResponse:
         return _conflict(desk, slip, faster)
     if slip.unanswered():
         return _show(desk, slip, trial, refused=True)
-    return _correct(desk, slip) if desk.replacing else _record(desk, slip, trial)
+    return _correct(desk, slip) if desk.replacing else _record(desk, slip)
 
 
 def refuse_other_person(desk: Desk, slip: Slip) -> None:
@@ -140,7 +140,7 @@ def refuse_other_person(desk: Desk, slip: Slip) -> None:
         slip.notices.append(Notice(Level.IMPOSSIBLE, "begun_by", "other_person", words))
 
 
-def _record(desk: Desk, slip: Slip, trial: Any) -> HttpResponse:
+def _record(desk: Desk, slip: Slip) -> HttpResponse:
     new = slip.new_entry()
     with transaction.atomic():
         entry, is_new = record.record(desk.stay, desk.user, new)
@@ -148,10 +148,17 @@ def _record(desk: Desk, slip: Slip, trial: Any) -> HttpResponse:
             drafts.drop(desk.user, desk.stay, desk.form_name)
             _remember_units(desk.user, slip)
             return _done(desk, entry, "Recorded")
-    slip.key = uuid.uuid4().hex
+    return _key_used(desk)
+
+
+def _key_used(desk: Desk) -> HttpResponse:
+    """The form's number stands for something else already: shown again under a new one, nothing lost."""
+    fresh = desk.posted()
+    fresh.key = uuid.uuid4().hex
+    trial = desk.check(fresh)
     words = "This form was already recorded with other values. Save again to record what is typed now as another entry."
-    slip.notices.append(Notice(Level.IMPOSSIBLE, "", "key_used", words))
-    return _show(desk, slip, trial, refused=True)
+    fresh.notices.append(Notice(Level.IMPOSSIBLE, "", "key_used", words))
+    return _show(desk, fresh, trial, refused=True)
 
 
 def same(entry: Entry, desk: Desk, new: record.NewEntry) -> bool:
@@ -173,6 +180,8 @@ def _correct(desk: Desk, slip: Slip) -> HttpResponse:
         if told.by is None or told.by.key != slip.key:
             return _conflict(desk, slip, told.by)
         entry = told.by  # this very form, sent twice at the same moment
+    if entry.replaces_id != desk.replacing.pk:
+        return _key_used(desk)
     if not same(entry, desk, new):  # the same form, sent from another tab with other values
         return _conflict(desk, slip, entry)
     return _done(desk, entry, "Corrected")

@@ -15,7 +15,7 @@ from worksheet.ward.display import Display
 from worksheet.ward.models import Entry
 from worksheet.ward.record import NewEntry
 
-from . import moments, numbers
+from . import moments, numbers, texts
 
 GAS = ("ph", "pco2", "po2", "hb", "so2", "o2hb", "cohb", "methb", "lactate", "bicarbonate")
 GROUPS: tuple[tuple[str, str, tuple[str, ...]], ...] = (  # in the order in which a gas slip is read out
@@ -221,6 +221,7 @@ def blank(display: Display, entry_units: Mapping[str, str], begun_by: str, zone:
 
 def from_post(posted: Mapping[str, str], confirmed: list[str], display: Display, zone: ZoneInfo, now: datetime) -> Slip:
     """Read a form that was sent (or a draft): parse every text, keep every text."""
+    posted = texts.posted(posted)
     fields = {name: read_value(name, posted, display) for name in names()}
     slip = Slip(
         fields,
@@ -234,10 +235,10 @@ def from_post(posted: Mapping[str, str], confirmed: list[str], display: Display,
         opened=posted.get("opened", ""),
         device=posted.get("device", "0"),
         flow_method=posted.get("flow_method", "0"),
-        note=posted.get("note", "").replace("\r\n", "\n"),
+        note=posted.get("note", ""),
         key=posted.get("key", "")[:80] or uuid.uuid4().hex,
         use_estimate=bool(posted.get("use_estimate")),
-        confirmed=frozenset(confirmed),
+        confirmed=frozenset(texts.plain(token) for token in confirmed),
     )
     slip.moment = moments.read(slip.date, slip.clock, slip.fold, zone, now)
     return slip

@@ -12,7 +12,7 @@ from worksheet.ward.display import Display
 from worksheet.ward.models import Bed, Entry, Stay, Unit
 from worksheet.ward.record import NewEntry
 
-from . import checks, entry_form, numbers
+from . import checks, entry_form, numbers, texts
 from .entry_form import Level, Notice, Slip
 
 KIND_WORDS = {
@@ -86,6 +86,7 @@ def beds_of_unit(unit: Unit, but: Stay | None = None) -> list[tuple[Bed, str]]:
 
 def read(posted: Mapping[str, str], confirmed: list[str], stay: Stay, display: Display, now: datetime) -> EventForm:
     """Read the form as it was sent, or its draft."""
+    posted = texts.posted(posted)
     slip = entry_form.from_post(posted, confirmed, display, stay.unit.zone, now)
     kind_text = posted.get("kind", "")
     kind = next((k for k in KIND_WORDS if str(int(k)) == kind_text), Event.NONE)

@@ -101,6 +101,10 @@ def _correct(desk: Desk, form: EventForm) -> Entry | None:
     try:
         with transaction.atomic():
             stored = record.correct(desk.replacing, desk.user, form.new_entry(), form.slip.reason)
+            if stored.replaces_id != desk.replacing.pk:
+                form.slip.key = uuid.uuid4().hex
+                form.say("", "key_used", "This form was used before for something else. Save again; nothing was saved.")
+                return None
             drafts.drop(desk.user, desk.stay, form_name(desk))
             return stored
     except record.AlreadyReplaced:

@@ -9,8 +9,9 @@ from worksheet.oxygen.quantities import Quantity, UnitOfMeasure
 
 LONGEST = 40  # characters; a longer text is no number of a gas slip
 _PLAIN = str.maketrans({"−": "-", "–": "-", "\u00a0": " ", "\u202f": " ", "\u2009": " "})
-_NUMBER = re.compile(r"([<>]=?|≤|≥)?\s*([+-]?(?:\d+(?:[.,]\d*)?|[.,]\d+))\s*(.*)", re.ASCII | re.DOTALL)
+_NUMBER = re.compile(r"([<>]=?|≤|≥)?\s*([+-]?(?:\d+(?:[.,]\d+)?|[.,]\d+))\s*(.*)", re.ASCII | re.DOTALL)
 _GROUPED = re.compile(r"[<>=≤≥\s]*\d{1,3}(?:[ '’.,]\d{3})+(?:[.,]\d*)?", re.ASCII)
+_HALF = re.compile(r"[<>=≤≥\s]*[+-]?\d+[.,]", re.ASCII)  # the key was pressed, the decimals are still to come
 _SIGNS = {"≤": "<=", "≥": ">="}
 
 
@@ -40,6 +41,10 @@ def parse(text: str) -> Number:
     if match is None or rest[:1].isdigit() or rest[:1] in {".", ",", "'", "’"}:
         if _GROUPED.fullmatch(stripped):
             return Number(problem=f"'{shown}' has a thousands separator; write the number without it.")
+        if _HALF.fullmatch(stripped):
+            return Number(
+                problem=f"'{shown}' ends with the decimal sign; write the decimals, or the number without it."
+            )
         return Number(problem=f"'{shown}' is not a number.")
     comparator = match.group(1) or ""
     value = float(match.group(2).replace(",", "."))

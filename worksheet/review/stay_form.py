@@ -12,7 +12,7 @@ from worksheet.oxygen.quantities import CATALOGUE
 from worksheet.ward.display import Display
 from worksheet.ward.models import Bed, Patient, Stay, Unit
 
-from . import checks, entry_form, moments
+from . import checks, entry_form, moments, texts
 from .entry_form import Level, Notice, ValueField
 
 SIZES = ("height", "weight", "age")
@@ -77,6 +77,7 @@ def of_stay(stay: Stay, display: Display) -> StayForm:
 
 def from_post(posted: Mapping[str, str], confirmed: list[str], display: Display) -> StayForm:
     """Read the form as it was sent; every text is kept."""
+    posted = texts.posted(posted)
     form = StayForm(_fields(posted, display))
     for part in ("identifier", "reference", "date", "clock", "fold", "end_date", "end_clock", "note"):
         setattr(form, part, posted.get(part, "").strip())

@@ -14,6 +14,7 @@ from worksheet.ward import record
 from .entry import Desk, answered, go
 from .entry_page import facts
 from .people import patient_page
+from .texts import plain
 from .versions import REASON_LONGEST, newest
 
 
@@ -21,10 +22,10 @@ from .versions import REASON_LONGEST, newest
 def entry_strike(request: HttpRequest, slug: str, ref: str, entry_id: int) -> HttpResponse:
     """Ask for the reason, then strike out."""
     desk = Desk.of(request, slug, ref, entry_id)
-    reason = request.POST.get("reason", "")
+    reason = plain(request.POST.get("reason", ""))
     problem = ""
     if request.method == "POST":
-        problem = _strike(desk, reason, request.POST.get("key", ""))
+        problem = _strike(desk, reason, plain(request.POST.get("key", "")))
         if not problem:
             messages.success(request, "Struck out. The entry stays readable under corrections.")
             return go(request, patient_page(desk.stay))
@@ -37,9 +38,11 @@ def _strike(desk: Desk, reason: str, key: str) -> str:
     if not 0 < len(reason.strip()) <= REASON_LONGEST:
         return f"Say in a few words why the entry is struck out (at most {REASON_LONGEST} characters)."
     try:
-        record.strike_out(desk.replacing, desk.user, reason, key[:80])
+        struck = record.strike_out(desk.replacing, desk.user, reason, key[:80])
     except record.AlreadyReplaced:
         return "Somebody was faster: see what became of this entry below. Nothing of yours was saved."
+    if not struck.struck or struck.replaces_id != desk.replacing.pk:
+        return "This form was used before for something else. Open the page again; nothing of yours was saved."
     return ""
 
 
