@@ -22,12 +22,17 @@ def csv_of(rows: int) -> bytes:
     random = np.random.default_rng(3)
     start = datetime(2025, 1, 1, tzinfo=UTC)
     columns = {
-        "ph": random.normal(7.36, 0.07, rows).round(2), "pco2": random.normal(42, 7, rows).round(0),
-        "po2": random.normal(92, 22, rows).clip(35, 300).round(0), "hb": random.normal(9.6, 1.4, rows).clip(5, 16).round(1),
-        "so2": random.normal(95.5, 2, rows).clip(70, 100).round(1), "lactate": random.gamma(2, 0.9, rows).clip(0.3, 19).round(1),
-        "fio2": random.choice([21, 30, 40, 50, 60], rows), "cardiac_output": random.normal(5.4, 1, rows).clip(2, 12).round(1),
-        "temperature": random.normal(37.1, 0.6, rows).round(1), "heart_rate": random.normal(92, 15, rows).clip(40, 180).round(0),
-    }  # fmt: skip
+        "ph": random.normal(7.36, 0.07, rows).round(2),
+        "pco2": random.normal(42, 7, rows).round(0),
+        "po2": random.normal(92, 22, rows).clip(35, 300).round(0),
+        "hb": random.normal(9.6, 1.4, rows).clip(5, 16).round(1),
+        "so2": random.normal(95.5, 2, rows).clip(70, 100).round(1),
+        "lactate": random.gamma(2, 0.9, rows).clip(0.3, 19).round(1),
+        "fio2": random.choice([21, 30, 40, 50, 60], rows),
+        "cardiac_output": random.normal(5.4, 1, rows).clip(2, 12).round(1),
+        "temperature": random.normal(37.1, 0.6, rows).round(1),
+        "heart_rate": random.normal(92, 15, rows).clip(40, 180).round(0),
+    }
     texts = [np.where(random.random(rows) < 0.3, "", np.char.mod("%g", column)) for column in columns.values()]
     sites = np.where(random.random(rows) < 0.6, "arterial", "")
     lines = ["stay,time,site," + ",".join(columns)]
@@ -38,7 +43,7 @@ def csv_of(rows: int) -> bytes:
 
 
 def bare_seconds(rows: list[tuple], columns: list[str], schema: list[str]) -> float:
-    """A parameterised executemany of the same rows into the same table in memory (as the test database), one commit [s of CPU]."""
+    """A bare executemany of the same rows into the same table in memory (as the test database) [s]."""
     db = sqlite3.connect(":memory:")
     for statement in schema:
         db.execute(statement)
@@ -73,11 +78,21 @@ def test_csv_of_100000_rows(ratio_row):
         cursor.execute("SELECT * FROM ward_entry")
         columns = [c[0] for c in cursor.description]
         rows = cursor.fetchall()
-        cursor.execute("SELECT sql FROM sqlite_master WHERE tbl_name = 'ward_entry' AND type IN ('table', 'index') AND sql IS NOT NULL")
+        cursor.execute(
+            "SELECT sql FROM sqlite_master WHERE tbl_name = 'ward_entry' AND type IN ('table', 'index')"
+            " AND sql IS NOT NULL"
+        )
         schema = [row[0] for row in cursor.fetchall()]
     bare = min(bare_seconds(rows, columns, schema) for _ in range(3))
     rate = stored / seconds
-    ratio = ratio_row("CSV in, 100,000 rows, findings and audit (CPU)", worked, "bare executemany of the same rows", bare, "≤ 8", f"{rate:,.0f} rows/s")
+    ratio = ratio_row(
+        "CSV in, 100,000 rows, findings and audit (CPU)",
+        worked,
+        "bare executemany of the same rows",
+        bare,
+        "≤ 8",
+        f"{rate:,.0f} rows/s",
+    )
     assert rate >= 4000
     assert ratio <= 8
 
@@ -87,17 +102,43 @@ def fhir_of(observations: int) -> bytes:
         return {
             "fullUrl": f"urn:uuid:{i}",
             "resource": {
-                "resourceType": "Observation", "id": f"o{i}", "status": "final",
-                "category": [{"coding": [{"system": "http://terminology.hl7.org/CodeSystem/observation-category", "code": "laboratory"}]}],
-                "code": {"coding": [{"system": "http://loinc.org", "code": "2703-7", "display": "Oxygen [Partial pressure] in Arterial blood"}]},
+                "resourceType": "Observation",
+                "id": f"o{i}",
+                "status": "final",
+                "category": [
+                    {
+                        "coding": [
+                            {
+                                "system": "http://terminology.hl7.org/CodeSystem/observation-category",
+                                "code": "laboratory",
+                            }
+                        ]
+                    }
+                ],
+                "code": {
+                    "coding": [
+                        {
+                            "system": "http://loinc.org",
+                            "code": "2703-7",
+                            "display": "Oxygen [Partial pressure] in Arterial blood",
+                        }
+                    ]
+                },
                 "subject": {"identifier": {"system": "urn:example:unit", "value": f"K-{i % 50}"}},
                 "effectiveDateTime": f"2025-02-{1 + i // 1440 % 28:02d}T{i // 60 % 24:02d}:{i % 60:02d}:00+01:00",
-                "valueQuantity": {"value": 60 + i % 60, "unit": "mmHg", "system": "http://unitsofmeasure.org", "code": "mm[Hg]"},
+                "valueQuantity": {
+                    "value": 60 + i % 60,
+                    "unit": "mmHg",
+                    "system": "http://unitsofmeasure.org",
+                    "code": "mm[Hg]",
+                },
                 "specimen": {"identifier": {"value": f"BG-{i}"}},
             },
-        }  # fmt: skip
+        }
 
-    return json.dumps({"resourceType": "Bundle", "type": "collection", "entry": [one(i) for i in range(observations)]}).encode()
+    return json.dumps(
+        {"resourceType": "Bundle", "type": "collection", "entry": [one(i) for i in range(observations)]}
+    ).encode()
 
 
 def test_fhir_bundle_parse(ratio_row):
@@ -107,5 +148,7 @@ def test_fhir_bundle_parse(ratio_row):
     assert all(row.fate is None and row.cells for row in parsed.rows)
     seconds = median_seconds(lambda: fhir_in.parse(data, rules, {}))
     plain = median_seconds(lambda: json.loads(data))
-    ratio = ratio_row("FHIR Bundle to rows, 5,000 Observations", seconds, "json.loads", plain, "≤ 10", f"{5000 / seconds:,.0f}/s")
+    ratio = ratio_row(
+        "FHIR Bundle to rows, 5,000 Observations", seconds, "json.loads", plain, "≤ 10", f"{5000 / seconds:,.0f}/s"
+    )
     assert ratio <= 10

@@ -12,10 +12,18 @@ from worksheet.transfer.times import TimeRules
 RULES = TimeRules(ZoneInfo("Europe/Zurich"), now=datetime(2026, 3, 1, tzinfo=UTC))
 
 
+def said(refusal):
+    """A refusal is a sentence."""
+    assert len(str(refusal)) > 10
+    assert str(refusal).rstrip().endswith((".", "?"))
+
+
 def _settled(parsed, *, observations):
     """Each row has a fate, or all that an entry needs; and the rows can be grouped."""
     for row in parsed.rows:
-        assert row.fate is not None or (row.patient is not None and row.time is not None and (row.cells or row.note or row.event))
+        assert row.fate is not None or (
+            row.patient is not None and row.time is not None and (row.cells or row.note or row.event)
+        )
         assert row.fate is None or row.reason or row.fate in ("new", "same")
         assert all(cell.value is None or -1e6 < cell.value < 1e6 for cell in row.cells.values())
     drafts_of(parsed.rows, observations=observations)
@@ -26,7 +34,7 @@ def csv(data: bytes) -> None:
     try:
         _settled(tabular.parse_csv(data, tabular.TableOptions(RULES)), observations=False)
     except Refused as refusal:
-        assert str(refusal)
+        said(refusal)
 
 
 def fhir(data: bytes) -> None:
@@ -34,7 +42,7 @@ def fhir(data: bytes) -> None:
     try:
         _settled(fhir_in.parse(data, RULES, {}), observations=True)
     except Refused as refusal:
-        assert str(refusal)
+        said(refusal)
 
 
 def hl7(data: bytes) -> None:
@@ -49,7 +57,7 @@ def hl7(data: bytes) -> None:
     try:
         _settled(hl7_in.parse(data, RULES, {}), observations=True)
     except Refused as refusal:
-        assert str(refusal)
+        said(refusal)
 
 
 TARGETS = {"csv": csv, "fhir": fhir, "hl7": hl7}

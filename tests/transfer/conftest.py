@@ -55,4 +55,3 @@ def bring(unit, nurse):
         return pipeline.run(unit, nurse, f"file.{kind}", kind, raw, options(**more), dry_run=dry_run)
 
     return run
-

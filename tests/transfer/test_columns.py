@@ -69,10 +69,19 @@ def test_contract_columns_whose_values_are_in_another_unit_are_asked(bring):
 
 @pytest.mark.parametrize(
     "header,quantity,unit",
-    [("pO2 (kPa)", "po2", "kPa"), ("pO2_mmHg", "po2", "mm[Hg]"), ("Hb g/dl", "hb", "g/dL"), ("HGB [g/L]", "hb", "g/L"),
-     ("Temp. (°C)", "temperature", "Cel"), ("FiO2 (%)", "fio2", "%"), ("Laktat (mmol/l)", "lactate", "mmol/L"),
-     ("SpO₂ [%]", "spo2", "%"), ("PCO2 [mm[Hg]]", "pco2", "mm[Hg]"), ("Cardiac Output, L/min", "cardiac_output", "L/min")],
-)  # fmt: skip
+    [
+        ("pO2 (kPa)", "po2", "kPa"),
+        ("pO2_mmHg", "po2", "mm[Hg]"),
+        ("Hb g/dl", "hb", "g/dL"),
+        ("HGB [g/L]", "hb", "g/L"),
+        ("Temp. (°C)", "temperature", "Cel"),
+        ("FiO2 (%)", "fio2", "%"),
+        ("Laktat (mmol/l)", "lactate", "mmol/L"),
+        ("SpO₂ [%]", "spo2", "%"),
+        ("PCO2 [mm[Hg]]", "pco2", "mm[Hg]"),
+        ("Cardiac Output, L/min", "cardiac_output", "L/min"),
+    ],
+)
 def test_units_in_headers(header, quantity, unit):
     _, read_as = plan_of(f'stay id;time;"{header}"\n1;2026-02-11T05:40:00Z;1\n')
     column = read_as.columns[2]
@@ -126,13 +135,17 @@ def test_a_cell_in_another_unit_than_its_column_is_refused(bring):
 
 @pytest.mark.parametrize("text", ["1,234", "1.234,5", "12.5.3", "1e999", "١٢", "0x10", "1_000", "12;3"])
 def test_no_number_is_guessed_from_odd_texts(bring, text):
-    seen = bring(f'stay;time;hb\nA;2026-02-11T05:40:00Z;"{text}"\nA;2026-02-11T06:40:00Z;9.5\nA;2026-02-11T07:40:00Z;9.6\n', confirmed=True)
+    seen = bring(
+        f'stay;time;hb\nA;2026-02-11T05:40:00Z;"{text}"\nA;2026-02-11T06:40:00Z;9.5\nA;2026-02-11T07:40:00Z;9.6\n',
+        confirmed=True,
+    )
     assert seen.rows[0].fate == "invalid"
 
 
 def test_time_beside_date_is_the_clock_and_sample_may_be_the_site(bring):
     text = (
-        "Patient;Date;Time;Sample;pO2 (kPa);pH\n1;11.02.2026;05:40;arterial;12,1;7,30\n1;11.02.2026;06:40;venous;5,1;7,28\n"
+        "Patient;Date;Time;Sample;pO2 (kPa);pH\n1;11.02.2026;05:40;arterial;12,1;7,30\n"
+        "1;11.02.2026;06:40;venous;5,1;7,28\n"
         "1;11.02.2026;06:50;umbilical;5,1;7,28\nTotal;3\n"
     )
     with pytest.raises(Refused, match="no time zone"):

@@ -76,7 +76,10 @@ def test_a_refused_constant_of_the_person_does_not_cost_the_gases(bring):
 BAD = {
     "text in a number field": ("A,2026-02-11T05:40:00+01:00,arterial,acid,40,90,97,50", "pH: 'acid' is not a number"),
     "date in the future": ("A,2031-02-11T05:40:00+01:00,arterial,7.3,40,90,97,50", "is in the future"),
-    "saturation of 140": ("A,2026-02-11T05:40:00+01:00,arterial,7.3,40,90,140,50", "sO2 140 % is impossible (1 to 100.5 %)"),
+    "saturation of 140": (
+        "A,2026-02-11T05:40:00+01:00,arterial,7.3,40,90,140,50",
+        "sO2 140 % is impossible (1 to 100.5 %)",
+    ),
     "pH of 74": ("A,2026-02-11T05:40:00+01:00,arterial,74,40,90,97,50", "pH 74 is impossible (6.3 to 8.2)"),
     "unknown site": ("A,2026-02-11T05:40:00+01:00,umbilical,7.3,40,90,97,50", "site: 'umbilical' is not known"),
     "broken row": ("A,2026-02-11T05:40:00+01:00,arterial,7.3", "the row is broken: it has 4 cells, the header has 8"),
@@ -205,7 +208,9 @@ def test_a_gas_without_a_site_is_arterial_and_says_so(bring):
 
 
 def test_fio2_as_a_fraction_and_saturation_never_rescaled(bring):
-    seen = bring("stay,time,site,po2,so2,fio2\nA,2026-02-11T05:40:00Z,arterial,90,,0.5\nA,2026-02-11T06:40:00Z,arterial,90,0.97,50\n")
+    seen = bring(
+        "stay,time,site,po2,so2,fio2\nA,2026-02-11T05:40:00Z,arterial,90,,0.5\nA,2026-02-11T06:40:00Z,arterial,90,0.97,50\n"
+    )
     assert Entry.objects.get().fio2 == 0.5
     assert seen.rows[1].fate == "invalid"
     assert "sO2 0.97 % is impossible" in seen.rows[1].reason

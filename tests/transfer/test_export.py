@@ -15,11 +15,22 @@ from worksheet.transfer import csv_out, fhir_out
 from worksheet.transfer.csv_text import safe, unsafe
 from worksheet.transfer.leaving import gather
 from worksheet.ward import record
-from worksheet.ward.models import AuditEvent, Entry, Patient, Stay, Unit
+from worksheet.ward.models import AuditEvent, Patient, Stay, Unit
 
 T0 = datetime(2026, 2, 11, 4, 40, tzinfo=UTC)
-GAS = {"ph": 7.31, "pco2": 41.2, "po2": 87.5, "so2": 0.963, "lactate": 2.4, "cohb": 0.012, "methb": 0.008, "sulfhb": 0.001,
-       "barometric_pressure": 720.0, "fio2": 0.5, "age": 93.0}  # fmt: skip
+GAS = {
+    "ph": 7.31,
+    "pco2": 41.2,
+    "po2": 87.5,
+    "so2": 0.963,
+    "lactate": 2.4,
+    "cohb": 0.012,
+    "methb": 0.008,
+    "sulfhb": 0.001,
+    "barometric_pressure": 720.0,
+    "fio2": 0.5,
+    "age": 93.0,
+}
 
 
 @pytest.fixture
@@ -33,11 +44,16 @@ def filled(unit, stay, nurse):
     new = record.NewEntry
     entries = [
         new(T0, Site.ARTERIAL, {**GAS, "hb": 8.1}, device=Device.VENTILATOR, sample="BG-1", note="=HYPERLINK(1)"),
-        new(T0 + timedelta(hours=1), Site.ARTERIAL, {**GAS, "po2": 500.0}, typed={"po2": {"text": ">500", "unit": "mmHg", "comparator": ">"}}),
+        new(
+            T0 + timedelta(hours=1),
+            Site.ARTERIAL,
+            {**GAS, "po2": 500.0},
+            typed={"po2": {"text": ">500", "unit": "mmHg", "comparator": ">"}},
+        ),
         new(T0 + timedelta(minutes=3), Site.CENTRAL_VENOUS, {"so2": 0.68, "po2": 38.0, "ph": 7.28}),
         new(T0, Site.NONE, {"cardiac_output": 5.4, "spo2": 0.95}, flow_method=FlowMethod.THERMODILUTION),
         new(T0 + timedelta(minutes=30), event=Event.BLEED, event_amount=600.0),
-    ]  # fmt: skip
+    ]
     for entry in entries:
         record.record(stay, nurse, entry)
     return stay

@@ -1,4 +1,4 @@
-"""FHIR R4 in: the specification's examples, serial gases, status, comparators, units, codes that are open to two readings."""
+"""FHIR R4 in: the specification's examples, serial gases, status, comparators, units, codes with two readings."""
 
 import copy
 import json
@@ -15,12 +15,15 @@ KPA = 7.500617
 
 def obs(code, value, unit, *, system="http://loinc.org", display="", ucum=None, **more):
     return {
-        "resourceType": "Observation", "id": f"o{code}-{value}", "status": "final",
+        "resourceType": "Observation",
+        "id": f"o{code}-{value}",
+        "status": "final",
         "code": {"coding": [{"system": system, "code": code, "display": display}]},
         "subject": {"identifier": {"system": "urn:example:unit-7", "value": "K-9"}},
         "effectiveDateTime": "2026-02-11T05:40:00+01:00",
-        "valueQuantity": {"value": value, "unit": unit, "system": "http://unitsofmeasure.org", "code": ucum or unit}, **more,
-    }  # fmt: skip
+        "valueQuantity": {"value": value, "unit": unit, "system": "http://unitsofmeasure.org", "code": ucum or unit},
+        **more,
+    }
 
 
 def bundle(*resources):
@@ -79,9 +82,15 @@ def test_a_value_entered_in_error_is_taken_out_of_its_entry(bring):
 
 def test_amended_corrects_and_late_preliminary_does_not(bring):
     bring(bundle(obs("2703-7", 58, "mm[Hg]", **SAMPLE) | {"status": "preliminary"}), "fhir")
-    assert bring(bundle(obs("2703-7", 85, "mm[Hg]", **SAMPLE) | {"status": "amended"}), "fhir").counts() == {"corrects": 1}
-    assert bring(bundle(obs("2703-7", 60, "mm[Hg]", **SAMPLE) | {"status": "preliminary"}), "fhir").counts() == {"same": 1}
-    assert bring(bundle(obs("2703-7", 70, "mm[Hg]", **SAMPLE)), "fhir").counts() == {"same": 1}  # final: older than amended
+    assert bring(bundle(obs("2703-7", 85, "mm[Hg]", **SAMPLE) | {"status": "amended"}), "fhir").counts() == {
+        "corrects": 1
+    }
+    assert bring(bundle(obs("2703-7", 60, "mm[Hg]", **SAMPLE) | {"status": "preliminary"}), "fhir").counts() == {
+        "same": 1
+    }
+    assert bring(bundle(obs("2703-7", 70, "mm[Hg]", **SAMPLE)), "fhir").counts() == {
+        "same": 1
+    }  # final: older than amended
     assert Entry.objects.current().get().po2 == 85
 
 
@@ -92,10 +101,14 @@ def test_a_second_final_value_is_a_conflict(bring):
 
 @pytest.mark.parametrize(
     "more,quantity",
-    [(SAMPLE, "so2"), ({"category": [{"coding": [{"code": "vital-signs"}]}]}, "spo2"),
-     ({"method": {"coding": [{"display": "Pulse oximetry"}]}}, "spo2"), ({"device": {"display": "pulse oximeter 3"}}, "spo2"),
-     ({}, "")],
-)  # fmt: skip
+    [
+        (SAMPLE, "so2"),
+        ({"category": [{"coding": [{"code": "vital-signs"}]}]}, "spo2"),
+        ({"method": {"coding": [{"display": "Pulse oximetry"}]}}, "spo2"),
+        ({"device": {"display": "pulse oximeter 3"}}, "spo2"),
+        ({}, ""),
+    ],
+)
 def test_2708_6_is_resolved_by_sample_or_method_else_a_conflict(bring, more, quantity):
     seen = bring(bundle(obs("2708-6", 97, "%", **more)), "fhir")
     if quantity:
@@ -111,7 +124,10 @@ def test_a_label_that_contradicts_its_code_is_a_conflict(bring):
 
 
 def test_units(bring):
-    cases = [(obs("2703-7", 12, "kilos"), "the unit 'kilos' is not known"), (obs("718-7", 7.2, ""), "the unit is missing (g/dL or g/L or mmol/L?)")]  # fmt: skip
+    cases = [
+        (obs("2703-7", 12, "kilos"), "the unit 'kilos' is not known"),
+        (obs("718-7", 7.2, ""), "the unit is missing (g/dL or g/L or mmol/L?)"),
+    ]
     for resource, words in cases:
         seen = bring(bundle(resource), "fhir")
         assert seen.counts() == {"not understood": 1}
@@ -124,8 +140,10 @@ def test_units(bring):
 def test_components_and_panels(bring):
     panel = obs("24336-0", 1, "1")
     del panel["valueQuantity"]
-    panel["component"] = [{"code": o["code"], "valueQuantity": o["valueQuantity"]}
-                          for o in (obs("2744-1", 7.3, "[pH]"), obs("2019-8", 40, "mm[Hg]"), obs("718-7", 9, "g/dL"))]  # fmt: skip
+    panel["component"] = [
+        {"code": o["code"], "valueQuantity": o["valueQuantity"]}
+        for o in (obs("2744-1", 7.3, "[pH]"), obs("2019-8", 40, "mm[Hg]"), obs("718-7", 9, "g/dL"))
+    ]
     seen = bring(bundle(panel), "fhir")
     assert seen.counts() == {"new": 3}
     entry = Entry.objects.get()
@@ -134,8 +152,18 @@ def test_components_and_panels(bring):
 
 def test_patient_specimen_report_and_encounter_are_followed(bring):
     resources = [
-        {"resourceType": "Patient", "id": "p", "identifier": [{"system": "urn:x", "value": "MR-5"}], "birthDate": "1950-01-01"},
-        {"resourceType": "Specimen", "id": "s", "identifier": [{"value": "V-1"}], "type": {"text": "Central venous blood"}},
+        {
+            "resourceType": "Patient",
+            "id": "p",
+            "identifier": [{"system": "urn:x", "value": "MR-5"}],
+            "birthDate": "1950-01-01",
+        },
+        {
+            "resourceType": "Specimen",
+            "id": "s",
+            "identifier": [{"value": "V-1"}],
+            "type": {"text": "Central venous blood"},
+        },
         obs("11556-8", 38, "mm[Hg]", subject={"reference": "Patient/p"}, specimen={"reference": "Specimen/s"}),
         obs("20564-1", 68, "%", subject={"reference": "Patient/p"}, specimen={"reference": "Specimen/s"}),
     ]
@@ -152,7 +180,10 @@ def test_a_specimen_that_contradicts_the_code_is_a_conflict(bring):
 
 
 def test_ndjson_lists_and_single_resources(bring):
-    lines = "\n".join(json.dumps(obs("2744-1", v, "[pH]", effectiveDateTime=f"2026-02-11T0{n}:40:00Z")) for n, v in enumerate((7.3, 7.2)))
+    lines = "\n".join(
+        json.dumps(obs("2744-1", v, "[pH]", effectiveDateTime=f"2026-02-11T0{n}:40:00Z"))
+        for n, v in enumerate((7.3, 7.2))
+    )
     assert bring(lines, "fhir").counts() == {"new": 2}
     assert bring([obs("2744-1", 7.1, "[pH]", effectiveDateTime="2026-02-12T00:40:00Z")], "fhir").counts() == {"new": 1}
 
@@ -160,16 +191,30 @@ def test_ndjson_lists_and_single_resources(bring):
 def test_impossible_values_times_and_missing_patients_have_reasons(bring):
     nobody = obs("2744-1", 7.3, "[pH]")
     del nobody["subject"]
-    seen = bring(bundle(obs("2744-1", 74, "[pH]"), obs("2744-1", 7.3, "[pH]", effectiveDateTime="2026-02"), nobody,
-                        obs("2744-1", 7.3, "[pH]", status="odd"), {"resourceType": "Medication"}), "fhir")  # fmt: skip
+    seen = bring(
+        bundle(
+            obs("2744-1", 74, "[pH]"),
+            obs("2744-1", 7.3, "[pH]", effectiveDateTime="2026-02"),
+            nobody,
+            obs("2744-1", 7.3, "[pH]", status="odd"),
+            {"resourceType": "Medication"},
+        ),
+        "fhir",
+    )
     assert [r.fate for r in seen.rows] == ["invalid", "invalid", "unmatched", "not understood", "not understood"]
 
 
 @pytest.mark.parametrize(
     "text,words",
-    [("{", "not valid JSON"), ('{"resourceType": "Bundle"}', "no Observation"), ("[1, 2]", "not a FHIR resource"),
-     ("[" * 100_000, "nested too deeply|not valid JSON"), (b"\xff{}", "not UTF-8"), ('{"a":1}\n{"b"\n', "not valid JSON")],
-)  # fmt: skip
+    [
+        ("{", "not valid JSON"),
+        ('{"resourceType": "Bundle"}', "no Observation"),
+        ("[1, 2]", "not a FHIR resource"),
+        ("[" * 100_000, "nested too deeply|not valid JSON"),
+        (b"\xff{}", "not UTF-8"),
+        ('{"a":1}\n{"b"\n', "not valid JSON"),
+    ],
+)
 def test_files_that_cannot_be_read_are_one_sentence(bring, text, words):
     with pytest.raises(Refused, match=words):
         bring(text, "fhir")

@@ -91,14 +91,20 @@ def test_characters_of_8859_1(bring7):
 
 @pytest.mark.parametrize("version", ["2.3", "2.3.1", "2.4", "2.5", "2.5.1", "2.6", "2.7", "2.8"])
 def test_versions(bring7, version):
-    assert bring7(message(*gas("NM|2744-1^pH^LN||7.3||||||F"), msh=MSH.replace("2.5.1", version))).counts() == {"new": 1}
+    assert bring7(message(*gas("NM|2744-1^pH^LN||7.3||||||F"), msh=MSH.replace("2.5.1", version))).counts() == {
+        "new": 1
+    }
 
 
 @pytest.mark.parametrize(
     "msh,words",
-    [(MSH.replace("2.5.1", "3.0"), "version 3.0 is not taken"), (MSH.replace("ORU^R01", "ADT^A01"), "type ADT^A01 are not taken"),
-     (MSH.replace("|P|", "|T|"), "training or test"), (MSH.replace("{id}", ""), "no control id")],
-)  # fmt: skip
+    [
+        (MSH.replace("2.5.1", "3.0"), "version 3.0 is not taken"),
+        (MSH.replace("ORU^R01", "ADT^A01"), "type ADT^A01 are not taken"),
+        (MSH.replace("|P|", "|T|"), "training or test"),
+        (MSH.replace("{id}", ""), "no control id"),
+    ],
+)
 def test_messages_of_another_kind_are_refused(bring7, msh, words):
     seen = bring7(message(*gas("NM|2744-1^pH^LN||7.3||||||F"), msh=msh))
     assert seen.counts() == {"invalid": 1}
@@ -107,16 +113,18 @@ def test_messages_of_another_kind_are_refused(bring7, msh, words):
 
 @pytest.mark.parametrize(
     "result,fate,words",
-    [("NM|2703-7^pO2^LN||12.4||||||F", "not understood", "the unit is missing (mmHg or kPa?)"),
-     ("NM|2703-7^pO2^LN||12.4|furlong|||||F", "not understood", "the unit 'furlong' is not known"),
-     ("NM|2703-7^pO2^LN||high|kPa|||||F", "invalid", "'high' is not a number"),
-     ("NM|2703-7^pO2^LN||12.4|kPa|||||Q", "not understood", "the status 'Q' is not known"),
-     ("NM|2703-7^pO2^LN||900|kPa|||||F", "invalid", "is impossible"),
-     ("NM|2951-2^Sodium^LN||140|mmol/L|||||F", "not understood", "2951-2"),
-     ("NM|NA^Natrium^L||140|mmol/L|||||F", "not understood", "NA (Natrium)"),
-     ("NM|2703-7^pO2^LN||12.4~12.6|kPa|||||F", "not understood", "several values"),
-     ("SN|2703-7^pO2^LN||10^-^12|kPa|||||F", "not understood", "a range or ratio")],
-)  # fmt: skip
+    [
+        ("NM|2703-7^pO2^LN||12.4||||||F", "not understood", "the unit is missing (mmHg or kPa?)"),
+        ("NM|2703-7^pO2^LN||12.4|furlong|||||F", "not understood", "the unit 'furlong' is not known"),
+        ("NM|2703-7^pO2^LN||high|kPa|||||F", "invalid", "'high' is not a number"),
+        ("NM|2703-7^pO2^LN||12.4|kPa|||||Q", "not understood", "the status 'Q' is not known"),
+        ("NM|2703-7^pO2^LN||900|kPa|||||F", "invalid", "is impossible"),
+        ("NM|2951-2^Sodium^LN||140|mmol/L|||||F", "not understood", "2951-2"),
+        ("NM|NA^Natrium^L||140|mmol/L|||||F", "not understood", "NA (Natrium)"),
+        ("NM|2703-7^pO2^LN||12.4~12.6|kPa|||||F", "not understood", "several values"),
+        ("SN|2703-7^pO2^LN||10^-^12|kPa|||||F", "not understood", "a range or ratio"),
+    ],
+)
 def test_results_that_are_not_stored_have_a_reason(bring7, result, fate, words):
     seen = bring7(message(*gas(result)))
     assert seen.rows[0].fate == fate
@@ -141,7 +149,9 @@ def test_the_doubled_hour_waits(bring7):
 
 
 def test_specimen_segments_and_venous_samples(bring7):
-    segments = gas("NM|11556-8^pO2^LN||38|mm[Hg]|||||F", "NM|20564-1^sO2^LN||68|%|||||F", obr="OBR|1|||BGA^Blood gas^L|||{when}")
+    segments = gas(
+        "NM|11556-8^pO2^LN||38|mm[Hg]|||||F", "NM|20564-1^sO2^LN||68|%|||||F", obr="OBR|1|||BGA^Blood gas^L|||{when}"
+    )
     spm = "SPM|1|^V-77||BLDMV^Mixed venous blood^HL70487|||||||||||||20260211053500"
     assert bring7(message(*segments, spm)).counts() == {"new": 2}
     entry = Entry.objects.get()
@@ -159,7 +169,7 @@ def test_a_withdrawn_result(bring7):
 def test_patients_by_identifier_never_by_name(bring7, stay):
     other = message(*gas("NM|2744-1^pH^LN||7.3||||||F"), pid="PID|||^^^UNIT7^MR||K-2041^Eins")
     assert bring7(other, create=False).counts() == {"unmatched": 1}
-    stay.patient.birth_date = datetime(1940, 1, 1).date()  # noqa: DTZ001
+    stay.patient.birth_date = datetime(1940, 1, 1).date()
     stay.patient.save()
     wrong = message(*gas("NM|2744-1^pH^LN||7.3||||||F"), pid=PID.replace("K-9", "K-2041"))
     seen = bring7(wrong, create=False)

@@ -1,4 +1,4 @@
-"""Files made to harm: a clear refusal, in bounded memory and time. Each is read in a process whose memory is measured."""
+"""Files made to harm: a clear refusal, in bounded memory and time. Each is read in a process of its own."""
 
 import json
 import subprocess
@@ -38,7 +38,9 @@ print(json.dumps({"said": said, "fates": fates, "megabytes": peak, "seconds": ti
 
 
 def read(path):
-    done = subprocess.run([sys.executable, "-c", READ, str(path)], cwd=ROOT, capture_output=True, text=True, timeout=2 * SECONDS)
+    done = subprocess.run(
+        [sys.executable, "-c", READ, str(path)], cwd=ROOT, capture_output=True, text=True, timeout=2 * SECONDS
+    )
     assert done.returncode == 0, done.stderr[-2000:]
     return json.loads(done.stdout)
 
@@ -53,15 +55,28 @@ MSH = b"MSH|^~\\&|A|B|C|D|20260211||ORU^R01|1|P|2.5\rPID|||K-1\rOBR|1||||||20260
 
 
 def minutes(n):
-    return b"".join(b"S%d,2026-02-%02dT%02d:%02d:00Z,arterial,7.%d,%d\n" % (i % 900, 1 + i // 1440 % 28, i // 60 % 24, i % 60, 300 + i % 90, 60 + i % 70) for i in range(n))
+    return b"".join(
+        b"S%d,2026-02-%02dT%02d:%02d:00Z,arterial,7.%d,%d\n"
+        % (i % 900, 1 + i // 1440 % 28, i // 60 % 24, i % 60, 300 + i % 90, 60 + i % 70)
+        for i in range(n)
+    )
 
 
 HOSTILE = {
     "more bytes than allowed": (lambda: HEAD + ROW * 600_000, "larger than 20 MB"),
-    "more rows than allowed": (lambda: HEAD + b"A,2026-02-11T05:40:00Z,arterial,7,9\n" * 150_000, "at most 120,000 rows"),
+    "more rows than allowed": (
+        lambda: HEAD + b"A,2026-02-11T05:40:00Z,arterial,7,9\n" * 150_000,
+        "at most 120,000 rows",
+    ),
     "as many rows as allowed": (lambda: HEAD + minutes(119_000), ""),
-    "a cell of 10 MB": (lambda: HEAD + ROW + b"A,2026-02-11T05:40:00Z,arterial," + b"7" * 10_000_000 + b",90\n" + ROW, ""),
-    "a quoted cell of 10 MB": (lambda: HEAD + ROW + b'A,"' + b"x\n" * 5_000_000 + b'",arterial,7.3,90\n', "at most 120,000 rows"),
+    "a cell of 10 MB": (
+        lambda: HEAD + ROW + b"A,2026-02-11T05:40:00Z,arterial," + b"7" * 10_000_000 + b",90\n" + ROW,
+        "",
+    ),
+    "a quoted cell of 10 MB": (
+        lambda: HEAD + ROW + b'A,"' + b"x\n" * 5_000_000 + b'",arterial,7.3,90\n',
+        "at most 120,000 rows",
+    ),
     "an open quotation mark": (lambda: HEAD + b'A,"2026-02-11T05:40:00Z,arterial,7.3,90\n' + ROW * 20_000, ""),
     "a header of 100,000 columns": (lambda: HEAD[:-1] + b",x" * 100_000 + b"\n" + ROW, "columns"),
     "only separators": (lambda: b"," * 10_000_000, "No header row"),
@@ -71,7 +86,10 @@ HOSTILE = {
     "deep JSON": (lambda: b'{"a":' * 3_000_000 + b"1" + b"}" * 1_000, "nested too deeply|not valid JSON"),
     "deep lists": (lambda: b"[" * 10_000_000, "nested too deeply|not valid JSON"),
     "deep resources": (lambda: b'{"resourceType":"Bundle","entry":[{"resource":' * 400 + OBS + b"}]}" * 400, ""),
-    "many observations": (lambda: b'{"resourceType":"Bundle","entry":[' + b",".join([b'{"resource":' + OBS + b"}"] * 60_000) + b"]}", ""),
+    "many observations": (
+        lambda: b'{"resourceType":"Bundle","entry":[' + b",".join([b'{"resource":' + OBS + b"}"] * 60_000) + b"]}",
+        "",
+    ),
     "a number of 10 MB": (lambda: OBS.replace(b"7.3", b"7" * 10_000_000), "not valid JSON"),
     "a number out of range": (lambda: OBS.replace(b"7.3", b"1e999"), ""),
     "not a number": (lambda: OBS.replace(b"7.3", b"NaN"), ""),

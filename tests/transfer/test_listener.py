@@ -1,6 +1,7 @@
 """The listener: frames however they are cut, acknowledged after commit, duplicates once, killed at any moment."""
 
 import asyncio
+import contextlib
 import json
 import os
 import signal
@@ -78,10 +79,16 @@ def test_the_same_id_with_other_content_is_not_lost(take):
 
 @pytest.mark.parametrize(
     "raw,code,words",
-    [(b"garbage", "AR", "does not begin with MSH"), (gas().replace(b"ORU^R01", b"ADT^A01"), "AR", "only ORU"),
-     (gas().replace(b"POC|LAB", b"XXX|YYY"), "AR", "no unit is mapped"), (gas().replace(b"|P|", b"|T|"), "AR", "training or test"),
-     (gas()[:48], "AR", "version"), (gas().split(b"OBR")[0], "AR", "no result"), (gas() + b"\x00", "AR", "NUL")],
-)  # fmt: skip
+    [
+        (b"garbage", "AR", "does not begin with MSH"),
+        (gas().replace(b"ORU^R01", b"ADT^A01"), "AR", "only ORU"),
+        (gas().replace(b"POC|LAB", b"XXX|YYY"), "AR", "no unit is mapped"),
+        (gas().replace(b"|P|", b"|T|"), "AR", "training or test"),
+        (gas()[:48], "AR", "version"),
+        (gas().split(b"OBR")[0], "AR", "no result"),
+        (gas() + b"\x00", "AR", "NUL"),
+    ],
+)
 def test_refused_messages_are_kept_with_their_reason(take, raw, code, words):
     answer = take(raw)
     assert answer.code == code
@@ -114,9 +121,15 @@ def test_unmatched_results_wait_and_are_acknowledged(take, unit):
 
 @pytest.mark.parametrize(
     "text,words",
-    [("{", "not valid JSON"), ("{}", "has to look like"), ('{"*": "nowhere"}', "no unit 'nowhere'"), ('{"*": 3}', "has to name a unit"),
-     ('{"*": {"unit": "u7", "zone": "Mars/Base"}}', "unknown time zone"), ('{"*": {"unit": "u7", "codes": {"X": "sodium"}}}', "unknown quantities")],
-)  # fmt: skip
+    [
+        ("{", "not valid JSON"),
+        ("{}", "has to look like"),
+        ('{"*": "nowhere"}', "no unit 'nowhere'"),
+        ('{"*": 3}', "has to name a unit"),
+        ('{"*": {"unit": "u7", "zone": "Mars/Base"}}', "unknown time zone"),
+        ('{"*": {"unit": "u7", "codes": {"X": "sodium"}}}', "unknown quantities"),
+    ],
+)
 def test_unit_maps_that_cannot_be_used_are_one_sentence(unit, tmp_path, text, words):
     path = tmp_path / "units.json"
     path.write_text(text)
@@ -132,7 +145,9 @@ def test_local_codes_of_the_unit_map(unit, stay, tmp_path):
     assert Entry.objects.get().lactate == 2.1
 
 
-@given(st.lists(st.binary(max_size=20).map(lambda b: b.replace(b"\x0b", b"").replace(b"\x1c", b"")), max_size=6), st.data())
+@given(
+    st.lists(st.binary(max_size=20).map(lambda b: b.replace(b"\x0b", b"").replace(b"\x1c", b"")), max_size=6), st.data()
+)
 def test_frames_come_out_whole_however_the_stream_is_cut(payloads, data):
     stream = b"".join(framed(p) for p in payloads)
     cuts = sorted(data.draw(st.lists(st.integers(0, len(stream)), max_size=8)))
@@ -191,7 +206,15 @@ class Running:
         subprocess.run([sys.executable, "manage.py", *args], cwd=ROOT, env=self.env, check=True, capture_output=True)
 
     def start(self):
-        command = [sys.executable, "manage.py", "hl7_listener", "--bind", f"127.0.0.1:{self.port}", "--unit-map", str(self.folder / "units.json")]
+        command = [
+            sys.executable,
+            "manage.py",
+            "hl7_listener",
+            "--bind",
+            f"127.0.0.1:{self.port}",
+            "--unit-map",
+            str(self.folder / "units.json"),
+        ]
         process = subprocess.Popen(command, cwd=ROOT, env=self.env, stdout=subprocess.PIPE, text=True)
         assert "Listening" in process.stdout.readline()
         return process
@@ -216,13 +239,13 @@ def test_killed_at_any_moment_nothing_acknowledged_is_lost_and_nothing_stored_tw
         try:
             while time.monotonic() < deadline:
                 sent += 1
-                line.sendall(framed(gas(f"K{sent}", f"202602{1 + sent // 1440:02d}{sent // 60 % 24:02d}{sent % 60:02d}00")))
+                line.sendall(
+                    framed(gas(f"K{sent}", f"202602{1 + sent // 1440:02d}{sent // 60 % 24:02d}{sent % 60:02d}00"))
+                )
                 if sent % 3 == 0:  # sends ahead of the answers
                     line.settimeout(0.05)
-                    try:
+                    with contextlib.suppress(TimeoutError):
                         waiting += line.recv(65536)
-                    except TimeoutError:
-                        pass
         finally:
             process.send_signal(signal.SIGKILL)
             process.wait()
@@ -242,7 +265,9 @@ def test_killed_at_any_moment_nothing_acknowledged_is_lost_and_nothing_stored_tw
     with socket.create_connection(("127.0.0.1", running.port), timeout=20) as line:
         got = b""
         for number in range(1, sent + 1):  # the sender repeats everything it is not sure of
-            line.sendall(framed(gas(f"K{number}", f"202602{1 + number // 1440:02d}{number // 60 % 24:02d}{number % 60:02d}00")))
+            line.sendall(
+                framed(gas(f"K{number}", f"202602{1 + number // 1440:02d}{number // 60 % 24:02d}{number % 60:02d}00"))
+            )
             while got.count(b"\x1c\r") < number:
                 got += line.recv(65536)
     process.send_signal(signal.SIGTERM)

@@ -8,7 +8,7 @@ from collections.abc import Iterator, Sequence
 import numpy as np
 
 from worksheet.oxygen import align, derive, plausibility
-from worksheet.oxygen.finding_kinds import Severity
+from worksheet.oxygen.finding_kinds import KINDS, Severity
 from worksheet.oxygen.quantities import MEASURED
 from worksheet.oxygen.readings import Floats, Readings
 from worksheet.ward.display import Display
@@ -77,7 +77,7 @@ def _say(drafts: Sequence[DraftEntry], found: plausibility.Findings, display: Di
     """Write the findings that ask beside the rows they are about."""
     asking = [
         rows for code, rows in found.rows.items()
-        if plausibility.KINDS[code].severity is not Severity.NOTE and not code.endswith(_OF_ONE_VALUE)
+        if KINDS[code].severity is not Severity.NOTE and not code.endswith(_OF_ONE_VALUE)
     ]  # fmt: skip
     if not asking:
         return

@@ -76,7 +76,8 @@ def to_cell(quantity: Quantity, text: str, unit: UnitOfMeasure, status: Status =
     if rest:
         stated = quantity.unit_named(rest)
         if stated is None or (stated.factor, stated.offset) != (unit.factor, unit.offset):
-            problem = f"{quantity.symbol}: '{shortened(stripped)}' names another unit than its column ({unit.label or 'none'})"
+            column = unit.label or "none"
+            problem = f"{quantity.symbol}: '{shortened(stripped)}' names another unit than its column ({column})"
             return Cell(None, stripped, spelled, problem=problem, status=status)
     canonical = float(unit.to_canonical(value))
     if quantity.name == "fio2" and unit.ucum == "%" and value <= 1.0:

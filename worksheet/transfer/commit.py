@@ -100,8 +100,13 @@ def correct(drafts: Sequence[DraftEntry], user: User, source: str) -> Iterator[d
         struck = draft.struck and not new.values
         stored = record.build(entry.stay, user, new, replaces=entry, reason=_why(draft), struck=struck)
         stored.save(force_insert=True)
-        yield {"entry": stored.pk, "replaces": entry.pk, "reason": draft.reason, "before": record.described(entry),
-               "after": record.described(stored)}  # fmt: skip
+        yield {
+            "entry": stored.pk,
+            "replaces": entry.pk,
+            "reason": draft.reason,
+            "before": record.described(entry),
+            "after": record.described(stored),
+        }
 
 
 def _key_of(draft: DraftEntry | None) -> str:
@@ -126,8 +131,16 @@ def _merged(entry: Entry, draft: DraftEntry, source: str) -> record.NewEntry:
             values[name] = cell.value if cell.value is not None else values.get(name, float("nan"))
             typed[name] = cell.typed()
     return record.NewEntry(
-        time=entry.time, site=Site(entry.site), values=values, typed=typed, device=Device(entry.device or draft.said("device")),
-        flow_method=FlowMethod(entry.flow_method or draft.said("flow_method")), event=Event(entry.event), event_amount=entry.event_amount,
-        sample=entry.sample or draft.sample, note="; ".join(n for n in (entry.note, note_of(draft)) if n), key=draft.key,
+        time=entry.time,
+        site=Site(entry.site),
+        values=values,
+        typed=typed,
+        device=Device(entry.device or draft.said("device")),
+        flow_method=FlowMethod(entry.flow_method or draft.said("flow_method")),
+        event=Event(entry.event),
+        event_amount=entry.event_amount,
+        sample=entry.sample or draft.sample,
+        note="; ".join(n for n in (entry.note, note_of(draft)) if n),
+        key=draft.key,
         source=source,
-    )  # fmt: skip
+    )

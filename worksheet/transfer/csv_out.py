@@ -17,8 +17,19 @@ from worksheet.ward.models import Entry
 from .csv_text import safe
 from .leaving import Leaving
 
-CARRIED = ("hb", "fio2", "cardiac_output", "cardiac_index", "temperature", "spo2", "vo2_measured", "cohb", "methb", "peep",
-           "mean_airway_pressure")  # fmt: skip
+CARRIED = (
+    "hb",
+    "fio2",
+    "cardiac_output",
+    "cardiac_index",
+    "temperature",
+    "spo2",
+    "vo2_measured",
+    "cohb",
+    "methb",
+    "peep",
+    "mean_airway_pressure",
+)
 _BLOCK = 1000
 
 

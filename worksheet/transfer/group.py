@@ -6,11 +6,12 @@ import hashlib
 import math
 from collections import defaultdict
 from collections.abc import Iterable
+from datetime import datetime
 
 from worksheet.oxygen.quantities import CATALOGUE
 from worksheet.oxygen.readings import Site
 
-from .rows import Cell, DraftEntry, Fate, Row, Status
+from .rows import Cell, DraftEntry, Fate, PatientRef, Row, Status
 from .tabular import ASSUMED_ARTERIAL
 
 BLOOD = frozenset(
@@ -42,15 +43,20 @@ def drafts_of(rows: Iterable[Row], *, observations: bool) -> list[DraftEntry]:
         if row.status is Status.ERROR:
             withdrawn.append(row)
             continue
-        assert row.patient is not None
-        assert row.time is not None
-        mark = (row.patient.system, row.patient.identifier, row.time, row.site, row.sample)
+        patient, time = _who_and_when(row)
+        mark = (patient.system, patient.identifier, time, row.site, row.sample)
         draft = last.get(mark)
         if (draft is None or not _joined(draft, row)) and row.fate is None:
-            draft = last[mark] = DraftEntry(row.patient, row.time, row.site, row.sample, row.cells, (row,))
+            draft = last[mark] = DraftEntry(patient, time, row.site, row.sample, row.cells, (row,))
             drafts.append(draft)
     drafts += [_withdrawal(row) for row in withdrawn]
     return drafts
+
+
+def _who_and_when(row: Row) -> tuple[PatientRef, datetime]:
+    if row.patient is None or row.time is None:
+        raise ValueError("a row without patient or time has its fate already")
+    return row.patient, row.time
 
 
 def _joined(draft: DraftEntry, row: Row) -> bool:
@@ -82,9 +88,7 @@ def _equal(a: Cell, b: Cell) -> bool:
 
 
 def _withdrawal(row: Row) -> DraftEntry:
-    assert row.patient is not None
-    assert row.time is not None
-    return DraftEntry(row.patient, row.time, row.site, row.sample, row.cells, (row,), struck=True)
+    return DraftEntry(*_who_and_when(row), row.site, row.sample, row.cells, (row,), struck=True)
 
 
 def _give_sites(rows: list[Row]) -> None:

@@ -110,7 +110,7 @@ def _with_zone(rules: TimeRules, head: Header) -> TimeRules:
     return replace(rules, zone=_Offset(timedelta(minutes=minutes if head.zone[0] == "+" else -minutes)))
 
 
-def _Offset(offset: timedelta) -> ZoneInfo:  # noqa: N802 - stands for a zone
+def _Offset(offset: timedelta) -> ZoneInfo:
     return timezone(offset)  # type: ignore[return-value]
 
 

@@ -101,7 +101,8 @@ def check_zip(data: bytes) -> None:
     if unpacked > MAX_UNPACKED or unpacked / packed > MAX_RATIO:
         raise Refused(
             f"The spreadsheet unpacks to {unpacked / MEGABYTE:.0f} MB ({unpacked / packed:.0f} times its size); "
-            f"at most {MAX_UNPACKED // MEGABYTE} MB and {MAX_RATIO} times are read. Save only the sheet that is needed, or CSV."
+            f"at most {MAX_UNPACKED // MEGABYTE} MB and {MAX_RATIO} times are read. "
+            "Save only the sheet that is needed, or CSV."
         )
     if any(part.flag_bits & 1 for part in parts):
         raise Refused("The spreadsheet is locked by a password; save it without one.")

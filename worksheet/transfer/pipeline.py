@@ -1,4 +1,4 @@
-"""One pipeline for page, command and listener: parse, group, find the fate of each row; then store in one transaction."""
+"""One pipeline for page, command and listener: parse, group, find each row's fate; then store in one transaction."""
 
 from __future__ import annotations
 
@@ -99,7 +99,8 @@ def _store(unit: Unit, user: User, seen: Preview, found: Matched, queue: bool) -
     seen.entries = Counter({"new": new, "corrected": len(changes), "new stays": made, "queued rows": queued})
     seen.entries = Counter({k: v for k, v in seen.entries.items() if v})
     if seen.entries:
-        audit.write(user.username, "imported", unit=unit.name, subject=seen.source[:120], format=kind, rows=seen.counts(),
+        audit.write(user.username, "imported", unit=unit.name, subject=seen.source[:120], format=kind,
+                    rows=seen.counts(),
                     entries=dict(seen.entries), last_entry=_last_entry(), changes=changes)  # fmt: skip
 
 

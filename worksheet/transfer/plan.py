@@ -1,4 +1,4 @@
-"""How the columns of a table are read: from the header, from a saved mapping, else proposed from the values and asked."""
+"""How the columns of a table are read: from the header, from a saved mapping, else proposed and asked."""
 
 from __future__ import annotations
 

@@ -40,7 +40,9 @@ def queue(request: HttpRequest, slug: str) -> HttpResponse:
 def _values(row: QueuedRow) -> str:
     cells = row.data.get("cells", {})
     if cells:
-        return ", ".join(f"{CATALOGUE[name].symbol} {cell['text']} {cell['unit']}".strip() for name, cell in cells.items())
+        return ", ".join(
+            f"{CATALOGUE[name].symbol} {cell['text']} {cell['unit']}".strip() for name, cell in cells.items()
+        )
     raw = row.data.get("raw", "")
     return ", ".join(f"{k} {v}" for k, v in raw.items() if v)[:300] if isinstance(raw, dict) else str(raw)[:300]
 

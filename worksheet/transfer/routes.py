@@ -1,4 +1,4 @@
-"""The unit map: which unit the messages of which sender belong to, with its zone, local codes and what to do with strangers."""
+"""The unit map: which unit the messages of which sender belong to, with its zone and its local codes."""
 
 from __future__ import annotations
 

@@ -124,8 +124,8 @@ def _find_header(lines: list[str]) -> tuple[str, int]:
         return best[1], best[2]
     first = next((line for line in lines if line.strip()), "")
     raise Refused(
-        f"No header row was found. The first line reads '{shortened(first, 60)}'. Expected are column names such as stay, time, "
-        "ph, po2, separated by comma, semicolon, tab or bar."
+        f"No header row was found. The first line reads '{shortened(first, 60)}'. Expected are column names such "
+        "as stay, time, ph, po2, separated by comma, semicolon, tab or bar."
     )
 
 

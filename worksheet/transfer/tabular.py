@@ -1,4 +1,4 @@
-"""Tables to rows of the pipeline: every line of a CSV file or sheet becomes one row, or more when it holds two sites."""
+"""Tables to rows of the pipeline: every line becomes one row, or more when it holds two sites."""
 
 from __future__ import annotations
 

@@ -61,9 +61,13 @@ def send(request: HttpRequest, slug: str) -> HttpResponse:
     except Refused as refusal:
         return render(request, "transfer/home.html", _home(unit, str(refusal)), status=422)
     upload = Upload.objects.create(
-        unit=unit, user=person(request), name=(sent.name or "file")[-160:], format=kind, content=data,
+        unit=unit,
+        user=person(request),
+        name=(sent.name or "file")[-160:],
+        format=kind,
+        content=data,
         digest=hashlib.sha256(data).hexdigest(),
-    )  # fmt: skip
+    )
     work.start(upload, "read")
     return redirect("transfer_upload", slug=slug, pk=upload.pk)
 
@@ -86,8 +90,9 @@ def upload(request: HttpRequest, slug: str, pk: int) -> HttpResponse:
     broken = busy and work.interrupted(found)
     if cast(Any, request).htmx and busy and not broken:
         return render(request, "transfer/_progress.html", {"upload": found, "unit": found.unit})
-    response = render(request, "transfer/upload.html", {**_preview(request, found), "busy": busy and not broken,
-                                                        "broken": broken})  # fmt: skip
+    response = render(
+        request, "transfer/upload.html", {**_preview(request, found), "busy": busy and not broken, "broken": broken}
+    )
     if cast(Any, request).htmx:
         response["HX-Refresh"] = "true"  # finished: show the whole page
     return response
@@ -104,16 +109,23 @@ def _preview(request: HttpRequest, found: Upload) -> dict[str, Any]:
     tabular_file = found.format in ("csv", "xlsx")
     report = found.report or {}
     return {
-        "upload": found, "unit": found.unit, "report": report, "only": only, "page": page,
+        "upload": found,
+        "unit": found.unit,
+        "report": report,
+        "only": only,
+        "page": page,
         "rows": [dict(zip(COLUMNS, row, strict=True)) for row in page.object_list],
-        "fates": report.get("fates", {}), "storable": _storable(report.get("fates", {})),
+        "fates": report.get("fates", {}),
+        "storable": _storable(report.get("fates", {})),
         "choices": _column_choices(found) if tabular_file and found.state == UploadState.READY else [],
         "quantities": [(q.name, q.symbol, [(u.ucum, u.label or "no unit") for u in q.units]) for q in measured()],
         "roles": ROLES,
         "sites": [(int(s), s.name.lower().replace("_", " ")) for s in Site if s],
-        "zones": common_zones(found.unit), "options": found.options, "tabular": tabular_file,
+        "zones": common_zones(found.unit),
+        "options": found.options,
+        "tabular": tabular_file,
         "asks_zone": any("time zone" in q for q in report.get("questions", [])),
-    }  # fmt: skip
+    }
 
 
 def _storable(fates: dict[str, int]) -> int:
@@ -127,8 +139,12 @@ def _column_choices(found: Upload) -> list[dict[str, Any]]:
     for number, column in enumerate(found.report.get("columns", [])):
         value = chosen.get(column["header"])
         if value is None:
-            value = {"role": column.get("role", ""), "quantity": column.get("quantity", ""), "unit": column.get("ucum", ""),
-                     "site": column.get("site_code", 0)}  # fmt: skip
+            value = {
+                "role": column.get("role", ""),
+                "quantity": column.get("quantity", ""),
+                "unit": column.get("ucum", ""),
+                "site": column.get("site_code", 0),
+            }
         picked = f"{value['quantity']}|{value['unit']}" if value["role"] == "quantity" else value["role"]
         out.append({**column, "number": number, "picked": picked, "picked_site": int(value["site"])})
     return out

@@ -1,4 +1,4 @@
-"""What happens to an upload: read and previewed, then stored; small files at once, long ones in a process of their own."""
+"""What happens to an upload: read and previewed, then stored; long files in a process of their own."""
 
 from __future__ import annotations
 

@@ -1,4 +1,4 @@
-"""Spreadsheets to tables: all sheets with a readable header, merged identifiers filled down, dates as they were meant."""
+"""Spreadsheets to tables: all sheets with a readable header, merged identifiers, dates as they were meant."""
 
 from __future__ import annotations
 
@@ -7,24 +7,29 @@ import os
 import re
 import warnings
 import zipfile
+import zlib
 from datetime import date, datetime, time
 from typing import Any
 
 os.environ.setdefault("OPENPYXL_LXML", "False")  # the guarded standard parser, whatever else is installed
 
-import openpyxl  # noqa: E402
-from defusedxml.common import DefusedXmlException  # noqa: E402
-from openpyxl.utils.cell import coordinate_to_tuple  # noqa: E402
-from openpyxl.utils.exceptions import InvalidFileException  # noqa: E402
+import openpyxl
+from defusedxml.common import DefusedXmlException
+from openpyxl.utils.cell import coordinate_to_tuple
+from openpyxl.utils.exceptions import InvalidFileException
 
-from .limits import MAX_COLUMNS, MAX_ROWS, check_zip  # noqa: E402
-from .names import column_named  # noqa: E402
-from .rows import Refused  # noqa: E402
-from .table import HEADER_WITHIN, Table, known_names, tidy_header  # noqa: E402
+from .limits import MAX_COLUMNS, MAX_ROWS, check_zip
+from .names import column_named
+from .rows import Refused
+from .table import HEADER_WITHIN, Table, known_names, tidy_header
 
 _MERGED = re.compile(rb'<(?:\w+:)?mergeCell\s[^>]{0,80}?ref="([A-Z]{1,3}\d{1,7}):([A-Z]{1,3}\d{1,7})"')
 _FILL_DOWN = {"stay", "date", "time", "site"}
 Rows = list[tuple[int, list[str]]]
+_DAMAGED = (  # what the libraries raise on damaged files
+    InvalidFileException, SyntaxError, zipfile.BadZipFile, KeyError, ValueError, TypeError, IndexError, AttributeError,
+    OSError, EOFError, OverflowError, zipfile.LargeZipFile, RuntimeError, NotImplementedError, zlib.error,
+)  # fmt: skip
 
 
 def read(data: bytes) -> tuple[list[Table], list[str]]:
@@ -44,8 +49,7 @@ def read(data: bytes) -> tuple[list[Table], list[str]]:
         raise
     except DefusedXmlException:
         raise Refused("The spreadsheet holds XML entities; such a file is not read.") from None
-    except (InvalidFileException, SyntaxError, zipfile.BadZipFile, KeyError, ValueError, TypeError, IndexError, AttributeError,
-            OSError, EOFError, OverflowError, zipfile.LargeZipFile, RuntimeError, NotImplementedError) as error:  # fmt: skip
+    except _DAMAGED as error:
         raise Refused(f"The spreadsheet is damaged and cannot be read ({type(error).__name__}).") from None
     return _tables(sheets)
 

@@ -41,8 +41,15 @@ class Command(BaseCommand):
             raise CommandError(f"The unit {unit.name} has {what}.")
         blocks = csv_out.lines(chosen) if options["format"] == "csv" else fhir_out.lines(chosen)
         _write(options["output"], blocks)
-        audit.write("export", "exported", unit=unit.name, subject=options["stay"] or "all stays",
-                    format=options["format"], entries=len(chosen.entries), deidentified=options["deidentify"])  # fmt: skip
+        audit.write(
+            "export",
+            "exported",
+            unit=unit.name,
+            subject=options["stay"] or "all stays",
+            format=options["format"],
+            entries=len(chosen.entries),
+            deidentified=options["deidentify"],
+        )
         if options["output"] != "-":
             count, stays = len(chosen.entries), len(chosen.stays)
             self.stdout.write(f"Wrote {count:,} entries of {stays:,} stays to {options['output']}.")

@@ -19,9 +19,10 @@ from worksheet.transfer.rows import Refused
 
 class Command(BaseCommand):
     help = (
-        "Listen for HL7 v2 results (ORU^R01, 2.3 to 2.8) over MLLP. Every message is kept raw, stored in one transaction "
-        "and acknowledged only after that (AA; AE or AR with the reason). The unit map is a JSON file that names the unit "
-        "of each sender: "
+        "Listen for HL7 v2 results (ORU^R01, 2.3 to 2.8) over MLLP. Every message is kept raw, stored in one "
+        "transaction and acknowledged only after that (AA; AE or AR with the reason). "
+        "The unit map is a JSON file naming "
+        "the unit of each sender: "
         '{"LAB|SITE": "icu-7", "*": {"unit": "icu-7", "zone": "Europe/Zurich", "unknown_stays": "queue"}}. '
         "MLLP is not encrypted: bind it to an address that only the interface engine reaches. "
         "Example: python manage.py hl7_listener --bind 127.0.0.1:2575 --unit-map units.json"

@@ -35,22 +35,34 @@ class Command(BaseCommand):
         parser.add_argument("--format", choices=["csv", "xlsx", "fhir", "hl7v2"], help="default: by the content")
         parser.add_argument("--dry-run", action="store_true", help="show every row's fate and store nothing")
         parser.add_argument("--report", type=Path, help="write every row's fate to this JSON file")
-        parser.add_argument("--unknown-stays", choices=["create", "queue"], default="create",
-                            help="identifiers that the unit does not know: make patient and stay (default), or let the rows wait in the queue")  # fmt: skip
+        parser.add_argument(
+            "--unknown-stays",
+            choices=["create", "queue"],
+            default="create",
+            help="identifiers that the unit does not know: make patient and stay (default), "
+            "or let the rows wait in the queue",
+        )
         parser.add_argument("--zone", help="time zone of times written without one, such as Europe/Zurich")
         parser.add_argument(
             "--date-order", choices=["dmy", "mdy", "ymd"], default="", help="order of day and month in dates"
         )
-        parser.add_argument("--doubled-hour", choices=["earlier", "later"], default="",
-                            help="which pass of the doubled hour is meant when the clocks go back")  # fmt: skip
+        parser.add_argument(
+            "--doubled-hour",
+            choices=["earlier", "later"],
+            default="",
+            help="which pass of the doubled hour is meant when the clocks go back",
+        )
         parser.add_argument(
             "--shifted-dates", action="store_true", help="dates were shifted for de-identification: allow the future"
         )
         parser.add_argument(
             "--keep-rest", action="store_true", help="store a row without its refused values instead of leaving it out"
         )
-        parser.add_argument("--replace-differing", action="store_true",
-                            help="values that differ from stored ones replace them as corrections (otherwise: conflict)")  # fmt: skip
+        parser.add_argument(
+            "--replace-differing",
+            action="store_true",
+            help="values that differ from stored ones replace them as corrections (otherwise: conflict)",
+        )
         parser.add_argument("--confirm", action="store_true", help="accept the reading of the columns as it is shown")
 
     def handle(self, *args: Any, **options: Any) -> None:
@@ -75,18 +87,31 @@ class Command(BaseCommand):
             zone = unit.zone  # the standard: times without a zone are the sender's local times
         rules = TimeRules(zone, options["date_order"], options["doubled_hour"], shifted=options["shifted_dates"])
         chosen = pipeline.Options(
-            rules, options["unknown_stays"] == "create", options["replace_differing"], options["keep_rest"],
-            options["confirm"], saved_for(unit, kind, data), progress=self._progress(),
-        )  # fmt: skip
+            rules,
+            options["unknown_stays"] == "create",
+            options["replace_differing"],
+            options["keep_rest"],
+            options["confirm"],
+            saved_for(unit, kind, data),
+            progress=self._progress(),
+        )
         parsed = pipeline.parse(kind, data, chosen)
         seen, found = pipeline.preview(unit, name, parsed, chosen)
         if options["dry_run"]:
             return seen
         if parsed.questions and not chosen.confirmed:
             lines = [f"  {c['header']}: {c['reads_as']} {c['unit']} {c['confirm']}".rstrip() for c in parsed.columns]
-            raise Refused("\n".join(["Nothing was stored. To be confirmed first:", *(f"- {q}" for q in parsed.questions),
-                                     "The columns would be read as:", *lines, "Correct the header, or repeat with --confirm "
-                                     "(and --zone, --date-order where asked)."]))  # fmt: skip
+            raise Refused(
+                "\n".join(
+                    [
+                        "Nothing was stored. To be confirmed first:",
+                        *(f"- {q}" for q in parsed.questions),
+                        "The columns would be read as:",
+                        *lines,
+                        "Correct the header, or repeat with --confirm (and --zone, --date-order where asked).",
+                    ]
+                )
+            )
         return pipeline.store(unit, people.machine("import"), seen, found, replace(chosen, confirmed=True))
 
     def _progress(self) -> Callable[[int, int], None] | None:
