@@ -9,22 +9,22 @@ from __future__ import annotations
 
 import argparse
 import os
-import shutil
 import sys
 import tempfile
 import time
 from collections import Counter, deque
 from collections.abc import Iterable, Iterator
-from concurrent.futures import Executor, Future, ProcessPoolExecutor
+from concurrent.futures import BrokenExecutor, Executor, Future, ProcessPoolExecutor
 from contextlib import ExitStack, contextmanager
 from dataclasses import dataclass, field
 from hashlib import blake2b
+from importlib import import_module
 from multiprocessing import get_context
-from pathlib import Path
 from typing import BinaryIO
 
+from .batch_files import reading, writing
 from .batch_read import BatchError, Header, Problem, header_of
-from .batch_rows import OUTPUT, Derivation, derive_block, summary
+from .batch_rows import OUTPUT, TYPES, Derivation, derive_block, summary
 from .batch_split import Piece, pieces, regrouped
 
 _SHOWN = 20  # problems that are listed
@@ -38,6 +38,7 @@ _MORE = """\
 example:
   python manage.py derive gases.csv --output derived.csv
   cat gases.csv | python manage.py derive - --output - > derived.csv
+  python manage.py derive study.parquet --output derived.parquet
 
 Columns that are read (any order, any of them; an empty cell is "not measured"): stay, time (ISO 8601 with offset), site
 (arterial, mixed_venous, central_venous, venous), and the measured quantities in the units of the methods page: mmHg,
@@ -52,8 +53,18 @@ carried values with their age in minutes. Exit code 0: done; 2: the file cannot 
 
 def add_arguments(parser: argparse.ArgumentParser) -> None:
     """The arguments, also for the management command."""
-    parser.add_argument("input", metavar="INPUT.csv", help="the file to derive, - for standard input")
-    parser.add_argument("--output", required=True, metavar="OUTPUT.csv", help="where to write, - for standard output")
+    parser.add_argument(
+        "input", metavar="INPUT.csv", help="the file to derive (.parquet: Parquet), - for standard input"
+    )
+    parser.add_argument(
+        "--output",
+        required=True,
+        metavar="OUTPUT.csv",
+        help="where to write (.parquet: Parquet), - for standard output",
+    )
+    parser.add_argument(
+        "--dask", default="", metavar="ADDRESS", help="derive on a Dask cluster, for example tcp://host:8786"
+    )
     parser.add_argument("--processes", type=int, default=2, metavar="N", help="how many processes (default 2)")
 
 
@@ -64,14 +75,14 @@ def main(argv: list[str]) -> int:
     )
     add_arguments(parser)
     options = parser.parse_args(argv)
-    return run(options.input, options.output, max(1, options.processes))
+    return run(options.input, options.output, max(1, options.processes), options.dask)
 
 
-def run(source: str, target: str, processes: int = 2) -> int:
+def run(source: str, target: str, processes: int = 2, dask: str = "") -> int:
     """Derive one file into another; returns the exit code and says on standard error what was done."""
     begun = time.monotonic()
     try:
-        tally = _derive_file(source, target, processes)
+        tally = _derive_file(source, target, processes, dask)
     except BatchError as error:
         for problem in error.problems[:_SHOWN]:
             _say(f"{_name(source)}: {problem}")
@@ -82,6 +93,12 @@ def run(source: str, target: str, processes: int = 2) -> int:
     except OSError as error:
         _say(f"derive: {error.filename or _name(source)}: {error.strerror or error}; nothing written")
         return 2
+    except BrokenExecutor:
+        _say("derive: a worker process died, perhaps for want of memory; nothing written")
+        return 2
+    except KeyboardInterrupt:
+        _say("derive: stopped; nothing written")
+        return 130
     _say(tally.sentence(target, time.monotonic() - begun))
     return 0
 
@@ -103,20 +120,22 @@ class Tally:
         return text + (f"; impossible values not used: {summary(self.refused)}" if self.refused else "")
 
 
-def _derive_file(source: str, target: str, processes: int) -> Tally:
+def _derive_file(source: str, target: str, processes: int, dask: str) -> Tally:
     if source != "-" and target != "-" and os.path.abspath(source) == os.path.abspath(target):
         raise BatchError([Problem(1, "", "input and output are the same file")])
     with ExitStack() as stack:
-        data = stack.enter_context(_seekable(source))
-        out = stack.enter_context(_beside(target))
+        file = stack.enter_context(reading(source))
+        data = file.data
+        out = stack.enter_context(writing(target, TYPES, file))
         header = header_of(data.readline(), OUTPUT)
-        out.write(header.text + b"," + ",".join(OUTPUT).encode() + b"\n")
         body = data.tell()
-        pool = stack.enter_context(_pool(processes, data))
+        head = header.text + b"," + ",".join(OUTPUT).encode() + b"\n"
+        out.write(head)
+        pool = stack.enter_context(_cluster(dask) if dask else _pool(processes, data))
         tally = _grouped(header, data, out, pool)
         if tally is None:
             data.seek(body)
-            out.truncate(out.seek(len(header.text) + len(",".join(OUTPUT)) + 2))
+            out.truncate(out.seek(len(head)))
             tally = _scattered(header, data, out, pool)
     return tally
 
@@ -205,52 +224,25 @@ def _in_order(pool: Executor | None, header: Header, work: Iterable[Piece]) -> I
 
 
 @contextmanager
+def _cluster(address: str) -> Iterator[Executor]:
+    """Workers of a Dask cluster, in place of processes of this machine."""
+    try:
+        distributed = import_module("distributed")
+    except ImportError:
+        raise OSError(
+            None, "Dask is not installed: pip install 'oxygen-delivery-worksheet[cluster]'", "--dask"
+        ) from None
+    with distributed.Client(address, timeout=10) as client:
+        yield client.get_executor(pure=False)
+
+
+@contextmanager
 def _pool(processes: int, data: BinaryIO) -> Iterator[Executor | None]:
     if processes < 2 or os.fstat(data.fileno()).st_size < _PARALLEL_FROM:
         yield None
         return
     with ProcessPoolExecutor(processes, mp_context=get_context("spawn")) as pool:
         yield pool
-
-
-@contextmanager
-def _seekable(source: str) -> Iterator[BinaryIO]:
-    """The input, on disk: standard input is copied first, because it may have to be read twice."""
-    if source != "-":
-        with open(source, "rb") as data:
-            yield data
-        return
-    with tempfile.TemporaryFile() as data:
-        shutil.copyfileobj(sys.stdin.buffer, data, 1 << 20)
-        data.seek(0)
-        yield data
-
-
-@contextmanager
-def _beside(target: str) -> Iterator[BinaryIO]:
-    """A file that takes the place of the target only when all went well."""
-    if target == "-":
-        with tempfile.TemporaryFile() as out:
-            yield out
-            out.seek(0)
-            shutil.copyfileobj(out, sys.stdout.buffer, 1 << 20)
-            sys.stdout.buffer.flush()
-        return
-    place = Path(target)
-    if not place.parent.is_dir():
-        raise FileNotFoundError(2, "there is no such folder", str(place.parent))
-    descriptor, name = tempfile.mkstemp(dir=place.parent, prefix=f".{place.name}.", suffix=".part")
-    try:
-        with open(descriptor, "wb") as out:
-            yield out
-            out.flush()
-            os.fsync(out.fileno())
-        mask = os.umask(0)
-        os.umask(mask)
-        os.chmod(name, 0o666 & ~mask)
-        os.replace(name, place)
-    finally:
-        Path(name).unlink(missing_ok=True)
 
 
 class _Progress:

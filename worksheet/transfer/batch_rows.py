@@ -31,6 +31,11 @@ OUTPUT = (
     "limiting_step", "findings", "basis",
 )  # fmt: skip
 """The derived columns in the order in which they follow the input's."""
+TYPES = {
+    name: pa.string() if name in ("ledger_unit", "limiting_step", "findings", "basis") else pa.float64()
+    for name in OUTPUT
+}
+"""Their types in a Parquet file."""
 _DIGITS = 6  # significant: a thousandth of the noise of any of these numbers
 _BASIS = {
     Flag.DYSHAEMOGLOBINS_ASSUMED: "dyshaemoglobins-assumed", Flag.SATURATION_CALCULATED: "saturation-calculated",

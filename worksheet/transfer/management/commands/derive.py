@@ -22,6 +22,6 @@ class Command(BaseCommand):
         batch.add_arguments(parser)
 
     def handle(self, *args: Any, **options: Any) -> None:
-        code = batch.run(options["input"], options["output"], options["processes"])
+        code = batch.run(options["input"], options["output"], options["processes"], options["dask"])
         if code:
             sys.exit(code)
