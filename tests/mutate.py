@@ -13,7 +13,7 @@ import tempfile
 from pathlib import Path
 
 ROOT = Path(__file__).resolve().parent.parent
-LEDGER = {"ledger", "ledger_noise", "ledger_table", "shapley", "factors"}
+LEDGER = {"ledger", "comparison", "ledger_noise", "ledger_table", "shapley", "factors", "footing"}
 LEDGER_TESTS = ("test_ledger*.py",)
 EQUATION_TESTS = (
     "test_acidbase.py", "test_constants.py", "test_content.py", "test_cross_checks.py", "test_curve.py",
