@@ -44,8 +44,26 @@ class StayFinder:
         if len(covering) == 1:
             return covering[0], ""
         if not covering:
-            return None, f"the stay of {ref.identifier} does not cover this time"
+            return self._another(ref, stays, time)
+        if all(s.admitted_at for s in covering):
+            return max(
+                covering, key=lambda s: (s.admitted_at <= time, s.admitted_at) if s.admitted_at else (False, time)
+            ), ""
         return None, f"{ref.identifier} has more than one stay that covers this time"
+
+    def _another(self, ref: PatientRef, stays: list[Stay], time: datetime) -> tuple[Stay | None, str]:
+        """A further stay of a known patient, for values from before an admission or after a discharge."""
+        if not self.create:
+            return None, f"the stay of {ref.identifier} does not cover this time"
+        made = self.made.get(ref)
+        if made is None:
+            reference = f"{ref.identifier[:50]}-{time.astimezone(self.unit.zone):%Y-%m-%d}"
+            made = Stay(reference=reference, unit=self.unit, patient=stays[0].patient, admitted_at=time)
+            self.made[ref] = made
+        made.admitted_at = min(made.admitted_at or time, time)
+        if any(s.admitted_at and s.admitted_at > time for s in stays):
+            made.discharged_at = max(made.discharged_at or time, time)
+        return made, ""
 
     def _candidates(self, ref: PatientRef) -> list[Stay]:
         """Stays called or identified so: asked one by one at first, all at once for a file of many patients."""
@@ -63,6 +81,8 @@ class StayFinder:
         own = self._candidates(ref)
         stays = [s for s in own if s.patient.identifier == ref.identifier and s.patient.system == ref.system]
         stays = stays or [s for s in own if s.reference == ref.identifier]
+        patients = {s.patient_id for s in stays}
+        stays = [s for s in own if s.patient_id in patients]
         wrong = next((w for s in stays if (w := _contradiction(ref, s.patient))), "")
         return stays, wrong
 
@@ -94,7 +114,8 @@ def store_new(finder: StayFinder) -> int:
     """Store the stays that were made, with their patients."""
     for stay in finder.made.values():
         if stay.pk is None:
-            found, _ = Patient.objects.get_or_create(system=stay.patient.system, identifier=stay.patient.identifier)
-            stay.patient = found
+            if stay.patient.pk is None:
+                named = {"system": stay.patient.system, "identifier": stay.patient.identifier}
+                stay.patient = Patient.objects.get_or_create(**named)[0]
             stay.save(force_insert=True)
     return len(finder.made)
