@@ -7,7 +7,7 @@ from django.utils import timezone
 
 from worksheet.oxygen.quantities import MEASURED
 from worksheet.oxygen.readings import Site
-from worksheet.review import entry_form
+from worksheet.review import slip_words
 from worksheet.ward import record
 from worksheet.ward.models import AuditEvent, Entry
 
@@ -264,7 +264,7 @@ def test_the_form_itself_has_no_inline_style_or_script(world):
 
 
 def test_the_catalogue_drives_the_form():
-    assert set(entry_form.names()) == set(MEASURED) - {"age"}
+    assert set(slip_words.names()) == set(MEASURED) - {"age"}
 
 
 def test_a_form_left_open_asks_whether_its_time_is_the_samples(world):

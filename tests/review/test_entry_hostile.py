@@ -6,13 +6,13 @@ from hypothesis import strategies as st
 
 from worksheet.oxygen.quantities import MEASURED
 from worksheet.oxygen.readings import Site
-from worksheet.review import entry_form
+from worksheet.review import slip_words
 from worksheet.ward import record
 from worksheet.ward.models import Draft, Entry, Patient, Stay, Unit
 
-NAMES = [*entry_form.names(), "date", "clock", "fold", "site", "device", "flow_method", "sample", "note", "key", "opened",
-         "begun_by", "use_estimate", "reason", "pasted", "action", "po2_unit", "hb_unit", "confirm", "kind", "amount",
-         "bed", "identifier", "reference", "height_unit", "end_date", "end_clock"]  # fmt: skip
+NAMES = [*slip_words.names(), "date", "clock", "fold", "site", "device", "flow_method", "sample", "note", "key",
+         "opened", "begun_by", "use_estimate", "reason", "pasted", "action", "po2_unit", "hb_unit", "confirm", "kind",
+         "amount", "bed", "identifier", "reference", "height_unit", "end_date", "end_clock"]  # fmt: skip
 ODD = ["", "0", "1", "7.4", "7,4", "-1", "1e400", "99999999999999999999", "\x00", "\x00\n", "2026-12-01", "02:30",
        "save", "paste", "<b>", "' OR 1=1 --", "kPa", "½", "a\tb", "pH\tPO2\n7.4\t90"]  # fmt: skip
 TEXTS = st.one_of(st.text(max_size=30), st.sampled_from(ODD))

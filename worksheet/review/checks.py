@@ -12,8 +12,9 @@ from worksheet.oxygen.readings import Device, FlowMethod, Site
 from worksheet.ward.display import Display, age_words
 from worksheet.ward.models import Entry, Stay, User
 
-from .entry_form import NOTE_LONGEST, SAMPLE_ONLY, Level, Notice, Slip, ValueField
 from .finding_places import FROM_WRONG, PLACES, SAID_ALREADY, TELLS
+from .slip import Level, Notice, Slip, ValueField
+from .slip_words import NOTE_LONGEST, SAMPLE_ONLY
 from .trial import Trial, others, try_out
 
 LONG_AGO = timedelta(hours=12)

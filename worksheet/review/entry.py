@@ -21,9 +21,10 @@ from worksheet.ward.display import Display
 from worksheet.ward.models import Entry, Stay, User
 
 from . import checks, drafts, entry_form, moments, pasted
-from .entry_form import Level, Notice, Slip
 from .entry_page import conflict_rows, page_parts
 from .people import patient_page, stay_for
+from .slip import Level, Notice, Slip
+from .slip_words import SITE_WORDS
 from .versions import lead_to_newest, need_reason, newest, somebody_faster
 
 
@@ -220,7 +221,7 @@ def _remember_units(user: User, slip: Slip) -> None:
 
 def _done(desk: Desk, entry: Entry, verb: str) -> HttpResponse:
     at = entry.time.astimezone(desk.stay.unit.zone)
-    messages.success(desk.request, f"{verb}: {entry_form.SITE_WORDS[Site(entry.site)]}, {at:%Y-%m-%d %H:%M}.")
+    messages.success(desk.request, f"{verb}: {SITE_WORDS[Site(entry.site)]}, {at:%Y-%m-%d %H:%M}.")
     target = patient_page(desk.stay)
     if desk.request.POST.get("action") == "save_next":
         target = reverse("entry_new", args=[desk.stay.unit.slug, desk.stay.reference])

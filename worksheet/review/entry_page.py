@@ -12,8 +12,9 @@ from worksheet.ward.display import Display, age_words
 from worksheet.ward.models import Entry
 
 from . import checks
-from .entry_form import DEVICE_WORDS, GROUPS, METHOD_WORDS, RARE, SITE_WORDS, Level, Notice, Slip, ValueField
 from .people import patient_page
+from .slip import Level, Notice, Slip, ValueField
+from .slip_words import DEVICE_WORDS, GROUPS, METHOD_WORDS, RARE, SITE_WORDS
 from .trial import Trial
 
 if TYPE_CHECKING:

@@ -13,7 +13,7 @@ from worksheet.ward.models import Bed, Entry, Stay, Unit
 from worksheet.ward.record import NewEntry
 
 from . import checks, entry_form, numbers, texts
-from .entry_form import Level, Notice, Slip
+from .slip import Level, Notice, Slip
 
 KIND_WORDS = {
     Event.TRANSFUSION: "transfusion of red cells",

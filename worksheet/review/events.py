@@ -19,10 +19,10 @@ from worksheet.ward.models import Bed, Draft, Entry, Stay
 
 from . import drafts, event_form
 from .entry import Desk, answered, go, refuse_other_person, same
-from .entry_form import DEVICE_WORDS
 from .entry_page import facts, form_parts
 from .event_form import KIND_WORDS, SETTINGS, EventForm
 from .people import patient_page
+from .slip_words import DEVICE_WORDS
 from .versions import lead_to_newest, need_reason, newest
 
 

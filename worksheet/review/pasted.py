@@ -13,7 +13,9 @@ from worksheet.oxygen.readings import Site
 from worksheet.ward.display import Display
 
 from . import moments, numbers
-from .entry_form import SITE_WORDS, Slip, ValueField, names, read_value
+from .entry_form import read_value
+from .slip import Slip, ValueField
+from .slip_words import SITE_WORDS, names
 
 LONGEST = 8000
 _UNIT = re.compile(r"^(.*?)\s*[(\[]\s*([^)\]]*(?:\][^)\]]*)*)\s*[)\]]\s*$")

@@ -13,7 +13,8 @@ from worksheet.ward.display import Display
 from worksheet.ward.models import Bed, Patient, Stay, Unit
 
 from . import checks, entry_form, moments, texts
-from .entry_form import Level, Notice, ValueField
+from .slip import Level, Notice, ValueField
+from .slip_words import NOTE_LONGEST
 
 SIZES = ("height", "weight", "age")
 _REFERENCE = re.compile(r"[A-Za-z0-9][A-Za-z0-9._-]{0,63}", re.ASCII)
@@ -94,8 +95,8 @@ def check(form: StayForm, unit: Unit, display: Display, now: datetime, stay: Sta
     """Add what stands against the form; ``stay`` is the one being changed."""
     for each in form.fields.values():
         checks.check_limits(each, display)
-    if len(form.note) > entry_form.NOTE_LONGEST:
-        form.say("note", "too_long", f"The note has {len(form.note)} characters; at most {entry_form.NOTE_LONGEST}.")
+    if len(form.note) > NOTE_LONGEST:
+        form.say("note", "too_long", f"The note has {len(form.note)} characters; at most {NOTE_LONGEST}.")
     form.admitted = _moment(form, "date", "clock", unit.zone, now)
     if stay is None:
         _names(form, unit)

@@ -8,8 +8,8 @@ from django.shortcuts import redirect
 
 from worksheet.ward.models import Entry, Stay
 
-from .entry_form import Level, Notice, Slip
 from .people import patient_page
+from .slip import Level, Notice, Slip
 
 REASON_LONGEST = 500
 
