@@ -126,7 +126,7 @@ USE_TZ = True
 TIME_ZONE = "UTC"
 
 STATIC_URL = "static/"
-STATIC_ROOT = DATA_DIR / "static"
+STATIC_ROOT = Path(env.text("WORKSHEET_STATIC", str(DATA_DIR / "static")))
 STATICFILES_DIRS = [BASE_DIR / "static"]
 STORAGES = {
     "default": {"BACKEND": "django.core.files.storage.FileSystemStorage"},
@@ -153,6 +153,16 @@ SECURE_HSTS_INCLUDE_SUBDOMAINS = HTTPS
 SECURE_HSTS_PRELOAD = HTTPS
 SECURE_REFERRER_POLICY = "same-origin"
 X_FRAME_OPTIONS = "DENY"
+# One line a record, as JSON; never a value, a name or an address of a patient's page with its query.
+LOGGING = {
+    "version": 1,
+    "disable_existing_loggers": False,
+    "formatters": {"json": {"()": "worksheet.ward.logs.JsonLines"}},
+    "handlers": {"stderr": {"class": "logging.StreamHandler", "formatter": "json"}},
+    "root": {"handlers": ["stderr"], "level": "WARNING"},
+    "loggers": {"django": {"handlers": ["stderr"], "level": "WARNING", "propagate": False}},
+}
+
 DATA_UPLOAD_MAX_MEMORY_SIZE = 2 * 1024 * 1024  # forms; files have limits of their own
 DATA_UPLOAD_MAX_NUMBER_FIELDS = 2000
 CSRF_FAILURE_VIEW = "worksheet.review.errors.csrf_failure"

@@ -40,20 +40,8 @@ class Command(BaseCommand):
         )
         if options["no_serve"]:
             return
-        self.stdout.write("Serving on this machine only; Ctrl+C stops.")
-        self.stdout.flush()
-        _collect_static()
         os.environ["WORKSHEET_SECRET_KEY"] = settings.SECRET_KEY = key
         call_command("serve", bind=f"127.0.0.1:{options['port']}", workers=2)
-
-
-def _collect_static() -> None:
-    """Collect and compress the static files, unless what was collected is newer than all of them."""
-    manifest = Path(settings.STATIC_ROOT) / "staticfiles.json"
-    made = manifest.stat().st_mtime if manifest.exists() else 0.0
-    sources = (file for folder in settings.STATICFILES_DIRS for file in Path(folder).rglob("*") if file.is_file())
-    if any(file.stat().st_mtime > made for file in sources):
-        call_command("collectstatic", verbosity=0, interactive=False)
 
 
 def _kept_secrets(file: Path) -> tuple[str, str]:
