@@ -30,21 +30,29 @@
 
   // --- time ticks after a zoom: wall clock of the unit's zone, or hours from admission ---
 
-  function wallParts(zone, hours) {
-    const format = new Intl.DateTimeFormat("en-GB", {
-      timeZone: zone, hourCycle: "h23", day: "2-digit", month: "short", hour: "2-digit", minute: "2-digit",
-    });
-    return Object.fromEntries(format.formatToParts(new Date(hours * 3.6e6)).map((p) => [p.type, p.value]));
+  const MONTHS = ["Jan", "Feb", "Mar", "Apr", "May", "Jun", "Jul", "Aug", "Sep", "Oct", "Nov", "Dec"];
+  const DAY_ONE = 719163; // 1 January 1970 counted from the first day of year 1, as the server counts days
+  const clocks = new Map(); // zone -> its formatter
+
+  function wallTime(zone, hours) {
+    if (!clocks.has(zone)) {
+      clocks.set(zone, new Intl.DateTimeFormat("en-GB", {
+        timeZone: zone, hourCycle: "h23", year: "numeric", month: "numeric", day: "numeric", hour: "numeric", minute: "numeric",
+      }));
+    }
+    const parts = clocks.get(zone).formatToParts(new Date(hours * 3.6e6));
+    const of = Object.fromEntries(parts.map((part) => [part.type, Number(part.value)]));
+    return { ...of, days: Date.UTC(of.year, of.month - 1, of.day) / 8.64e7 + DAY_ONE };
   }
 
   function wallTicks(zone, low, high, step) {
     const ticks = [];
+    const two = (number) => String(number).padStart(2, "0");
     for (let n = Math.ceil(low * 4); n <= Math.floor(high * 4); n += 1) {
-      const parts = wallParts(zone, n / 4);
-      const hour = Number(parts.hour) + Number(parts.minute) / 60;
-      const days = Math.floor(n / 96);
-      if (step <= 24 ? hour % Math.min(step, 24) === 0 : hour === 0 && days % (step / 24) === 0) {
-        ticks.push([n / 4, hour === 0 ? `${parts.day} ${parts.month}` : `${parts.hour}:${parts.minute}`]);
+      const wall = wallTime(zone, n / 4);
+      const hour = wall.hour + wall.minute / 60;
+      if (step <= 24 ? hour % step === 0 : hour === 0 && wall.days % (step / 24) === 0) {
+        ticks.push([n / 4, hour === 0 ? `${two(wall.day)} ${MONTHS[wall.month - 1]}` : `${two(wall.hour)}:${two(wall.minute)}`]);
       }
     }
     return ticks;

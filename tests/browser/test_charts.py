@@ -10,6 +10,7 @@ from django.conf import settings
 
 from tests.charts import build
 from worksheet.charts.plotly import page_json
+from worksheet.charts.scales import WallClock
 
 STATIC = settings.BASE_DIR / "static"
 TYPES = {"css": "text/css", "js": "text/javascript"}
@@ -125,8 +126,6 @@ def test_zoom_brings_finer_local_ticks_and_double_click_the_old_ones(page, addre
     low, high = strip_axis(page, "range")
     assert len(finer) >= 4
     assert all(low <= value <= high for value in values)
-    from worksheet.charts.scales import WallClock
-
     scale = WallClock(build.DISPLAY)
     told = {round(v, 6): t for v, t in scale.ticks(low, high, most=9)}
     assert {round(v, 6): t for v, t in zip(values, finer, strict=True)} == told  # both sides tell the same time
@@ -135,6 +134,23 @@ def test_zoom_brings_finer_local_ticks_and_double_click_the_old_ones(page, addre
         "before => document.querySelector('[data-chart-kind=strip]').layout.xaxis.ticktext.join() === before",
         arg=",".join(before),
     )
+
+
+@pytest.mark.parametrize("hours", [3, 20, 100, 400, 1500])
+def test_page_and_server_choose_the_same_ticks(page, address, hours):
+    """Zooming far out or in: the script's ticks are the server's, across the clock change of 29 March."""
+    open_charts(page, address)
+    low = build.START + 2.3
+    page.evaluate(
+        "range => Plotly.relayout(document.querySelector('[data-chart-kind=strip]'), {'xaxis.range': range})",
+        [low, low + hours],
+    )
+    page.wait_for_timeout(200)
+    length = page.evaluate("document.querySelector('[data-chart-kind=strip]')._fullLayout.xaxis._length")
+    most = min(9, max(2, int(length // 62)))
+    told = WallClock(build.DISPLAY).ticks(low, low + hours, most=most)
+    got = list(zip(strip_axis(page, "tickvals"), strip_axis(page, "ticktext"), strict=True))
+    assert [(round(v, 6), t) for v, t in got] == [(round(v, 6), t) for v, t in told]
 
 
 def test_theme_is_followed_both_by_choice_and_by_the_system(page, address):

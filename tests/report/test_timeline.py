@@ -257,6 +257,75 @@ def test_decimal_comma_and_kilopascal(pdftotext, deidentify):
     assert not re.search(r"\d\.\d", numbers)
 
 
+def test_text_of_the_charts_can_be_selected(stay, pdftotext):
+    order = world.order(stay)
+    words = set(words_of(timeline_pdf(order), pdftotext, "-raw").split())
+    for chart in timeline(order, "0" * 64)["charts"].values():
+        for axis in (chart["x"], *chart["y"]):
+            assert set(axis["title"].split()) <= words, axis["title"]
+            assert {word for _, text in axis["ticks"] for word in text.split()} <= words, axis["title"]
+        named = [s["name"] for s in chart["series"] if s["legend"]]
+        assert len(named) == 1 or {word for name in named for word in name.split()} <= words
+
+
+def test_rows_are_whole_and_heads_repeat(pdftotext):
+    """Every page of the table starts with its head, and a row that wraps is never cut by the page's end."""
+    stay = world.make_stay("T-111")
+    world.add_gases(stay, 120, every=1.0)
+    for n in range(60):
+        note = record.NewEntry(
+            world.START + timedelta(hours=n, minutes=30), event=Event.TRANSFUSION, event_amount=2, note="x"
+        )
+        record.record(stay, world.nurse(), note)
+    order = world.order(stay)
+    data = timeline_pdf(order)
+    pages = len(pikepdf.open(io.BytesIO(data)).pages)
+    found = 0
+    for n in range(1, pages + 1):
+        lines = [line.strip() for line in words_of(data, pdftotext, "-f", str(n), "-l", str(n), "-layout").splitlines()]
+        rows = [line for line in lines if re.match(r"2026-\d\d-\d\d \d\d:\d\d CES?T +(arterial|reading)", line)]
+        if rows and any(line.startswith("Time") and "Sample" in line for line in lines):
+            found += len(rows)
+            head = next(i for i, line in enumerate(lines) if line.startswith("Time") and "Sample" in line)
+            body = [line for line in lines[head + 1 :] if line]
+            first = next(line for line in body if re.match(r"\d{4}-", line))
+            # Between head and first row only units may stand: the rest of a cut row would stand there.
+            assert not any(re.search(r"units|note|transfusion", line) for line in body[: body.index(first)])
+    assert found >= 180
+
+
+def test_all_findings_at_once(pdftotext):
+    stay = world.make_stay("T-112")
+    add = lambda hours, **values: record.record(  # noqa: E731
+        stay, world.nurse(), record.NewEntry(world.START + timedelta(hours=hours), Site.ARTERIAL, values)
+    )
+    add(-5, ph=7.4, pco2=40.0, po2=90.0, hb=10.0, fio2=0.4)  # before admission
+    add(0, ph=7.4, pco2=40.0, po2=290.0, hb=10.0, fio2=0.3, bicarbonate=34.0)  # above alveolar; three values disagree
+    add(1, ph=7.38, pco2=5.2, po2=11.5, hb=10.0, so2=0.96, fio2=0.4)  # kPa as mmHg
+    add(2, ph=7.33, pco2=47.0, po2=39.0, hb=10.0, so2=0.71, fio2=0.3)  # a venous sample
+    add(3, ph=7.4, pco2=40.0, po2=95.0, hb=14.9, so2=0.97, spo2=0.85, fio2=0.4)  # jump; finger against sample
+    add(4, ph=7.4, pco2=40.0, po2=95.0, hb=14.9, so2=0.97, o2hb=0.97, cohb=0.28, methb=0.1, fio2=0.4)  # sum above all
+    add(4, ph=7.4, pco2=40.0, po2=95.0, hb=14.9, so2=0.97, o2hb=0.97, cohb=0.28, methb=0.1, fio2=0.4)  # twice
+    add(5, ph=6.85, pco2=140.0, po2=15.0, hb=3.0, so2=0.1, lactate=26.0, fio2=1.0, temperature=29.0)  # all unlikely
+    add(24 * 365 * 30, ph=7.4, pco2=40.0, po2=90.0)  # in the future
+    order = world.order(stay, until=world.START + timedelta(days=366 * 40))
+    table = timeline(order, "0" * 64)["findings"]
+    assert len({row[2].split()[0] for row in table["rows"]}) >= 8
+    text = flat(words_of(timeline_pdf(order), pdftotext, "-raw"))
+    for row in table["rows"]:
+        assert all(word in text for word in row[2].split())
+    assert_inside_the_margins(timeline_pdf(order))
+
+
+def test_span_without_entries():
+    stay = world.make_stay("T-113")
+    world.add_gases(stay, 2)
+    order = world.order(stay, since=world.START + timedelta(days=3), until=world.START + timedelta(days=4))
+    payload = timeline(order, "0" * 64)
+    assert payload["entries"]["rows"] == []
+    assert timeline_pdf(order).startswith(b"%PDF-")
+
+
 class TestDeidentified:
     def test_nothing_identifies(self, pdftotext):
         stay = world.make_stay("T-109")
