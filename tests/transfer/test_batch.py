@@ -5,6 +5,7 @@ import io
 import os
 import subprocess
 import sys
+import time
 from pathlib import Path
 
 import numpy as np
@@ -440,3 +441,28 @@ def test_nothing_heavy_is_imported():
 
 def test_output_names_are_unique():
     assert len(set(OUTPUT)) == len(OUTPUT)
+
+
+def test_being_stopped_leaves_nothing(tmp_path):
+    source, target = tmp_path / "in.csv", tmp_path / "out.csv"
+    source.write_text(lines(*many(20_000)))
+    running = subprocess.Popen(
+        [sys.executable, str(MANAGE), "derive", str(source), "--output", str(target)], stderr=subprocess.PIPE, text=True
+    )
+    for _ in range(2000):
+        if any(path.suffix == ".part" for path in tmp_path.iterdir()):
+            break
+        time.sleep(0.005)
+    running.terminate()
+    said = running.communicate(timeout=60)[1]
+    assert running.returncode == 130
+    assert said.rstrip().endswith("derive: stopped; nothing written")
+    assert [path.name for path in tmp_path.iterdir()] == ["in.csv"]
+
+
+def test_one_stay_longer_than_a_piece(tmp_path, monkeypatch):
+    rows = [row.replace(row.split(",")[0], "S0", 1) for row in many(8)]
+    rows += ["S1,2025-03-09T05:00:00Z,arterial,7.4,40,90,9.0,,45,5,180,80,last"]
+    whole = outputs(tmp_path, rows)
+    monkeypatch.setattr(batch_split, "PIECE", 150)
+    assert outputs(tmp_path, rows) == whole

@@ -20,6 +20,8 @@ from dataclasses import dataclass, field
 from hashlib import blake2b
 from importlib import import_module
 from multiprocessing import get_context
+from signal import SIGTERM, default_int_handler, signal
+from threading import current_thread, main_thread
 from typing import BinaryIO
 
 from .batch_files import reading, writing
@@ -82,7 +84,8 @@ def run(source: str, target: str, processes: int = 2, dask: str = "") -> int:
     """Derive one file into another; returns the exit code and says on standard error what was done."""
     begun = time.monotonic()
     try:
-        tally = _derive_file(source, target, processes, dask)
+        with _stopping_clears_up():
+            tally = _derive_file(source, target, processes, dask)
     except BatchError as error:
         for problem in error.problems[:_SHOWN]:
             _say(f"{_name(source)}: {problem}")
@@ -101,6 +104,19 @@ def run(source: str, target: str, processes: int = 2, dask: str = "") -> int:
         return 130
     _say(tally.sentence(target, time.monotonic() - begun))
     return 0
+
+
+@contextmanager
+def _stopping_clears_up() -> Iterator[None]:
+    """A request to stop ends like an interrupt, so that nothing half-written stays behind."""
+    if current_thread() is not main_thread():
+        yield
+        return
+    before = signal(SIGTERM, default_int_handler)
+    try:
+        yield
+    finally:
+        signal(SIGTERM, before)
 
 
 @dataclass

@@ -39,7 +39,7 @@ def pieces(data: BinaryIO, header: Header, size: int = PIECE) -> Iterator[Piece]
     while True:
         more = data.read(size)
         whole = rest + more
-        cut = _cut(whole, place) if more else len(whole)
+        cut = _cut(whole, place, len(rest)) if more else len(whole)
         if cut:
             yield Piece(whole[:cut], line)
             line += whole.count(b"\n", 0, cut)
@@ -48,8 +48,11 @@ def pieces(data: BinaryIO, header: Header, size: int = PIECE) -> Iterator[Piece]
             return
 
 
-def _cut(data: bytes, place: int | None) -> int:
-    """Where to cut: after the last whole record of the last stay but one; 0 if there is only one stay."""
+def _cut(data: bytes, place: int | None, one_stay: int) -> int:
+    """Where to cut: after the last whole record of the last stay but one; 0 if there is only one stay.
+
+    The first ``one_stay`` bytes hold a single stay, as the last cut left them, and need not be looked at again.
+    """
     end = _record_end(data, len(data))
     if place is None or end == 0:
         return end
@@ -59,6 +62,8 @@ def _cut(data: bytes, place: int | None) -> int:
         before = _record_start(data, start)
         if cell_of(data[before : start - 1], place) != stay:
             return start
+        if before < one_stay:
+            return 0
         start = before
     return 0
 
