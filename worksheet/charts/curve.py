@@ -49,7 +49,7 @@ def curve_chart(sheet: Sheet, stay: Stay, rows: Ints, display: Display, scale: T
     blood = _latest(sheet, rows)
     x_axis = value_axis("po2", display.heading("po2"), [0.0, float(points.shown(display, "po2", np.array(150.0)))],
                         display, decimals=display.decimals("po2"), floor=0, ceiling=150.0 / display.unit("po2").factor,
-                        most=6)  # fmt: skip
+                        most=6, room=False)  # fmt: skip
     full = float(points.shown(display, "o2hb", np.array(1.0)))
     title = f"O2Hb, share of all Hb ({display.unit('o2hb').label or 'fraction'})"
     y_axis = value_axis("o2hb", title, [0.0, full], display, decimals=display.decimals("o2hb"), floor=0, ceiling=full,

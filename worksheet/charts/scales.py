@@ -148,6 +148,7 @@ def value_axis(
     most: int = 5,
     domain: tuple[float, float] = (0.0, 1.0),
     empty: str = "",
+    room: bool = True,
 ) -> Axis:
     """An axis around values, at round numbers; never narrower than ``least`` so that noise does not fill a panel."""
     finite = [v for v in values if math.isfinite(v)]
@@ -166,7 +167,7 @@ def value_axis(
     places = max(0, -math.floor(math.log10(step) + 1e-9))
     ticks = tuple((round(n * step, 9), display.number(n * step, places)) for n in range(first, last + 1))
     low, high = round(first * step, 9), round(last * step, 9)
-    if ceiling is not None and high >= ceiling:
+    if room and ceiling is not None and high >= ceiling:
         high += 0.05 * (high - low)  # room for a marker on the ceiling itself
     return Axis(key, title, low, high, ticks, decimals, domain, empty)
 

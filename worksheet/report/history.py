@@ -56,7 +56,7 @@ def _row(order: Order, entry: Entry) -> list[Any]:
     earlier = entry.replaces or entry
     changed: Any = "; ".join(_changes(order, earlier, entry)) or "no value changed"
     if entry.struck:
-        changed = [f"struck out: {'; '.join(_values(order, earlier)) or 'no values'}", "struck"]
+        changed = ["; ".join(_values(order, earlier)) or "no values", "struck"]
     reason = "withheld" if order.deidentify else entry.reason
     who = "" if order.deidentify else f"{entry.recorded_by.username}, "
     return [order.when(earlier.time), changed, reason, f"{who}{order.when(entry.recorded_at)}"]
