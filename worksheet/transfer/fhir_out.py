@@ -27,8 +27,8 @@ def resources(leaving: Leaving) -> Iterator[Resource]:
     """All resources of the chosen stays, patients first."""
     for stay in leaving.stays:
         yield from _stay(leaving, stay)
-    for entry in leaving.entries:
-        yield from _entry(leaving, entry)
+    for count, entry in enumerate(leaving.entries, 1):
+        yield from _entry(leaving, entry, count if leaving.deidentify else entry.pk)
 
 
 def bundle(leaving: Leaving) -> Resource:
@@ -84,33 +84,35 @@ def _system(stay: Stay) -> dict[str, str]:
     return {"system": system} if system else {}
 
 
-def _entry(leaving: Leaving, entry: Entry) -> Iterator[Resource]:
-    """One entry: its sample, its observations, and the report that holds them together."""
+def _entry(leaving: Leaving, entry: Entry, number: int) -> Iterator[Resource]:
+    """One entry: its sample, its observations, and the report that holds them together, under one number."""
     name = leaving.names[entry.stay_id]
     who = f"-{name}" if leaving.deidentify else str(entry.stay_id)
     moment = leaving.moment(entry.stay_id, entry.time).isoformat()
     shared: Resource = {"subject": _to("Patient", f"p{who}"), "encounter": _to("Encounter", f"e{who}"),
                         "effectiveDateTime": moment}  # fmt: skip
     if entry.site:
-        yield _specimen(leaving, entry, f"p{who}", moment)
-    results = [_observation(leaving, entry, CATALOGUE[n], shared) for n in MEASURED if getattr(entry, n) is not None]
+        yield _specimen(leaving, entry, number, f"p{who}", moment)
+    results = [
+        _observation(leaving, entry, number, CATALOGUE[n], shared) for n in MEASURED if getattr(entry, n) is not None
+    ]
     if entry.event:
-        results.append(_event(entry, shared))
+        results.append(_event(entry, number, shared))
     yield from results
     if results:
         yield {
-            "resourceType": "DiagnosticReport", "id": f"r{entry.pk}", "status": "final", **shared,
+            "resourceType": "DiagnosticReport", "id": f"r{number}", "status": "final", **shared,
             "code": {"text": "entry of the worksheet"}, "result": [_to("Observation", r["id"]) for r in results],
         }  # fmt: skip
 
 
-def _specimen(leaving: Leaving, entry: Entry, patient: str, moment: str) -> Resource:
+def _specimen(leaving: Leaving, entry: Entry, number: int, patient: str, moment: str) -> Resource:
     site = Site(entry.site)
     codes = [{"system": f"{OWN}site", "code": site.name.lower()}]
     if site in _SITE_CODES:
         codes.append({"system": "http://terminology.hl7.org/CodeSystem/v2-0487", "code": _SITE_CODES[site]})
     specimen: Resource = {
-        "resourceType": "Specimen", "id": f"s{entry.pk}", "subject": _to("Patient", patient),
+        "resourceType": "Specimen", "id": f"s{number}", "subject": _to("Patient", patient),
         "type": {"coding": codes, "text": f"{site.name.lower().replace('_', ' ')} blood"},
         "collection": {"collectedDateTime": moment},
     }  # fmt: skip
@@ -119,19 +121,19 @@ def _specimen(leaving: Leaving, entry: Entry, patient: str, moment: str) -> Reso
     return specimen
 
 
-def _observation(leaving: Leaving, entry: Entry, quantity: Quantity, shared: Resource) -> Resource:
+def _observation(leaving: Leaving, entry: Entry, number: int, quantity: Quantity, shared: Resource) -> Resource:
     typed = entry.typed.get(quantity.name, {})
     blood = bool(entry.site) and quantity.name in _BLOOD
     kind = "laboratory" if blood else "vital-signs"
     found: Resource = {
-        "resourceType": "Observation", "id": f"o{entry.pk}-{quantity.name.replace('_', '-')}",
+        "resourceType": "Observation", "id": f"o{number}-{quantity.name.replace('_', '-')}",
         "status": _STATUS.get(typed.get("status", ""), "final"),
         "category": [{"coding": [{"system": _CATEGORY, "code": kind}]}],
         "code": _code(quantity, Site(entry.site)), **shared,
         "valueQuantity": _quantity(leaving, quantity, getattr(entry, quantity.name), str(typed.get("comparator", ""))),
     }  # fmt: skip
     if blood:
-        found["specimen"] = _to("Specimen", f"s{entry.pk}")
+        found["specimen"] = _to("Specimen", f"s{number}")
     method = _method(entry, quantity.name)
     if method:
         found["method"] = {"coding": [method]}
@@ -170,10 +172,10 @@ def _method(entry: Entry, name: str) -> dict[str, str]:
     return {}
 
 
-def _event(entry: Entry, shared: Resource) -> Resource:
+def _event(entry: Entry, number: int, shared: Resource) -> Resource:
     event = Event(entry.event).name.lower()
     found: Resource = {
-        "resourceType": "Observation", "id": f"o{entry.pk}-event", "status": "final", **shared,
+        "resourceType": "Observation", "id": f"o{number}-event", "status": "final", **shared,
         "code": {"coding": [{"system": f"{OWN}event", "code": event}], "text": event.replace("_", " ")},
     }  # fmt: skip
     if entry.event_amount is not None:

@@ -222,7 +222,7 @@ def _questions(plan: Plan, texts: list[list[str]], order_sure: bool) -> list[str
             asked.append(f"Column '{shortened(c.header)}' ({sample} …): {proposal}.")
     if not order_sure:
         asked.append("The dates can be read in two ways: say whether the day or the month comes first"
-                     + (f" (proposed: {plan.order})." if plan.order else "."))  # fmt: skip
+                     + (" (proposed: the day)." if plan.order == "dmy" else "."))  # fmt: skip
     if plan.column("stay") is None:
         asked.append("No column names the stay or patient.")
     if plan.column("time") is None and not (plan.column("date") and plan.column("clock")):

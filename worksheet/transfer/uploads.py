@@ -124,6 +124,7 @@ def _preview(request: HttpRequest, found: Upload) -> dict[str, Any]:
         "zones": common_zones(found.unit),
         "options": found.options,
         "tabular": tabular_file,
+        "proposes_day": any("(proposed: the day)" in q for q in report.get("questions", [])),
         "asks_zone": any("time zone" in q for q in report.get("questions", [])),
     }
 
