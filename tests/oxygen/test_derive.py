@@ -136,6 +136,12 @@ def test_p50_prefers_the_venous_pair_and_takes_no_calculated_saturation():
     assert math.isnan(value(derived(GAS | {"so2": np.nan, "so2_calculated": 0.9}), "p50"))
 
 
+def test_no_p50_that_only_noise_on_the_flat_part_can_have_made():
+    assert math.isnan(value(derived(GAS | {"po2": 180.0, "so2": 0.965}), "p50"))
+    assert value(derived(GAS | {"po2": 180.0, "so2": 0.95}), "p50") > 50  # reported, with a finding
+    assert 25 < value(derived(GAS | {"po2": 88.0, "so2": 0.965}), "p50") < 30
+
+
 def test_gases_at_37_degrees_and_body_temperature_only_for_what_the_body_unloads():
     warm, cold = derived(GAS | {"temperature": 40.0}), derived(GAS | {"temperature": 33.0})
     for name in ("so2_from_po2", "cao2", "p50"):

@@ -100,6 +100,7 @@ def test_a_near_miss_does_not(code):
         ("po2-above-alveolar", [GAS | {"fio2": 0.50, "device": Device.NASAL_CANNULA, "po2": 330.0}]),  # FiO2 is a guess
         ("po2-looks-like-kpa", [VENOUS]),
         ("pco2-looks-like-kpa", [{"ph": 6.95, "pco2": 11.0, "po2": 110.0}]),  # severe metabolic acidosis
+        ("pco2-looks-like-kpa", [{"ph": 7.22, "pco2": 11.0, "po2": 110.0}]),
         (
             "so2-against-curve",
             [GAS | {"po2": 45.0, "so2": 0.755}],
@@ -113,6 +114,8 @@ def test_a_near_miss_does_not(code):
         ("calculated-as-measured", [GAS | {"so2": 0.97}]),  # whole percents say nothing
         ("calculated-as-measured", [GAS | {"so2": 0.968}]),  # nor does one with one decimal
         ("duplicate-sample", [GAS | {"minute": 30}, GAS | {"site": MIXED}]),
+        ("duplicate-sample", [GAS | {"minute": 90}, GAS]),  # rounded gases of a steady patient do meet
+        ("p50-out-of-range", [GAS | {"po2": 180.0, "so2": 0.97}]),  # the flat part: noise, and no P50 is reported
         ("duplicate-sample", [GAS | {"minute": 30}, GAS | {"stay": 2}]),
         ("gap-send-co-oximetry", [GAS | CO_OXIMETRY | {"spo2": 0.85}]),
         ("spo2-above-97", [GAS | {"spo2": 0.98}]),  # no FiO2, no S/F to speak of

@@ -26,6 +26,8 @@ from .constants import DEFAULT, Constants
 from .quantities import DERIVED, WITH_SD
 from .readings import Bools, Derived, Device, Flag, Floats, Ints, Site, Snapshots
 
+# mmHg: no adult's blood is outside, even at pH 6.9, 41 °C or with half its haemoglobin holding CO; common practice
+P50_OF_BLOOD = (12.0, 50.0)
 LOW_FLOW = (Device.NASAL_CANNULA, Device.SIMPLE_MASK, Device.RESERVOIR_MASK)
 _OWN = (
     "ph", "pco2", "po2", "hb", "so2", "o2hb", "cohb", "methb", "sulfhb", "spo2", "fio2", "cardiac_output",
@@ -323,12 +325,33 @@ def _p50(chain: _Chain, measured: Floats) -> Floats:
     """P50 of the venous pair, which says more, else of the arterial one."""
     raw = chain.raw
     if not chain.paired:
-        return curve.p50_in_vivo(raw["po2"], measured)
+        return p50_of_pair(raw["po2"], measured)
     dys = (chain.venous_or_arterial(name) for name in ("cohb", "methb", "sulfhb"))
-    venous = curve.p50_in_vivo(raw["venous_po2"], measured_saturation(raw["venous_so2"], raw["venous_o2hb"], *dys))
+    venous = p50_of_pair(raw["venous_po2"], measured_saturation(raw["venous_so2"], raw["venous_o2hb"], *dys))
     rest = np.isnan(venous)
-    venous[rest] = curve.p50_in_vivo(raw["po2"][rest], measured[rest])
+    venous[rest] = p50_of_pair(raw["po2"][rest], measured[rest])
     return venous
+
+
+@np.errstate(all="ignore")
+def p50_of_pair(po2: Floats, so2: Floats) -> Floats:
+    """In-vivo P50 that can be meant: on the flat part of the curve noise alone makes values that no blood has.
+
+    Parameters
+    ----------
+    po2 : ndarray
+        Oxygen partial pressure at 37 °C [mmHg].
+    so2 : ndarray
+        Functional saturation by co-oximetry [0-1].
+
+    Returns
+    -------
+    ndarray
+        P50 [mmHg]; NaN outside a saturation of 0.30 to 0.97, and above 0.95 where it is not 12 to 50 mmHg.
+    """
+    p50 = curve.p50_in_vivo(po2, so2)
+    noise = (so2 > curve.P50_FULL[1]) & ~((p50 >= P50_OF_BLOOD[0]) & (p50 <= P50_OF_BLOOD[1]))
+    return np.where(noise, np.nan, p50)
 
 
 def _arterial_flags(snapshots: Snapshots, chain: _Chain, columns: Raw, rows: Rows) -> Ints:
@@ -368,7 +391,7 @@ def _venous(snapshots: Snapshots, constants: Constants, rows: Rows, table: Deriv
     dys = [chain.venous_or_arterial(name) for name in ("cohb", "methb", "sulfhb")]
     measured = measured_saturation(own["so2"], own["o2hb"], *dys)
     table["so2_from_po2"][rows] = _curve(own["po2"], own["ph"], own["pco2"], dys[0], dys[1], constants)
-    table["p50"][rows] = curve.p50_in_vivo(own["po2"], measured)
+    table["p50"][rows] = p50_of_pair(own["po2"], measured)
     content_there = np.where(central, chain.column("cvo2"), np.nan)
     table["cvo2"][rows] = content_there
     table.saturation[rows] = chain.venous.saturation

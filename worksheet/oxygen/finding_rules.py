@@ -14,7 +14,7 @@ import numpy as np
 from . import acidbase, curve, measurement, oximetry
 from .align import Line, earlier, taken
 from .constants import Constants
-from .derive import measured_saturation
+from .derive import P50_OF_BLOOD, measured_saturation
 from .domain import quiet
 from .quantities import CATALOGUE, MMHG_PER_KPA
 from .readings import Bools, Derived, Device, Event, Flag, Floats, Ints, Site, Snapshots
@@ -24,6 +24,7 @@ _P50_AMONG_PATIENTS = 0.05  # 1 SD of ln P50 about the modelled curve: about 1 m
 _HILL = 2.7  # slope of the curve, for the size of an uncertainty only
 CLOCK_SKEW = 5 / 60  # h that two clocks may differ by
 SAME_SAMPLE = 24.0  # h within which equal values are one sample twice
+_REPEATED = ("ph", "pco2", "po2", "hb", "so2", "o2hb", "lactate")
 
 Numbers = Mapping[str, tuple[str, Floats]]
 
@@ -158,10 +159,13 @@ def _alkali(case: Case) -> Floats:
 
 @_rule("pco2-looks-like-kpa")
 def _pco2_like_kpa(case: Case) -> Hit:
-    """PCO2 under 12 mmHg at a pH that it cannot have, while its 7.5-fold can be."""
-    pco2 = case.own("pco2")
-    bicarbonate = _alkali(case)
-    where = (pco2 < 12.0) & (case.own("ph") > 7.15) & (bicarbonate < 5.0) & (bicarbonate * MMHG_PER_KPA < 55.0)
+    """PCO2 under 12 mmHg at a pH that it cannot have, while its 7.5-fold can be.
+
+    Beside a PO2 that cannot be in kPa it takes a pH above 7.30: in the worst metabolic acidosis PCO2 does fall to 10.
+    """
+    pco2, bicarbonate = case.own("pco2"), _alkali(case)
+    least_ph = np.where(case.own("po2") > 30.0, 7.30, 7.15)
+    where = (pco2 < 12.0) & (case.own("ph") > least_ph) & (bicarbonate < 6.5) & (bicarbonate * MMHG_PER_KPA < 55.0)
     return Hit(where, {"pco2": ("pco2", pco2)})
 
 
@@ -310,9 +314,9 @@ def _co_and_ci_disagree(case: Case) -> Hit:
 
 @_rule("p50-out-of-range")
 def _p50_out_of_range(case: Case) -> Hit:
-    """P50 under 12 or above 50 mmHg: no blood of an adult, even at pH 6.9, 41 °C or half its haemoglobin with CO."""
+    """P50 that no blood has, from a saturation that should have shown it well (up to 0.95)."""
     p50 = case.result("p50")
-    return Hit((p50 < 12.0) | (p50 > 50.0), {"p50": ("p50", p50)})
+    return Hit((p50 < P50_OF_BLOOD[0]) | (p50 > P50_OF_BLOOD[1]), {"p50": ("p50", p50)})
 
 
 @_rule("o2er-out-of-range")
@@ -338,17 +342,19 @@ def _time_in_future(case: Case) -> Hit:
 
 @_rule("duplicate-sample")
 def _duplicate_sample(case: Case) -> Hit:
-    """The stay's previous sample from the same site with equal pH, PCO2 and PO2 within a day, or at the same time."""
+    """The stay's previous sample from the same site with equal pH, PCO2 and PO2, or two gases at one time.
+
+    Equal within an hour; within a day only if a fourth value is equal too: rounded gases of a steady patient do meet.
+    """
     readings = case.snapshots.readings
     before = _earlier_same_site(case)
-    same = np.ones(len(case.rows), dtype=np.bool_)
-    for name in ("ph", "pco2", "po2"):
-        same &= case.own(name) == taken(readings[name], before)
-    for name in ("hb", "so2", "o2hb", "lactate"):
-        same &= ~(np.abs(case.own(name) - taken(readings[name], before)) > 0.0)
+    apart = {name: np.abs(case.own(name) - taken(readings[name], before)) for name in _REPEATED}
+    same = np.all([apart[name] == 0.0 for name in _REPEATED[:3]], axis=0)
+    same &= ~np.any([apart[name] > 0.0 for name in _REPEATED[3:]], axis=0)
+    fourth = np.any([apart[name] == 0.0 for name in _REPEATED[3:]], axis=0)
     hours = readings.time[case.rows] - taken(readings.time, before)
-    gas = ~np.isnan(case.own("po2")) & ~np.isnan(taken(readings["po2"], before))
-    return Hit((same & (hours <= SAME_SAMPLE)) | (gas & (hours < 1e-6)), {"hours": ("", hours)})
+    same &= hours <= np.where(fourth, SAME_SAMPLE, 1.0)
+    return Hit(same | (~np.isnan(apart["po2"]) & (hours < 1e-6)), {"hours": ("", hours)})
 
 
 def _earlier_same_site(case: Case) -> Ints:
