@@ -270,10 +270,8 @@ class BedRow:
         """The change as a share of supply at the start."""
         if not self.level:
             return ""
-        share, half = (
-            self.display.number(100 * x, 0, signed) for x, signed in ((self.share, True), (self.share_half, False))
-        )
-        return f"{share} ± {half} %"
+        share = words.rounded(self.display, 100 * self.share, 0, signed=True)
+        return f"{share} ± {self.display.number(100 * self.share_half, 0)} %"
 
     @property
     def change_text(self) -> str:

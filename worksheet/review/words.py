@@ -67,7 +67,7 @@ def lactate_course(trend: LactateTrend, display: Display) -> str:
         beyond = "beyond noise" if trend.beyond_noise else "within noise"
         return f"{percent(display, -trend.decrease)} in {age_words(trend.hours)}, {beyond}"
     if trend.kind == "normal":
-        return "below 2 throughout" if trend.n > 1 else ""
+        return "below 2" if trend.n > 1 else ""
     if trend.kind == "unclear":
         return "no clear course"
     return "" if trend.reason in ("no lactate", "a single lactate") else f"no course: {trend.reason}"
