@@ -95,6 +95,7 @@ def without_guard(table: str) -> None:
     """Take the triggers off that refuse a change: somebody with the keys of the database would."""
     with connection.cursor() as cursor:
         if connection.vendor == "postgresql":
+            cursor.execute("SET CONSTRAINTS ALL IMMEDIATE")
             cursor.execute(f"ALTER TABLE {table} DISABLE TRIGGER USER")
             return
         cursor.execute("SELECT name FROM sqlite_master WHERE type = 'trigger' AND tbl_name = %s", [table])
