@@ -85,7 +85,18 @@ class Ledger:
         return len(self.start_row)
 
     def step(self, name: str) -> Floats:
-        """Contribution of a step of :data:`STEPS` [unit of the level]."""
+        """Contribution of a step.
+
+        Parameters
+        ----------
+        name : str
+            Of :data:`STEPS`.
+
+        Returns
+        -------
+        ndarray
+            Contribution [unit of the level], NaN where there is no comparison.
+        """
         values: Floats = getattr(self, name)
         return values
 
@@ -95,7 +106,18 @@ class Ledger:
         return tuple(UNITS[int(level)] for level in self.level)
 
     def take(self, rows: Ints | Bools) -> Ledger:
-        """The comparisons of the given rows."""
+        """The comparisons of the given rows.
+
+        Parameters
+        ----------
+        rows : ndarray of int64 or bool
+            Which [row number].
+
+        Returns
+        -------
+        Ledger
+            Only these, in that order [unchanged].
+        """
         columns: dict[str, Any] = {
             key: {name: column[rows] for name, column in value.items()} if isinstance(value, Mapping) else value[rows]
             for key, value in vars(self).items()

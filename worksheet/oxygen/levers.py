@@ -225,11 +225,11 @@ def _point(snapshots: Snapshots, derived: Derived, row: int, name: str, constant
 def _haemoglobin(point: _Point, target: float, speech: Speech) -> Lever:
     free = point.supply(hb=0.0)
     per_gram = point.supply(hb=1.0) - free
-    needed, limit = (target - free) / per_gram, point.supply(hb=HB_LIMIT)
+    needed, limit = _ratio(target - free, per_gram), point.supply(hb=HB_LIMIT)
     gain = per_gram * G_PER_UNIT * UNIT_WEIGHT / point.weight
     units = (needed - point.hb) * point.weight / UNIT_WEIGHT / G_PER_UNIT
     ok = needed <= HB_LIMIT
-    about = f", about {units:.0f} red-cell unit{'s' if round(units) != 1 else ''}" if units >= 0.5 else ""
+    about = f", about {units:.0f} red-cell unit{'s' if round(units) != 1 else ''}" if 0.5 <= units < np.inf else ""
     words = f"haemoglobin {speech.value('hb', needed, with_unit=True)}{about}" if needed > point.hb else "enough"
     if not ok:
         words = _cannot(point, f"a haemoglobin of {speech.value('hb', HB_LIMIT, with_unit=True)}", limit, speech)
@@ -243,6 +243,8 @@ def _lung(point: _Point, target: float, speech: Speech) -> Lever | None:
     def supply(po2: float) -> float:
         return point.supply(saturation=point.saturation_at(po2), po2=po2)
 
+    if not np.isfinite(point.saturation_at(point.po2)):
+        return None
     full = point.supply(saturation=1.0, po2=max(point.po2, 100.0))
     # past full saturation only dissolved oxygen is left, and that is no lever: the limit is saturation
     ok = target <= max(full, point.supply())
@@ -264,7 +266,7 @@ def _lung(point: _Point, target: float, speech: Speech) -> Lever | None:
 def _function(point: _Point, target: float, speech: Speech) -> Lever:
     free = point.supply(active=0.0)
     per_share = point.supply(active=1.0) - free
-    needed, limit = 1.0 - (target - free) / per_share, point.supply(active=1.0)
+    needed, limit = 1.0 - _ratio(target - free, per_share), point.supply(active=1.0)
     known, now = bool(point.rows.dys_known[point.row]), 1.0 - point.active
     ok = needed >= 0.0
     gain = per_share * min(0.05, now)
@@ -279,13 +281,18 @@ def _function(point: _Point, target: float, speech: Speech) -> Lever:
 def _flow(point: _Point, target: float, speech: Speech) -> Lever:
     quantity = "cardiac_index" if point.name == "do2i" else "cardiac_output"
     per_litre = point.supply(flow=1.0)
-    needed = target / per_litre
+    needed = _ratio(target, per_litre)
     highest = INDEX_LIMIT if point.name == "do2i" else 2.0 * INDEX_LIMIT
     ok, limit, step = needed <= highest, per_litre * highest, 0.1 * point.flow
     words = "enough" if needed <= point.flow else speech.value(quantity, needed, with_unit=True)
     words = words if ok else _cannot(point, speech.value(quantity, highest, with_unit=True), limit, speech)
     small = f"flow {speech.value(quantity, step, signed=True, with_unit=True)} (10 %)"
     return Lever("flow", quantity, point.flow, needed if ok else np.nan, ok, limit, words, small, per_litre * step)
+
+
+def _ratio(wanted: float, gives: float) -> float:
+    """How much is needed where each unit gives so much; endless where it gives nothing."""
+    return wanted / gives if gives > 0.0 else np.inf
 
 
 def _cannot(point: _Point, limit: str, gives: float, speech: Speech) -> str:

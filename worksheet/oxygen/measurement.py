@@ -87,7 +87,20 @@ class Uncertainties:
     curve: float = 0.05
 
     def sd(self, name: str, value: Floats) -> Floats:
-        """Standard uncertainty of a fresh value [canonical unit]; not for flow and FiO2, see :func:`parts`."""
+        """Standard uncertainty of a fresh value; not for flow and FiO2, see :func:`parts`.
+
+        Parameters
+        ----------
+        name : str
+            Quantity of the catalogue.
+        value : ndarray
+            Its values [canonical unit].
+
+        Returns
+        -------
+        ndarray
+            1 SD [canonical unit], NaN where the value is missing.
+        """
         absolute, relative = self.quantities[name]
         return np.asarray(np.maximum(absolute, relative * np.abs(value)) + 0.0 * value)
 

@@ -12,8 +12,8 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from .chain import chain_inputs, oxygen_chain
 from .constants import Constants
-from .derive import chain_inputs, oxygen_chain
 from .domain import Floats
 from .measurement import DEFAULT, Uncertainties, parts
 from .readings import Snapshots

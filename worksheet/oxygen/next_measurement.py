@@ -109,7 +109,7 @@ def next_measurement(
         None where the target is not known at this row.
     """
     target = target or next((n for n in ("do2i", "do2", "cao2") if np.isfinite(derived[n][row])), "cao2")
-    if not np.isfinite(derived[target][row]):
+    if not derived[target][row] > 0.0:
         return None
     found = known or budget(snapshots, derived, constants, settings)
     variance = {name: float(np.nan_to_num(part[row])) for name, part in found.variance(target).items()}

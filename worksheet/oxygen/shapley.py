@@ -49,8 +49,13 @@ def split(start: Factors, end: Factors, constants: Constants) -> Split:
         Terms that add up to the change [unit of supply]; NaN where either end is NaN.
     """
     parts, slopes = curve_split(start, end, constants)
+    beyond = np.isnan(sum(parts.values()))  # outside the curve's domain: saturation counts for PO2 as a whole
     change = (end.saturation - end.bound) - (start.saturation - start.bound)
     parts["unloading"] = start.bound - end.bound
+    if np.any(beyond):
+        parts = {name: np.where(beyond, 0.0, part) for name, part in parts.items()}
+        parts["po2"] = np.where(beyond, change, parts["po2"])
+        slopes = {name: np.where(beyond, 0.0, slope) for name, slope in slopes.items()}
     parts["residual"] = change - sum(parts.values())
     both = start.measured | end.measured
     parts["residual"] = np.where(both, parts["residual"], 0.0 * parts["residual"])

@@ -53,11 +53,33 @@ class Budget:
     sds: Mapping[str, Floats]
 
     def variance(self, name: str) -> dict[str, Floats]:
-        """Contribution of each raw input to the variance of a derived quantity [unit squared]."""
+        """Contribution of each raw input to the variance of a derived quantity.
+
+        Parameters
+        ----------
+        name : str
+            Derived quantity.
+
+        Returns
+        -------
+        dict of str to ndarray
+            Raw input: its part of the variance [unit squared], NaN where the input is missing.
+        """
         return {key: (partial * self.sds[key]) ** 2 for key, partial in self.partials[name].items()}
 
     def sd(self, name: str) -> Floats:
-        """Standard uncertainty of a derived quantity [its canonical unit]."""
+        """Standard uncertainty of a derived quantity.
+
+        Parameters
+        ----------
+        name : str
+            Derived quantity.
+
+        Returns
+        -------
+        ndarray
+            1 SD [its canonical unit]; inputs that are missing do not enter.
+        """
         total = np.zeros(len(self.sds["hb"]))
         for key, partial in self.partials[name].items():
             part = partial * self.sds[key]

@@ -88,7 +88,18 @@ class Verdict:
     start_supply: float = np.nan
 
     def probability_of_fall(self, share: float = 0.0) -> float:
-        """Probability that supply truly fell by more than a share of that at the start [0-1]."""
+        """Probability that supply truly fell by more than a share of that at the start.
+
+        Parameters
+        ----------
+        share : float
+            Share of the supply at the start, 0 for any fall [0-1].
+
+        Returns
+        -------
+        float
+            Probability [0-1], NaN where there is nothing to compare.
+        """
         if self.total is None:
             return np.nan
         return float(probability_of_fall(self.total.change, self.total.sd, share * self.start_supply))
@@ -134,7 +145,7 @@ def verdict(
     if at >= len(found.stay) or found.stay[at] != stay:
         raise KeyError(f"no stay {stay} in this review")
     one, step = found.ledger.take(np.array([at])), str(found.judgement.step[at])
-    if one.level[0] == Level.NONE:
+    if one.level[0] == Level.NONE or not one.start_supply[0] > 0.0:
         use = use_of(snapshots, derived, constants, settings, _rows_of(snapshots, stay), speech)
         return Verdict((_NOTHING,), step, None, "", (), use, ())
     rows = _rows_of(snapshots, stay, int(one.start_row[0]), int(one.end_row[0]))
@@ -177,7 +188,9 @@ def _supply(one: Ledger, total: RealChange, snapshots: Snapshots, speech: Speech
 def _cause(step: str, evidence: tuple[Evidence, ...], total: RealChange, use: Use) -> str:
     """Which step it was, what made up for it, and what the tissues say."""
     by_name = {item.step: item for item in evidence}
-    if step == UNDETERMINED:
+    if not step:
+        said = "Which step it was cannot be judged from these values"
+    elif step == UNDETERMINED:
         lost = [item for item in evidence if item.real and item.material]
         said = (
             f"{joined([item.words for item in lost])} both took supply; which took more cannot be told"
