@@ -125,6 +125,9 @@ def test_an_hour_that_comes_twice_is_asked_and_both_are_offered():
     second = moments.read("2026-10-25", "02:30", "1", ZURICH, NOW)
     assert (second.at - first.at).total_seconds() == 3600
     assert second.ambiguous, "the choice stays on the form"
+    assert moments.read("2026-10-25", "02:30 A", "", ZURICH, NOW).at == first.at
+    assert moments.read("2026-10-25", "0230b", "", ZURICH, NOW).at == second.at
+    assert moments.letter(second.at.astimezone(ZURICH)) == " B"
 
 
 @given(st.datetimes(datetime(2000, 1, 1), datetime(2026, 11, 30)))

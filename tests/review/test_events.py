@@ -109,6 +109,9 @@ def test_an_event_is_corrected_on_its_own_form(world):
     assert "why the entry is corrected" in world.client.post(url, sent).content.decode()
     assert world.client.post(url, {**sent, "reason": "three, not two"}).status_code == 302
     assert Entry.objects.current().get().event_amount == 3
+    strike = world.client.get(world.url("entry_strike", Entry.objects.current().get().pk)).content.decode()
+    assert "transfusion of red cells" in strike
+    assert "3 units" in strike
     late = {**sent, "amount": "4", "reason": "four", "key": "late"}
     told = world.client.post(url, late).content.decode()
     assert "nurse corrected this event in the meantime" in told

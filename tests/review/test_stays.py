@@ -88,6 +88,15 @@ def test_facts_are_changed_and_the_stay_ended_and_opened_again(world):
     assert AuditEvent.objects.filter(action="stay changed").count() == 3
 
 
+def test_an_hour_that_comes_twice_is_asked_and_kept(world):
+    sent = form(world, date="2025-10-26", clock="02:30", height="170", weight="70", age="60")
+    assert "comes twice" in world.client.post(world.url("stay_edit"), sent).content.decode()
+    assert world.client.post(world.url("stay_edit"), {**sent, "clock": "02:30 B"}).status_code == 302
+    world.stay.refresh_from_db()
+    assert world.stay.admitted_at.isoformat() == "2025-10-26T01:30:00+00:00"
+    assert 'value="02:30 B"' in world.client.get(world.url("stay_edit")).content.decode()
+
+
 def test_the_end_is_not_before_the_start(world):
     sent = form(world, end_date="2020-01-01", end_clock="10:00")
     assert "before the admission" in world.client.post(world.url("stay_edit"), sent).content.decode()

@@ -8,13 +8,14 @@ from typing import TYPE_CHECKING, Any
 from django.urls import reverse
 
 from worksheet.oxygen.quantities import CATALOGUE, MEASURED
+from worksheet.oxygen.readings import Event
 from worksheet.ward.display import Display, age_words
 from worksheet.ward.models import Entry
 
 from . import checks
 from .people import patient_page
 from .slip import Level, Notice, Slip, ValueField
-from .slip_words import DEVICE_WORDS, GROUPS, METHOD_WORDS, RARE, SITE_WORDS
+from .slip_words import AMOUNT_UNITS, DEVICE_WORDS, GROUPS, KIND_WORDS, METHOD_WORDS, RARE, SITE_WORDS
 from .trial import Trial
 
 if TYPE_CHECKING:
@@ -125,15 +126,24 @@ def _follows(trial: Trial, display: Display) -> dict[str, Any]:
 
 def facts(display: Display, entry: Entry) -> list[tuple[str, str]]:
     """Everything in an entry, label and text, in the order of a slip."""
-    found = [
-        ("time", f"{entry.time.astimezone(entry.stay.unit.zone):%Y-%m-%d %H:%M}"),
-        ("site", _word(SITE_WORDS, entry.site)),
+    found = [("time", f"{entry.time.astimezone(entry.stay.unit.zone):%Y-%m-%d %H:%M}")]
+    found += _event_facts(display, entry) if entry.event else [("site", _word(SITE_WORDS, entry.site))]
+    found += [
+        (CATALOGUE[n].symbol, display.value(n, getattr(entry, n), with_unit=True))
+        for n in MEASURED
+        if getattr(entry, n) is not None
     ]
-    found += [(CATALOGUE[n].symbol, display.value(n, getattr(entry, n), with_unit=True))
-              for n in MEASURED if getattr(entry, n) is not None]  # fmt: skip
     found += [("device", _word(DEVICE_WORDS, entry.device))] if entry.device else []
     found += [("method of flow", _word(METHOD_WORDS, entry.flow_method))] if entry.flow_method else []
     return found + [(n, getattr(entry, n)) for n in ("sample", "note") if getattr(entry, n)]
+
+
+def _event_facts(display: Display, entry: Entry) -> list[tuple[str, str]]:
+    found = [("event", _word(KIND_WORDS, entry.event))]
+    if entry.event_amount is not None:
+        amount = display.number(entry.event_amount, 0 if entry.event_amount.is_integer() else 2)
+        found.append(("amount", f"{amount} {AMOUNT_UNITS.get(Event(entry.event), '')}".strip()))
+    return found + ([("site", _word(SITE_WORDS, entry.site))] if entry.site else [])
 
 
 def _word(words: Any, code: int) -> str:

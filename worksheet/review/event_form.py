@@ -14,19 +14,13 @@ from worksheet.ward.record import NewEntry
 
 from . import checks, entry_form, numbers, texts
 from .slip import Level, Notice, Slip
+from .slip_words import AMOUNT_UNITS, KIND_WORDS
 
-KIND_WORDS = {
-    Event.TRANSFUSION: "transfusion of red cells",
-    Event.BLEED: "bleed",
-    Event.DEVICE_CHANGE: "change of the oxygen device or its setting",
-    Event.BED_MOVE: "move to another bed",
-    Event.OTHER: "something else",
-}
 SETTINGS = ("fio2", "oxygen_flow", "peep", "mean_airway_pressure")
 # Amounts: red-cell units by count, blood loss in mL. Limits: common practice.
 AMOUNT = {
-    Event.TRANSFUSION: ("units", (0.25, 60.0), (0.5, 10.0)),
-    Event.BLEED: ("mL", (1.0, 20_000.0), (20.0, 5_000.0)),
+    Event.TRANSFUSION: (AMOUNT_UNITS[Event.TRANSFUSION], (0.25, 60.0), (0.5, 10.0)),
+    Event.BLEED: (AMOUNT_UNITS[Event.BLEED], (1.0, 20_000.0), (20.0, 5_000.0)),
 }
 
 

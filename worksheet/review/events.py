@@ -20,9 +20,9 @@ from worksheet.ward.models import Bed, Draft, Entry, Stay
 from . import drafts, event_form
 from .entry import Desk, answered, go, refuse_other_person, same
 from .entry_page import facts, form_parts
-from .event_form import KIND_WORDS, SETTINGS, EventForm
+from .event_form import SETTINGS, EventForm
 from .people import patient_page
-from .slip_words import DEVICE_WORDS
+from .slip_words import DEVICE_WORDS, KIND_WORDS
 from .versions import lead_to_newest, need_reason, newest
 
 

@@ -9,7 +9,7 @@ from zoneinfo import ZoneInfo
 
 AHEAD = timedelta(minutes=10)  # bedside clocks run ahead a little (common practice)
 _DATE = re.compile(r"(\d{4})[-./](\d{1,2})[-./](\d{1,2})", re.ASCII)
-_CLOCK = re.compile(r"(\d{1,2})(?:[:.hH]?(\d{2}))(?:[:.](\d{2}))?", re.ASCII)
+_CLOCK = re.compile(r"(\d{1,2})(?:[:.hH]?(\d{2}))(?:[:.](\d{2}))?(?:\s*([abAB]))?", re.ASCII)
 EARLIEST = date(1990, 1, 1)
 
 
@@ -37,7 +37,11 @@ def parse_date(text: str) -> date | None:
 
 
 def parse_clock(text: str) -> time | None:
-    """A 24 h clock time: 06:35, 6:35, 6.35 or 0635; None if it is none."""
+    """A 24 h clock time: 06:35, 6:35, 6.35 or 0635; None if it is none.
+
+    In the hour that comes twice ``02:30 A`` is the first and ``02:30 B`` the second (common practice where summer
+    time ends).
+    """
     match = _CLOCK.fullmatch(text.strip())
     try:
         return time(int(match.group(1)), int(match.group(2)), int(match.group(3) or 0)) if match else None
@@ -54,7 +58,14 @@ def read(date_text: str, clock_text: str, fold: str, zone: ZoneInfo, now: dateti
         return Moment(field="clock", problem=_said(clock_text, "time of the 24 h clock", "write it like 06:35"))
     if day < EARLIEST:
         return Moment(field="date", problem=f"{day} is before 1990.")
-    return _in_zone(datetime.combine(day, clock), fold, zone, now)
+    letter = clock_text.strip()[-1:].upper()
+    return _in_zone(datetime.combine(day, clock), {"A": "0", "B": "1"}.get(letter, fold), zone, now)
+
+
+def letter(moment: datetime) -> str:
+    """`` A`` or `` B`` for a local time in an hour that comes twice, else nothing."""
+    twice = moment.replace(fold=0).utcoffset() != moment.replace(fold=1).utcoffset()
+    return (" B" if moment.fold else " A") if twice else ""
 
 
 def _said(text: str, what: str, how: str) -> str:
@@ -75,7 +86,8 @@ def _in_zone(wall: datetime, fold: str, zone: ZoneInfo, now: datetime) -> Moment
     )
     if fold not in {"0", "1"}:
         words = (
-            f"{wall:%H:%M} comes twice on {wall:%Y-%m-%d} in {zone.key}: the clocks went back. Say which one is meant."
+            f"{wall:%H:%M} comes twice on {wall:%Y-%m-%d} in {zone.key}: the clocks went back. Say which one is meant "
+            f"({wall:%H:%M} A is the first, {wall:%H:%M} B the second)."
         )
         return Moment(field="fold", problem=words, choices=choices, ambiguous=True)
     return _not_future(second if fold == "1" else first, zone, now, choices)

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from worksheet.oxygen.quantities import MEASURED
-from worksheet.oxygen.readings import Device, FlowMethod, Site
+from worksheet.oxygen.readings import Device, Event, FlowMethod, Site
 
 GAS = ("ph", "pco2", "po2", "hb", "so2", "o2hb", "cohb", "methb", "lactate", "bicarbonate")
 GROUPS: tuple[tuple[str, str, tuple[str, ...]], ...] = (  # in the order in which a gas slip is read out
@@ -44,6 +44,14 @@ METHOD_WORDS = {
     FlowMethod.FICK: "Fick",
     FlowMethod.OTHER: "other",
 }
+KIND_WORDS = {
+    Event.TRANSFUSION: "transfusion of red cells",
+    Event.BLEED: "bleed",
+    Event.DEVICE_CHANGE: "change of the oxygen device or its setting",
+    Event.BED_MOVE: "move to another bed",
+    Event.OTHER: "something else",
+}
+AMOUNT_UNITS = {Event.TRANSFUSION: "units", Event.BLEED: "mL"}
 
 
 def names() -> Iterator[str]:

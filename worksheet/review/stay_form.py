@@ -31,7 +31,6 @@ class StayForm:
     bed_text: str = ""
     date: str = ""
     clock: str = ""
-    fold: str = ""
     end_date: str = ""
     end_clock: str = ""
     note: str = ""
@@ -61,7 +60,7 @@ class StayForm:
 def blank(unit: Unit, display: Display, now: datetime) -> StayForm:
     """An empty form: admitted now, nothing else filled in."""
     local = now.astimezone(unit.zone)
-    return StayForm(_fields({}, display), date=f"{local:%Y-%m-%d}", clock=f"{local:%H:%M}")
+    return StayForm(_fields({}, display), date=f"{local:%Y-%m-%d}", clock=f"{local:%H:%M}{moments.letter(local)}")
 
 
 def of_stay(stay: Stay, display: Display) -> StayForm:
@@ -72,7 +71,7 @@ def of_stay(stay: Stay, display: Display) -> StayForm:
         if moment:
             local = moment.astimezone(stay.unit.zone)
             setattr(form, names[0], f"{local:%Y-%m-%d}")
-            setattr(form, names[1], f"{local:%H:%M}")
+            setattr(form, names[1], f"{local:%H:%M}{moments.letter(local)}")
     return form
 
 
@@ -80,7 +79,7 @@ def from_post(posted: Mapping[str, str], confirmed: list[str], display: Display)
     """Read the form as it was sent; every text is kept."""
     posted = texts.posted(posted)
     form = StayForm(_fields(posted, display))
-    for part in ("identifier", "reference", "date", "clock", "fold", "end_date", "end_clock", "note"):
+    for part in ("identifier", "reference", "date", "clock", "end_date", "end_clock", "note"):
         setattr(form, part, posted.get(part, "").strip())
     form.bed_text, form.confirmed = posted.get("bed", ""), frozenset(confirmed)
     form.reference = form.reference or form.identifier
@@ -111,7 +110,7 @@ def check(form: StayForm, unit: Unit, display: Display, now: datetime, stay: Sta
 
 
 def _moment(form: StayForm, date_field: str, clock_field: str, zone: ZoneInfo, now: datetime) -> datetime | None:
-    found = moments.read(getattr(form, date_field), getattr(form, clock_field), form.fold or "0", zone, now)
+    found = moments.read(getattr(form, date_field), getattr(form, clock_field), "", zone, now)
     if found.at is None:
         form.say(date_field if found.field == "date" else clock_field, "time", found.problem)
     return found.at
