@@ -90,6 +90,7 @@ def test_every_number_of_the_tables_is_found(stay, pdftotext):
     text = flat(words_of(timeline_pdf(order), pdftotext, "-layout"))
     payload = timeline(order, "0" * 64)
     tables = [payload["ledger"], payload["entries"], *payload["other"], payload["constants"],
+              payload["uncertainties"],
               payload["saturations"]["table"], payload["corrections"]]  # fmt: skip
     numbers = {
         number
@@ -315,6 +316,16 @@ def test_all_findings_at_once(pdftotext):
     for row in table["rows"]:
         assert all(word in text for word in row[2].split())
     assert_inside_the_margins(timeline_pdf(order))
+
+
+def test_impossible_stored_value_is_told_and_not_used(pdftotext):
+    stay = world.make_stay("T-114")
+    values = world.gas(0, 1) | {"po2": 900.0}
+    record.record(stay, world.nurse(), record.NewEntry(world.START, Site.ARTERIAL, values))
+    payload = timeline(world.order(stay), "0" * 64)
+    assert ["900", "impossible"] in payload["entries"]["rows"][0]
+    assert not any("P/F" in name for name in payload["entries"]["head"])
+    assert "900" in flat(words_of(timeline_pdf(world.order(stay)), pdftotext))
 
 
 def test_span_without_entries():

@@ -1,6 +1,7 @@
 """A unit with one invented stay, as the printing tests need it."""
 
 from datetime import UTC, datetime, timedelta
+from zoneinfo import ZoneInfo
 
 from django.utils import timezone
 
@@ -11,6 +12,7 @@ from worksheet.ward.display import Display
 from worksheet.ward.models import Bed, Entry, Patient, Stay, Unit, User
 
 START = datetime(2026, 3, 28, 18, tzinfo=UTC)  # the night to 29 March loses an hour in Zurich
+DISPLAY = Display(ZoneInfo("Europe/Zurich"))
 
 
 def make_stay(reference: str = "T-100", **unit_options) -> Stay:

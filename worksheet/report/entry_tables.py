@@ -34,6 +34,7 @@ _FROM_CARRIED = {
 }  # fmt: skip
 LEGEND = (
     "c: carried forward from an earlier entry (or read a little later), or resting on such a value. "
+    "i: impossible as stored, kept out of every calculation. "
     "a: rests on an assumed inactive share of haemoglobin, or on a saturation that was calculated, not measured. "
     "A corrected entry shows its present values; the earlier ones stand under “Corrected and struck-out entries”."
 )
@@ -41,7 +42,7 @@ LEGEND = (
 
 def entries_table(order: Order, notes: dict[int, int]) -> dict[str, Any]:
     """The main table. ``notes`` gives the number of each entry's note."""
-    names = [name for name in _CHAIN if _has_any(order, name)]
+    names = [name for name in _CHAIN if has_any(order, name)]
     columns = [_column(order, name) for name in names]
     marks = [_marks(order, int(row), notes) for row in order.rows]
     rows = [[*head, *cells, mark] for head, *cells, mark in zip(_heads(order), *columns, marks, strict=True)]
@@ -59,7 +60,7 @@ def further_tables(order: Order) -> list[dict[str, Any]]:
     """Everything else that was measured or derived, a page's width at a time; rows without any of it left out."""
     names = [
         name for name in (*MEASURED, *DERIVED)
-        if name not in _CHAIN and name not in _OF_THE_STAY and _has_any(order, name)
+        if name not in _CHAIN and name not in _OF_THE_STAY and has_any(order, name)
     ]  # fmt: skip
     tables = -(-len(names) // _MOST_COLUMNS)
     each = -(-len(names) // max(tables, 1))
@@ -78,7 +79,16 @@ def _further(order: Order, names: Sequence[str]) -> dict[str, Any]:
     }
 
 
-def _has_any(order: Order, name: str) -> bool:
+def _refused(order: Order, name: str) -> Floats:
+    """Stored values that cannot be: told, and kept out of every calculation."""
+    refused = order.sheet.refused.get(name)
+    return np.full(len(order.rows), np.nan) if refused is None else refused[order.rows]
+
+
+def has_any(order: Order, name: str) -> bool:
+    """Whether the span has a value of this quantity."""
+    if not CATALOGUE[name].derived and np.isfinite(_refused(order, name)).any():
+        return True
     table = order.sheet.derived if CATALOGUE[name].derived else order.sheet.snapshots
     return bool(np.isfinite(table[name][order.rows]).any())
 
@@ -102,7 +112,10 @@ def _column(order: Order, name: str) -> list[Cell]:
     own = snap.source[name][rows] == rows
     shown = own | snap.arterial[rows]
     values: Floats = np.where(shown, snap[name][rows], np.nan)
-    return _cells(order, name, values, np.where(own, "", "carried"))
+    refused = _refused(order, name)
+    cannot = np.isfinite(refused)
+    kinds = np.where(cannot, "impossible", np.where(own, "", "carried"))
+    return _cells(order, name, np.where(cannot, refused, values), kinds)
 
 
 def _derived_column(order: Order, name: str) -> list[Cell]:

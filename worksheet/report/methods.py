@@ -7,7 +7,12 @@ from dataclasses import fields
 from typing import Any
 
 from worksheet.oxygen.constants import DEFAULT, CarryLimits, Constants
+from worksheet.oxygen.quantities import Quantity
+from worksheet.review.methods import derived_lines, measured_lines, spread_lines
 from worksheet.ward.display import Display, age_words
+
+from .entry_tables import has_any
+from .order import Order
 
 # name: what people read, unit, decimals, source
 CONSTANTS = {
@@ -71,6 +76,54 @@ def constants_table(constants: Constants, display: Display) -> dict[str, Any]:
         "sides": ["l", "l", "l"],
         "empty": "",
     }
+
+
+def equations_table(order: Order) -> dict[str, Any]:
+    """The equation and source of each derived quantity that stands in the document."""
+    lines = derived_lines(order.sheet.constants, order.display)
+    return {
+        "head": ["Derived quantity", "Equation", "Source"],
+        "rows": [
+            [_named(line.quantity, line.unit), " ".join(filter(None, (line.equation, line.note))), line.quantity.source]
+            for line in lines
+            if has_any(order, line.quantity.name)
+        ],
+        "widths": ["auto", "1.6", "1"],
+        "sides": ["l", "l", "l"],
+        "empty": "Nothing was derived in this span.",
+    }
+
+
+def uncertainties_table(order: Order) -> dict[str, Any]:
+    """Standard uncertainties in force of what was measured in the span, and those that depend on method or age."""
+    settings, display = order.sheet.settings, order.display
+    rows = [
+        [_named(line.quantity, line.unit), line.sd, line.quantity.sd_source or "common practice"]
+        for line in measured_lines(settings, display)
+        if has_any(order, line.quantity.name) and line.sd != "by method"
+    ]
+    for name, text in spread_lines(settings, display):
+        rows.append([f"{name[:1].upper()}{name[1:]}", text, _spread_source(name)])
+    return {
+        "head": ["Standard uncertainty of", "1 SD", "Source"],
+        "rows": rows,
+        "widths": ["1.2", "1", "1.6"],
+        "sides": ["l", "l", "l"],
+        "empty": "",
+    }
+
+
+def _spread_source(name: str) -> str:
+    """Where an uncertainty that depends on a method comes from."""
+    if name == "cardiac output, thermodilution":
+        return "Stetz 1982, Am Rev Respir Dis 126:1001"
+    if name.startswith("cardiac output"):
+        return "Peyton & Chong 2010, Anesthesiology 113:1220"
+    return "CLIA, 42 CFR 493.931" if name.startswith("haemoglobin by") else "common practice"
+
+
+def _named(quantity: Quantity, unit: str) -> str:
+    return f"{quantity.symbol} ({unit})" if unit else quantity.symbol
 
 
 def _numbers(constants: Constants, display: Display) -> Iterator[list[Any]]:

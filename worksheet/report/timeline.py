@@ -55,6 +55,8 @@ def timeline(order: Order, mark: str) -> dict[str, Any]:
         "corrections": history.corrections(order),
         "methods": list(methods.METHODS),
         "constants": methods.constants_table(order.sheet.constants, order.display),
+        "equations": methods.equations_table(order),
+        "uncertainties": methods.uncertainties_table(order),
         "cautions": list(methods.CAUTIONS),
         "fingerprint": _fingerprint_words(order, mark),
     }
