@@ -10,6 +10,7 @@ class User(AbstractUser):
     """A person with a login. ``is_superuser`` marks an administrator, who manages units and accounts."""
 
     preferences = models.JSONField(default=dict, blank=True)  # units per quantity, theme, decimal comma, time zone
+    wrong_logins = models.PositiveIntegerField(default=0)  # in a row; a right one sets it back
 
 
 class Role(models.IntegerChoices):

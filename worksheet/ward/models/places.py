@@ -58,6 +58,7 @@ class Unit(models.Model):
     constants = models.JSONField(default=dict, blank=True)  # fields of oxygen.constants.Constants that differ
     carry = models.JSONField(default=dict, blank=True)  # fields of CarryLimits that differ [h]
     uncertainties = models.JSONField(default=dict, blank=True)  # quantity or method -> standard uncertainty
+    second_factor = models.BooleanField("Members need a second factor", default=False)
 
     objects = UnitQuerySet.as_manager()
 
