@@ -130,6 +130,21 @@ def test_every_promised_quantity_has_one():
         assert np.nanmin(sds[name]) > 0.0
 
 
+def test_products_agree_with_the_budget():
+    """Delivery and consumption as flow times content, against their derivatives by every input."""
+    readings = crowd(stays=10, seed=2)
+    index = np.where(np.arange(len(readings)) % 2, readings["cardiac_output"] / 1.9, np.nan)
+    output = np.where(np.isnan(index), readings["cardiac_output"], np.nan)
+    values = {**readings.values, "cardiac_index": index, "cardiac_output": output}
+    snapshots, found = derived(replace(readings, values=values))
+    sds = uncertainty.standard_uncertainties(snapshots, found, DEFAULT)
+    whole = uncertainty.budget(snapshots, found, DEFAULT)
+    for name in ("do2", "do2i", "vo2", "vo2i"):
+        there = snapshots.arterial & ~np.isnan(found[name])
+        assert there.sum() > 50
+        np.testing.assert_allclose(sds[name][there], whole.sd(name)[there], rtol=1e-12)
+
+
 def test_methods_and_devices():
     snapshots, _ = derived(table({}, {"method": FlowMethod.PULSE_CONTOUR}, {"method": FlowMethod.UNKNOWN}))
     flow = uncertainty.input_sds(snapshots)["cardiac_output"] / snapshots["cardiac_output"]

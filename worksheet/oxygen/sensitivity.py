@@ -7,14 +7,15 @@ and with Monte Carlo through the very pass that derives the values.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
 
+from .align import Lazy
 from .constants import Constants
 from .curve import saturation
-from .domain import Floats
+from .domain import Floats, quiet
 from .factors import Route, RowFactors, bound_per_gram
 from .readings import Bools, Derived, Snapshots
 
@@ -157,8 +158,8 @@ def _combine(*pairs: tuple[Floats | float, Partials]) -> Partials:
 
 def finals(
     snapshots: Snapshots, derived: Derived, rows: RowFactors, contents: Contents, constants: Constants
-) -> dict[str, Partials]:
-    """Partial derivatives of what is reported, each by every raw input it rests on.
+) -> Mapping[str, Partials]:
+    """Partial derivatives of what is reported, each by every raw input it rests on; made when asked for.
 
     Parameters
     ----------
@@ -173,27 +174,28 @@ def finals(
 
     Returns
     -------
-    dict of str to dict of str to ndarray
+    mapping of str to dict of str to ndarray
         Derived quantity, raw input: derivative; by flow, height and weight relative to these [units of both].
     """
     ca, cv = contents.arterial, contents.venous
     difference = _combine((1.0, ca), (-1.0, cv))
     cao2, cvo2, po2, fio2 = derived["cao2"], derived["cvo2"], rows.po2, snapshots["fio2"]
-    output, index = _flow_partials(rows, constants)
-    return {
-        "cao2": ca,
-        "cvo2": cv,
-        "avdo2": difference,
-        "o2er": _combine((cvo2 / cao2**2, ca), (-1.0 / cao2, cv)),
-        "do2": _combine((10.0 * rows.output, ca), (10.0 * cao2, output)),
-        "do2i": _combine((10.0 * rows.index, ca), (10.0 * cao2, index)),
-        "vo2": _combine((10.0 * rows.output, difference), (10.0 * derived["avdo2"], output)),
-        "vo2i": _combine((10.0 * rows.index, difference), (10.0 * derived["avdo2"], index)),
-        "pf_ratio": {"po2": 1.0 / fio2, "fio2": -po2 / fio2**2},
-        "pao2_alveolar": contents.alveolar,
-        "aa_gradient": _combine((1.0, contents.alveolar), (-1.0, {"po2": np.ones_like(po2)})),
-        "shunt_fraction": _shunt(derived, contents),
+    by_output, by_index = _flow_partials(rows, constants)
+    made: dict[str, Callable[[], Partials]] = {
+        "cao2": lambda: ca,
+        "cvo2": lambda: cv,
+        "avdo2": lambda: difference,
+        "o2er": lambda: _combine((cvo2 / cao2**2, ca), (-1.0 / cao2, cv)),
+        "do2": lambda: _combine((10.0 * rows.output, ca), (10.0 * cao2, by_output)),
+        "do2i": lambda: _combine((10.0 * rows.index, ca), (10.0 * cao2, by_index)),
+        "vo2": lambda: _combine((10.0 * rows.output, difference), (10.0 * derived["avdo2"], by_output)),
+        "vo2i": lambda: _combine((10.0 * rows.index, difference), (10.0 * derived["avdo2"], by_index)),
+        "pf_ratio": lambda: {"po2": 1.0 / fio2, "fio2": -po2 / fio2**2},
+        "pao2_alveolar": lambda: contents.alveolar,
+        "aa_gradient": lambda: _combine((1.0, contents.alveolar), (-1.0, {"po2": np.ones_like(po2)})),
+        "shunt_fraction": lambda: _shunt(derived, contents),
     }
+    return Lazy(made, lambda name: quiet(made[name])())
 
 
 def _shunt(derived: Derived, contents: Contents) -> Partials:
@@ -203,6 +205,29 @@ def _shunt(derived: Derived, contents: Contents) -> Partials:
     return _combine(
         ((1.0 - shunt) / whole, contents.capillary), (-1.0 / whole, contents.arterial), (shunt / whole, contents.venous)
     )
+
+
+def flow_variance(rows: RowFactors, sds: Mapping[str, Floats], constants: Constants) -> tuple[Floats, Floats]:
+    """Relative variance of output and index: of the measured flow, and of body surface where it made the other.
+
+    Parameters
+    ----------
+    rows : RowFactors
+        Factors of the rows.
+    sds : mapping of str to ndarray
+        1 SD of ``flow``, ``height`` and ``weight``, relative [1].
+    constants : Constants
+        Of which ``bsa_formula``.
+
+    Returns
+    -------
+    output, index : ndarray
+        Relative variance [1].
+    """
+    by_height, by_weight = BSA_EXPONENTS[constants.bsa_formula]
+    surface = (by_height * sds["height"]) ** 2 + (by_weight * sds["weight"]) ** 2
+    measured = sds["flow"] ** 2
+    return measured + np.where(rows.output_own, 0.0, surface), measured + np.where(rows.index_own, 0.0, surface)
 
 
 def _flow_partials(rows: RowFactors, constants: Constants) -> tuple[Partials, Partials]:

@@ -25,7 +25,7 @@ from .measurement import DEFAULT, Uncertainties, fio2_sd, input_sds, parts
 from .monte_carlo import MonteCarlo, monte_carlo
 from .quantities import WITH_SD
 from .readings import Bools, Derived, Flag, Ints, Snapshots
-from .sensitivity import Contents, Partials, Slopes, finals
+from .sensitivity import Contents, Partials, Slopes, finals, flow_variance
 
 __all__ = [
     "DEFAULT", "Budget", "MonteCarlo", "Partials", "Uncertainties", "budget", "first_order_doubtful", "input_sds",
@@ -140,7 +140,26 @@ def sds_of_rows(
     """
     own = _of_rows(snapshots, derived, rows)
     found = budget(*own, constants, settings)
-    return {name: np.where(np.isnan(own[1][name]), np.nan, found.sd(name)) for name in found.partials}
+    sds = {name: found.sd(name) for name in found.partials if name not in _PRODUCTS}
+    sds |= _product_sds(*own, sds, found, constants)
+    return {name: np.where(np.isnan(own[1][name]), np.nan, sd) for name, sd in sds.items()}
+
+
+_PRODUCTS = {"do2": "cao2", "vo2": "avdo2", "do2i": "cao2", "vo2i": "avdo2"}
+
+
+@quiet
+def _product_sds(
+    snapshots: Snapshots, derived: Derived, sds: Mapping[str, Floats], found: Budget, constants: Constants
+) -> dict[str, Floats]:
+    """Flow times content: the two share no input, so their relative variances add (tests compare with the budget)."""
+    rows = row_factors(snapshots, derived)
+    flow = dict(zip(("do2", "do2i"), flow_variance(rows, found.sds, constants), strict=True))
+    flow |= {"vo2": flow["do2"], "vo2i": flow["do2i"]}
+    relative = {name: (sds[name] / derived[name]) ** 2 for name in ("cao2", "avdo2")}
+    return {
+        name: np.abs(derived[name]) * np.sqrt(flow[name] + relative[content]) for name, content in _PRODUCTS.items()
+    }
 
 
 _NEEDED = (
