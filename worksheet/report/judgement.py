@@ -13,7 +13,9 @@ from worksheet.charts.points import Z95
 from worksheet.charts.scales import hours
 from worksheet.charts.steps import RESIDUAL
 from worksheet.oxygen import verdict
+from worksheet.oxygen.finding_kinds import Severity
 from worksheet.oxygen.ledger_table import STEPS, Level
+from worksheet.oxygen.plausibility import Finding
 from worksheet.oxygen.readings import Floats
 from worksheet.ward.display import MISSING
 
@@ -119,14 +121,15 @@ class Judged:
         return self.order.display.value(name, value, with_unit=True)
 
     def findings_table(self) -> dict[str, Any]:
-        """Every finding of the span."""
-        sheet, order = self.order.sheet, self.order
-        flagged = order.rows[sheet.findings.worst()[order.rows] > 0] if len(order.rows) else order.rows
-        rows = [
-            [order.scale.text(float(sheet.readings.time[row])), str(item.severity), item.sentence, item.settle]
-            for row in flagged
-            for item in sheet.findings.of_row(int(row), self._shown)
-        ]
+        """Every finding of the span; of notes of one kind the newest, with how many there are."""
+        told = list(self._findings())
+        notes = {item.code: [row for row, other in told if other.code == item.code] for _, item in told}
+        rows = []
+        for row, item in told:
+            if item.severity != Severity.NOTE:
+                rows.append([self._when(row), str(item.severity), item.sentence, item.settle])
+            elif row == notes[item.code][-1]:
+                rows.append([self._when(*notes[item.code]), str(item.severity), item.sentence, item.settle])
         return {
             "head": ["Entry of", "Kind", "Finding", "What would settle it"],
             "rows": rows,
@@ -134,6 +137,17 @@ class Judged:
             "sides": ["l", "l", "l", "l"],
             "empty": "No findings in this span.",
         }
+
+    def _findings(self) -> Iterator[tuple[int, Finding]]:
+        rows, found = self.order.rows, self.order.sheet.findings
+        for row in rows[found.worst()[rows] > 0] if len(rows) else rows:
+            for item in found.of_row(int(row), self._shown):
+                yield int(row), item
+
+    def _when(self, *rows: int) -> str:
+        """The time of one entry, or of the first and last of several."""
+        ends = [self.order.scale.text(float(self.order.sheet.readings.time[row])) for row in rows]
+        return ends[0] if len(ends) == 1 else f"{ends[0]} to\n{ends[-1]}\n({len(ends)} entries, the last told)"
 
 
 def _judged(item: verdict.Evidence) -> str:

@@ -84,7 +84,11 @@ def equations_table(order: Order) -> dict[str, Any]:
     return {
         "head": ["Derived quantity", "Equation", "Source"],
         "rows": [
-            [_named(line.quantity, line.unit), " ".join(filter(None, (line.equation, line.note))), line.quantity.source]
+            [
+                _named(line.quantity, line.unit),
+                ". ".join(filter(None, (line.equation, line.note))),
+                line.quantity.source,
+            ]
             for line in lines
             if has_any(order, line.quantity.name)
         ],
