@@ -5,18 +5,14 @@ from __future__ import annotations
 from collections.abc import Iterator
 from typing import Any
 
-import numpy as np
-
-from worksheet.oxygen.quantities import CATALOGUE
 from worksheet.oxygen.readings import Flag
+from worksheet.review.saturations import reconcile
 from worksheet.ward.display import MISSING
 
 from .entry_tables import latest_arterial
 from .order import Order
 
 _OLDEST_TOLD = 89  # years; above it an age identifies: 45 CFR 164.514(b)(2)(i)(C)
-_SATURATIONS = ("so2", "o2hb", "so2_calculated", "spo2", "cohb", "methb", "sulfhb")
-_COMPARED = ("so2_from_po2", "predicted_spo2", "gap_calculated", "gap_measured")
 _BASIS = (  # what the verdict does not say itself
     (Flag.DYSHAEMOGLOBINS_CARRIED, "Dyshaemoglobins were carried from an earlier sample."),
     (Flag.SATURATION_FROM_FINGER, "The saturation came from the pulse oximeter: no gas saturation and no PO2."),
@@ -93,32 +89,17 @@ def basis(order: Order) -> list[str]:
 
 
 def saturations(order: Order) -> dict[str, Any]:
-    """The saturations of the newest arterial sample that has one, side by side."""
-    snap, derived = order.sheet.snapshots, order.sheet.derived
-    rows = order.rows[snap.arterial[order.rows]]
-    have = np.any([np.isfinite(snap[name][rows]) for name in _SATURATIONS], axis=0)
-    rows = rows[have]
-    table: dict[str, Any] = {"head": ["Quantity", "Value", "From"], "widths": ["1.6", "auto", "1"],
-                             "sides": ["l", "r", "l"], "rows": [], "empty": "No saturation in this span."}  # fmt: skip
-    if not len(rows):
+    """The saturations of the newest arterial sample that has one, side by side and in words."""
+    found = reconcile(order.sheet, order.rows, order.display)
+    table = {
+        "head": ["Saturation", "Value", "What it is", "From"],
+        "rows": [[line.symbol, line.value, line.words, line.origin] for line in found.lines] if found else [],
+        "widths": ["auto", "auto", "2", "1"],
+        "sides": ["l", "r", "l", "l"],
+        "empty": "No saturation in this span.",
+    }
+    if found is None:
         return {"words": [], "table": table}
-    row = int(rows[-1])
-    for name in (*_SATURATIONS, *_COMPARED):
-        measured = not CATALOGUE[name].derived
-        value = float((snap if measured else derived)[name][row])
-        if np.isfinite(value):
-            words = f"{CATALOGUE[name].symbol}, {CATALOGUE[name].label}"
-            shown = order.display.value(name, value, with_unit=True)
-            table["rows"].append([words, shown, _origin(order, name, row)])
-    when = order.scale.text(float(order.sheet.readings.time[row]))
-    return {"words": [f"Newest arterial sample with a saturation: {when}."], "table": table}
-
-
-def _origin(order: Order, name: str, row: int) -> str:
-    if CATALOGUE[name].derived:
-        return "derived"
-    age = float(order.sheet.snapshots.age[name][row])
-    if age == 0 or not np.isfinite(age):
-        return "this entry"
-    source = int(order.sheet.snapshots.source[name][row])
-    return f"{'carried from' if age > 0 else 'read at'} {order.scale.text(float(order.sheet.readings.time[source]))}"
+    when = "" if order.deidentify else f" ({found.when})"
+    told = [*found.sentences, *(f"{finding.sentence} {finding.settle}" for finding in found.findings)]
+    return {"words": [f"Newest arterial sample with a saturation{when}. {' '.join(told)}"], "table": table}
