@@ -5,12 +5,13 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from tests.oxygen.change_world import derived, table
+from tests.oxygen.change_world import derived, random_factors, table
 from worksheet.oxygen import ledger
 from worksheet.oxygen.constants import DEFAULT
 from worksheet.oxygen.ledger import Level, Note
 from worksheet.oxygen.measurement import DEFAULT as SETTINGS
 from worksheet.oxygen.readings import Site
+from worksheet.oxygen.shapley import split
 
 
 def pair(*rows):
@@ -240,3 +241,48 @@ def test_uncertainties_reach_the_window():
     usual = ledger.window(*world, *rows, DEFAULT).sd["haemoglobin"][0]
     assert ledger.window(*world, *rows, DEFAULT, coarse).sd["haemoglobin"][0] > 2 * usual
     assert ledger.intervals(*world, 0, 2, DEFAULT, coarse).sd["haemoglobin"][0] > 1.5 * usual
+
+
+def two_ends():
+    random = np.random.default_rng(11)
+    return random_factors(random, 3), random_factors(random, 3)
+
+
+def test_outside_the_curves_domain_saturation_counts_for_pressure_as_a_whole():
+    start, end = two_ends()
+    usual = split(start, end, DEFAULT)
+    lost = replace(end, pco2=np.array([end.pco2[0], 0.0, end.pco2[2]]))  # no displacement at a PCO2 of 0
+    found = split(start, lost, DEFAULT)
+    for name, part in found.terms.items():
+        np.testing.assert_allclose(np.delete(part, 1), np.delete(usual.terms[name], 1), atol=1e-9, err_msg=name)
+        assert np.isfinite(part[1]), name
+    for name in found.slopes:
+        np.testing.assert_allclose(np.delete(found.slopes[name], 1), np.delete(usual.slopes[name], 1), atol=1e-9)
+        assert found.slopes[name][1] == 0.0, name
+    change = end.saturation[1] - start.saturation[1]
+    parts = {name: part[1] for name, part in found.saturation_parts.items()}
+    assert parts.pop("po2") == pytest.approx(change, abs=1e-12)
+    assert all(abs(part) < 1e-12 for part in parts.values())
+    np.testing.assert_allclose(found.total, lost.supply(DEFAULT) - start.supply(DEFAULT), rtol=1e-9)
+
+
+@pytest.mark.parametrize(
+    ("first", "last", "kept"), [(True, True, 1), (True, False, 1), (False, True, 1), (False, False, 0)]
+)
+def test_residual_needs_a_measured_saturation_at_either_end(first, last, kept):
+    start, end = two_ends()
+    whole = split(start, end, DEFAULT).saturation_parts["residual"]
+    start, end = replace(start, measured=np.full(3, first)), replace(end, measured=np.full(3, last))
+    np.testing.assert_array_equal(split(start, end, DEFAULT).saturation_parts["residual"], kept * whole)
+
+
+def test_what_stays_behind_is_taken_from_both_terms():
+    start, end = two_ends()
+    start = replace(start, bound=np.full(3, 0.2), held=np.full(3, 20.0))
+    end = replace(end, bound=np.full(3, 0.3), held=np.full(3, 38.0))
+    found = split(start, end, DEFAULT)
+    np.testing.assert_allclose(found.total, end.supply(DEFAULT) - start.supply(DEFAULT), rtol=1e-9)
+    np.testing.assert_allclose(found.saturation_parts["unloading"], -0.1, atol=1e-12)
+    np.testing.assert_allclose(
+        sum(found.saturation_parts.values()), (end.saturation - 0.3) - (start.saturation - 0.2), atol=1e-12
+    )
