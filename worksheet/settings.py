@@ -57,7 +57,11 @@ MIDDLEWARE = [
 ROOT_URLCONF = "worksheet.urls"
 WSGI_APPLICATION = "worksheet.wsgi.application"
 AUTH_USER_MODEL = "ward.User"
-AUTHENTICATION_BACKENDS = ["axes.backends.AxesStandaloneBackend", "django.contrib.auth.backends.ModelBackend"]
+AUTHENTICATION_BACKENDS = [
+    "axes.backends.AxesStandaloneBackend",
+    "worksheet.ward.logins.AccountCap",
+    "django.contrib.auth.backends.ModelBackend",
+]
 LOGIN_URL = "login"
 LOGIN_REDIRECT_URL = "home"
 LOGOUT_REDIRECT_URL = "login"
@@ -104,9 +108,11 @@ PASSWORD_HASHERS = ["django.contrib.auth.hashers.Argon2PasswordHasher"]
 AUTH_PASSWORD_VALIDATORS = [
     {"NAME": "django.contrib.auth.password_validation.MinimumLengthValidator", "OPTIONS": {"min_length": 15}},
     {"NAME": "django.contrib.auth.password_validation.CommonPasswordValidator"},
+    {"NAME": "worksheet.ward.passwords.SiteListValidator"},
     {"NAME": "django.contrib.auth.password_validation.UserAttributeSimilarityValidator"},
     {"NAME": "worksheet.ward.passwords.EasyPatternValidator"},
 ]
+PASSWORD_LIST = env.text("WORKSHEET_PASSWORD_LIST")  # a file of breached passwords, one a line; none is shipped
 SECOND_FACTOR_REQUIRED = env.flag("WORKSHEET_SECOND_FACTOR")
 OTP_TOTP_ISSUER = "Oxygen delivery worksheet"
 
@@ -119,6 +125,10 @@ AXES_LOCKOUT_TEMPLATE = "registration/locked.html"
 AXES_HTTP_RESPONSE_CODE = 429
 AXES_DISABLE_ACCESS_LOG = True
 AXES_VERBOSE = False
+AXES_CLIENT_IP_CALLABLE = "worksheet.ward.logins.client_address"
+PROXIES = env.number("WORKSHEET_PROXIES", 0, 0, 5)  # reverse proxies of our own in front of `serve`
+WRONG_LOGINS_CAP = 100  # in a row, from all addresses together; then the unit lead opens the account again
+PASSWORD_RESET_TIMEOUT = 24 * 3600  # a link for a new password, made by the unit lead
 
 LANGUAGE_CODE = "en-gb"
 USE_I18N = False
@@ -148,6 +158,7 @@ SESSION_COOKIE_SAMESITE = "Lax"
 CSRF_COOKIE_SAMESITE = "Lax"
 SESSION_COOKIE_SECURE = CSRF_COOKIE_SECURE = HTTPS
 SECURE_SSL_REDIRECT = HTTPS
+SECURE_REDIRECT_EXEMPT = [r"^health/$"]  # asked by the service manager on this machine
 SECURE_HSTS_SECONDS = 31_536_000 if HTTPS else 0
 SECURE_HSTS_INCLUDE_SUBDOMAINS = HTTPS
 SECURE_HSTS_PRELOAD = HTTPS

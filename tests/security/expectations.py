@@ -23,6 +23,7 @@ ADDRESSES: dict[str, Address] = {
     "second_factor_remove": Address("person", "POST"),
     "account": Address("person"),
     "session_end": Address("person", "POST"),
+    "session_left": Address("person"),
     "invitation": Address("everybody"),
     "members": Address("lead"),
     "member_change": Address("lead", "POST"),

@@ -10,7 +10,7 @@ from worksheet.oxygen.readings import Site
 from worksheet.ward import audit, record
 from worksheet.ward.models import AuditEvent, Entry, Patient, Stay, Unit, User
 
-# A database in a file: threads have connections of their own, and SQLite's in-memory one is shared, which would test nothing.
+# Threads have connections of their own; SQLite's in-memory database is one for all, which would test nothing.
 pytestmark = pytest.mark.django_db(transaction=True)
 T0 = datetime(2026, 3, 1, 6, tzinfo=UTC)
 

@@ -2,8 +2,12 @@
 
 from __future__ import annotations
 
+import sys
+
+from django.db import OperationalError
 from django.http import HttpRequest, HttpResponse
 from django.shortcuts import render
+from django.template.loader import render_to_string
 
 
 def csrf_failure(request: HttpRequest, reason: str = "") -> HttpResponse:
@@ -35,8 +39,21 @@ def not_found(request: HttpRequest, exception: Exception) -> HttpResponse:
 
 
 def failed(request: HttpRequest) -> HttpResponse:
-    """500: no detail of any patient."""
+    """500, or 503 where the database could not take or give anything: no detail of any patient.
+
+    The page is made without the request: who is logged in could only be asked of the database that just failed.
+    """
+    if isinstance(sys.exc_info()[1], OperationalError):
+        words = (
+            "The database does not answer, or its disk is full. Nothing of this request was stored; what was stored "
+            "before is untouched. Go back: what you typed is still in the form. Tell whoever runs this program."
+        )
+        return _bare("Not possible just now", words, 503)
     words = (
         "The program failed here. Nothing of this request was stored; what was stored before is untouched. Try again."
     )
-    return render(request, "error.html", {"title": "Something failed", "words": words}, status=500)
+    return _bare("Something failed", words, 500)
+
+
+def _bare(title: str, words: str, status: int) -> HttpResponse:
+    return HttpResponse(render_to_string("error.html", {"title": title, "words": words}), status=status)

@@ -58,7 +58,7 @@ class UnitForm(forms.ModelForm):  # type: ignore[type-arg]
 
     class Meta:
         model = Unit
-        fields = ("time_zone", "paper", "decimal_comma")
+        fields = ("time_zone", "paper", "decimal_comma", "second_factor")
 
     def __init__(self, *args: Any, **kwargs: Any) -> None:
         super().__init__(*args, **kwargs)
@@ -137,5 +137,14 @@ def unit_settings(request: HttpRequest, slug: str) -> HttpResponse:
 
 
 def _stored(unit: Unit) -> dict[str, Any]:
-    names = ("time_zone", "paper", "decimal_comma", "shift_starts", "constants", "carry", "uncertainties")
+    names = (
+        "time_zone",
+        "paper",
+        "decimal_comma",
+        "second_factor",
+        "shift_starts",
+        "constants",
+        "carry",
+        "uncertainties",
+    )
     return {name: getattr(unit, name) for name in names}

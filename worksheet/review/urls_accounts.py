@@ -2,7 +2,7 @@
 
 from django.urls import path
 
-from . import account, health, members, second_factor, trail, unit_settings
+from . import account, health, members, second_factor, session, trail, unit_settings
 
 urlpatterns = [
     path("login/", account.LogIn.as_view(), name="login"),
@@ -10,6 +10,7 @@ urlpatterns = [
     path("health/", health.health, name="health"),
     path("account/", account.account, name="account"),
     path("account/session-end", account.session_end, name="session_end"),
+    path("account/session-left", session.session_left, name="session_left"),
     path("account/second-factor/", second_factor.second_factor, name="second_factor"),
     path("account/second-factor/new/", second_factor.second_factor_new, name="second_factor_new"),
     path("account/second-factor/remove", second_factor.second_factor_remove, name="second_factor_remove"),

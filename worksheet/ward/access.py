@@ -7,6 +7,7 @@ from typing import cast
 from django.core.exceptions import PermissionDenied
 from django.http import Http404, HttpRequest
 
+from . import audit
 from .models import Role, Stay, Unit, User
 
 
@@ -27,6 +28,7 @@ def unit_or_404(request: HttpRequest, slug: str, role: Role = Role.READER) -> Un
     """The unit, if the person belongs to it: 404 when they may not see it, 403 when their role is too low."""
     unit = Unit.objects.visible_to(request.user).filter(slug=slug).first()
     if unit is None:
+        _tell_refused(request, Unit.objects.filter(slug=slug).first())
         raise Http404("No such unit, or not one of yours.")
     _enough(request, unit, role)
     return unit
@@ -51,4 +53,12 @@ def _enough(request: HttpRequest, unit: Unit, role: Role) -> None:
         return
     held = role_in(person(request), unit)
     if held is None or held < role:
+        _tell_refused(request, unit)
         raise PermissionDenied(f"This needs the role of {role.label} in {unit.name}.")
+
+
+def _tell_refused(request: HttpRequest, unit: Unit | None) -> None:
+    """Keep in the trail of the unit who tried to see or do what they may not."""
+    if unit is not None and request.user.is_authenticated:
+        what = request.resolver_match.view_name if request.resolver_match else ""
+        audit.write(person(request).username, "refused", unit=unit.name, subject=person(request).username, page=what)

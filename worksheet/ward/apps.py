@@ -8,3 +8,7 @@ class WardConfig(AppConfig):
 
     default_auto_field = "django.db.models.BigAutoField"
     name = "worksheet.ward"
+
+    def ready(self) -> None:
+        """Listen to logins."""
+        from . import logins  # noqa: F401

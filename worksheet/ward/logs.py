@@ -8,7 +8,7 @@ import re
 from datetime import UTC, datetime
 
 _STAY = re.compile(r"(/stay/)[^/?\s]+")
-_TOKEN = re.compile(r"(/invitation/)[^/?\s]+")
+_TOKEN = re.compile(r"(/(?:invitation|password)/)[^?\s]+")
 _QUERY = re.compile(r"\?\S*")
 
 

@@ -80,7 +80,7 @@ def second_factor(get_response: Answer) -> Answer:
         if user.is_authenticated and not user.is_verified() and request.path not in _open_paths():
             if django_otp.user_has_device(user):
                 return redirect(f"{reverse('second_factor')}?{urlencode({'next': request.get_full_path()})}")
-            if settings.SECOND_FACTOR_REQUIRED:
+            if settings.SECOND_FACTOR_REQUIRED or user.memberships.filter(unit__second_factor=True).exists():
                 return redirect("second_factor_new")
         return get_response(request)
 
@@ -93,9 +93,21 @@ def _open_paths() -> frozenset[str]:
     return frozenset(reverse(name) for name in names)
 
 
+@cache
+def _session_path() -> str:
+    return reverse("session_left")
+
+
 def is_poll(request: HttpRequest) -> bool:
     """Whether the page asked by itself, not the person."""
+    if request.method == "GET" and request.path == _session_path():
+        return True
     return request.headers.get("HX-Trigger") in POLLS
+
+
+def extend(request: HttpRequest) -> None:
+    """The person is still here."""
+    request.session["seen"] = time.time()
 
 
 def seconds_left(request: HttpRequest) -> int:

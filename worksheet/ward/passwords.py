@@ -3,8 +3,11 @@
 from __future__ import annotations
 
 import re
+from functools import cache
+from pathlib import Path
 from typing import Any
 
+from django.conf import settings
 from django.core.exceptions import ValidationError
 
 _CONTEXT = (
@@ -41,3 +44,22 @@ class EasyPatternValidator:
     def get_help_text(self) -> str:
         """What the rule asks."""
         return "Several unrelated words make a good password; repeats and keyboard runs do not count."
+
+
+@cache
+def _site_list(file: str) -> frozenset[str]:
+    lines = Path(file).read_text(encoding="utf-8", errors="replace").splitlines()
+    return frozenset(line.strip().casefold() for line in lines)
+
+
+class SiteListValidator:
+    """Refuses passwords of the list that the site gave, if it gave one: those known from breaches elsewhere."""
+
+    def validate(self, password: str, user: Any = None) -> None:
+        """Raise where the password is in the list."""
+        if settings.PASSWORD_LIST and password.strip().casefold() in _site_list(settings.PASSWORD_LIST):
+            raise ValidationError("This password is known from a breach; choose another one.")
+
+    def get_help_text(self) -> str:
+        """What the rule asks."""
+        return "A password that was used elsewhere is a bad one here."
