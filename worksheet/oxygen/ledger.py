@@ -70,6 +70,8 @@ def extractable(
 ) -> Ledger:
     """Ledgers of extractable oxygen in place of content: a loss of function shows its full cost.
 
+    The uncertainties are those of the content ledger's inputs; what the end-capillary saturation adds is left out.
+
     Parameters
     ----------
     snapshots, derived : Snapshots, Derived

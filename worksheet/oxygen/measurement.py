@@ -58,10 +58,11 @@ class Uncertainties:
     """
 
     quantities: Mapping[str, tuple[float, float]] = field(default_factory=_catalogue_sds)
-    # Hb: 1 % within one analyser of 2 % in all (working values); sO2: repeat SD 0.44 points [1] of 0.8
+    # Hb: an analyser repeats to 1 %, but how each sample was drawn and mixed comes with it (common practice): most of
+    # the 2 % differs from sample to sample; sO2: repeat SD 0.44 points [1] of 0.8
     random: Mapping[str, float] = field(
         default_factory=lambda: MappingProxyType(
-            {"hb": 0.5, "so2": 0.55, "o2hb": 0.55, "cohb": 0.7, "methb": 0.7, "sulfhb": 0.7, "spo2": 0.7}
+            {"hb": 0.9, "so2": 0.55, "o2hb": 0.55, "cohb": 0.7, "methb": 0.7, "sulfhb": 0.7, "spo2": 0.7}
         )
     )
     fio2: Mapping[int, float] = field(
