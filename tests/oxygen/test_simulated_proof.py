@@ -95,15 +95,20 @@ def gases_with_truth(world):
 
 def test_steps_have_the_right_sign(world):
     """In at least 97 % where the true contribution exceeds 2 SD."""
-    found = world.review.ledger
-    right = total = 0
+    right, total = signs(world)
+    assert total > 1000
+    assert right / total >= 0.97
+
+
+def signs(world):
+    """Contributions of the window's ledger with the right sign, of those that truly exceed 2 SD."""
+    found, right, total = world.review.ledger, 0, 0
     for name in STEPS:
         true, sd = world.made.parts[name], found.sd[name] / found.start_supply
         clear = (np.abs(true) > 2.0 * sd) & ((name != "flow") | (found.level > 1))
         right += int(np.sum(np.sign(found.step(name)[clear]) == np.sign(true[clear])))
         total += int(np.sum(clear))
-    assert total > 1000
-    assert right / total >= 0.97
+    return right, total
 
 
 def test_deaf_to_the_order_of_rows(world):
@@ -163,9 +168,11 @@ def summary(world):
     right = np.mean(step[world.single] == made.cause[world.single])
     either = np.mean((step[mixed] == made.larger[mixed]) | (step[mixed] == "undetermined"))
     covered = np.mean((low <= true) & (true <= high))
+    signed, clear = signs(world)
     return [
         f"- one cause and a true fall ≥ 25 %: right step in {right:.1%} of {int(world.single.sum())}",
         f"- no true change: none in {np.mean(step[quiet] == 'none'):.1%} of {int(quiet.sum())}",
         f"- mixed: the larger or undetermined in {either:.1%} of {int(mixed.sum())}",
         f"- 95 % interval of DO2I covers the truth in {covered:.1%} of {len(rows)} gases",
+        f"- contributions beyond 2 SD: right sign in {signed / clear:.1%} of {clear}",
     ]
