@@ -22,7 +22,7 @@ def login(client, stay=None):
     user = User.objects.create_user("dr.reader", password="not-used-here-1")
     if stay:
         Membership.objects.create(user=user, unit=stay.unit, role=Role.READER)
-    client.force_login(user)
+    client.force_login(user, backend="django.contrib.auth.backends.ModelBackend")
     return user
 
 
