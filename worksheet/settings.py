@@ -121,6 +121,7 @@ AXES_FAILURE_LIMIT = env.number("WORKSHEET_LOGIN_TRIES", 8, 3, 100)
 AXES_LOCKOUT_PARAMETERS = [["username", "ip_address"]]
 AXES_COOLOFF_TIME = timedelta(minutes=15)
 AXES_RESET_ON_SUCCESS = True
+AXES_RESET_COOL_OFF_ON_FAILURE_DURING_LOCKOUT = False  # whoever goes on trying neither prolongs nor counts
 AXES_LOCKOUT_TEMPLATE = "registration/locked.html"
 AXES_HTTP_RESPONSE_CODE = 429
 AXES_DISABLE_ACCESS_LOG = True

@@ -27,6 +27,8 @@ ADDRESSES: dict[str, Address] = {
     "invitation": Address("everybody"),
     "members": Address("lead"),
     "member_change": Address("lead", "POST"),
+    "member_account": Address("lead", "POST"),
+    "password_new": Address("everybody"),
     "unit_settings": Address("lead"),
     "trail": Address("lead"),
     "home": Address("person"),

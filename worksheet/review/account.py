@@ -8,6 +8,7 @@ from django.contrib import messages
 from django.contrib.auth import update_session_auth_hash
 from django.contrib.auth.forms import PasswordChangeForm
 from django.contrib.auth.views import LoginView, LogoutView
+from django.core.exceptions import ValidationError
 from django.http import HttpRequest, HttpResponse
 from django.shortcuts import get_object_or_404, redirect, render
 from django.utils import timezone
@@ -17,6 +18,7 @@ from django_otp import devices_for_user
 
 from worksheet.ward import audit
 from worksheet.ward.access import person
+from worksheet.ward.logins import is_their_password
 from worksheet.ward.models import LoginSession
 
 
@@ -45,11 +47,25 @@ class LogOut(LogoutView):
         return answer
 
 
+class PasswordForm(PasswordChangeForm):
+    """The old password is checked as a login is: wrong tries count, and lock."""
+
+    request: HttpRequest
+
+    def clean_old_password(self) -> str:
+        """Refuse a wrong one."""
+        old: str = self.cleaned_data["old_password"]
+        if not is_their_password(self.request, old):
+            raise ValidationError(self.error_messages["password_incorrect"], code="password_incorrect")
+        return old
+
+
 @sensitive_post_parameters()
 def account(request: HttpRequest) -> HttpResponse:
     """Password, second factor and sessions of this person."""
     user = person(request)
-    form = PasswordChangeForm(user, request.POST or None)
+    form = PasswordForm(user, request.POST or None)
+    form.request = request
     if request.method == "POST" and form.is_valid():
         update_session_auth_hash(request, form.save())
         LoginSession.objects.filter(user=user).exclude(session_key=request.session.session_key).delete()

@@ -5,6 +5,7 @@ from __future__ import annotations
 from typing import Any
 
 from django import forms
+from django.conf import settings
 from django.contrib import messages
 from django.contrib.auth.decorators import login_not_required
 from django.contrib.auth.forms import UserCreationForm
@@ -18,7 +19,7 @@ from django.views.decorators.http import require_POST
 
 from worksheet.ward import audit
 from worksheet.ward.access import person, unit_or_404
-from worksheet.ward.models import Invitation, Membership, Role, User
+from worksheet.ward.models import Invitation, Membership, Role, Unit, User
 
 
 class RoleForm(forms.Form):
@@ -43,7 +44,15 @@ def members(request: HttpRequest, slug: str) -> HttpResponse:
         _, token = Invitation.make(unit, form.cleaned_data["role"], person(request))
         link = request.build_absolute_uri(reverse("invitation", args=[token]))
         audit.write(person(request).username, "invited", unit=unit.name, role=form.cleaned_data["role"].label)
-    context = {"unit": unit, "link": link, "form": form, "roles": Role.choices, "here": "members",
+    return members_page(request, unit, link=link, form=form)
+
+
+def members_page(
+    request: HttpRequest, unit: Unit, *, link: str = "", link_for: str = "", form: RoleForm | None = None
+) -> HttpResponse:
+    """The page, with a link that was just made."""
+    context = {"unit": unit, "link": link, "link_for": link_for, "form": form or RoleForm(), "roles": Role.choices,
+               "here": "members", "cap": settings.WRONG_LOGINS_CAP,
                "members": unit.memberships.select_related("user").order_by("user__username")}  # fmt: skip
     return render(request, "review/members.html", context)
 

@@ -22,7 +22,7 @@ def client_address(request: HttpRequest) -> str | None:
     """Where the request came from: as the outermost of our own proxies saw it; what a client claims does not count."""
     seen = str(request.META.get("REMOTE_ADDR") or "")
     if settings.PROXIES:
-        told = str(request.META.get("HTTP_X_FORWARDED_FOR") or "").split(",")
+        told = [part for part in str(request.META.get("HTTP_X_FORWARDED_FOR") or "").split(",") if part.strip()]
         seen = told[-settings.PROXIES].strip() if len(told) >= settings.PROXIES else seen
     try:
         return str(ip_address(seen))
@@ -31,7 +31,7 @@ def client_address(request: HttpRequest) -> str | None:
 
 
 class AccountCap:
-    """Shuts an account after many wrong passwords in a row, from whatever addresses (NIST SP 800-63B-4: at most 100)."""
+    """Shuts an account after many wrong passwords in a row, from any address (NIST SP 800-63B-4: at most 100)."""
 
     def authenticate(self, request: HttpRequest, username: str | None = None, **credentials: Any) -> None:
         """Refuse before the password is looked at; the person hears the same as after a wrong password."""
@@ -51,7 +51,8 @@ def is_their_password(request: HttpRequest, password: str) -> bool:
 @receiver(user_login_failed)
 def count_and_tell(sender: object, credentials: dict[str, Any], request: HttpRequest | None = None, **_: Any) -> None:
     """Count a wrong login, and tell it in the trail. What was tried while locked counts for nothing."""
-    if request is None or getattr(request, "axes_locked_out", False):
+    locked = getattr(request, "axes_locked_out", False) and not getattr(request, "axes_failures_since_start", None)
+    if request is None or locked:
         return
     name = str(credentials.get("username") or "")
     known = User.objects.filter(username=name, wrong_logins__lt=settings.WRONG_LOGINS_CAP)
