@@ -20,7 +20,7 @@ from worksheet.report.printing import TEMPLATES, cleaned
 from worksheet.report.timeline import timeline, timeline_pdf
 from worksheet.report.typeset import compile_document
 from worksheet.ward import record
-from worksheet.ward.models import AuditEvent
+from worksheet.ward.models import AuditEvent, User
 
 pytestmark = pytest.mark.django_db
 
@@ -175,14 +175,14 @@ def test_note_of_one_endless_word_stays_on_the_page():
 
 
 def assert_inside_the_margins(pdf: bytes) -> None:
-    """No ink within 8 mm of the right edge, nor below the footer."""
+    """No ink beyond the margins at the sides (1.5 cm), nor near the lower edge."""
     with tempfile.TemporaryDirectory() as folder:
         subprocess.run(["pdftoppm", "-r", "50", "-gray", "-png", "-", f"{folder}/p"], input=pdf, check=True)
         for file in sorted(Path(folder).glob("*.png")):
             page = Image.open(file).convert("L")
-            edge = int(8 / 25.4 * 50)
+            edge, foot = int(13.5 / 25.4 * 50), int(8 / 25.4 * 50)
             width, height = page.size
-            for strip in ((width - edge, 0, width, height), (0, 0, edge, height), (0, height - edge, width, height)):
+            for strip in ((width - edge, 0, width, height), (0, 0, edge, height), (0, height - foot, width, height)):
                 assert page.crop(strip).getextrema()[0] > 200, file.name
 
 
@@ -256,6 +256,31 @@ def test_decimal_comma_and_kilopascal(pdftotext, deidentify):
     assert [row[column] for row in payload["entries"]["rows"]] == ["12,8", "11,5", "10,1"]
     numbers = json.dumps([row[2:] for row in payload["entries"]["rows"]], ensure_ascii=False)
     assert not re.search(r"\d\.\d", numbers)
+
+
+def test_widest_table_stays_inside_the_margins(pdftotext):
+    """Every quantity measured, long names of people, every mark."""
+    stay = world.make_stay("T-115")
+    every = {
+        "so2_calculated": 0.97, "o2hb": 0.95, "sulfhb": 0.001, "bicarbonate": 24.0, "oxygen_flow": 40.0, "peep": 10.0,
+        "mean_airway_pressure": 15.0, "respiratory_rate": 20.0, "cardiac_index": 2.8, "vo2_measured": 240.0,
+        "heart_rate": 90.0, "mean_arterial_pressure": 70.0, "barometric_pressure": 750.0,
+    }  # fmt: skip
+    long_name = User.objects.create_user("wilhelmina.featherstonehaugh-cholmondeley")
+    for n in range(4):
+        new = record.NewEntry(
+            world.START + timedelta(hours=n), Site.ARTERIAL, world.gas(n, 4) | every, note="x", source="hl7v2",
+            event=Event.DEVICE_CHANGE,
+        )  # fmt: skip
+        record.record(stay, long_name, new)
+        pair = {"ph": 7.3, "pco2": 46.0, "po2": 36.0, "so2": 0.68, "lactate": 12.4}
+        record.record(stay, long_name, record.NewEntry(new.time, Site.CENTRAL_VENOUS, pair))
+    order = world.order(stay)
+    payload = timeline(order, "0" * 64)
+    assert {name.split("\n")[0] for name in payload["entries"]["head"]} >= {"PO2", "CI", "DO2I", "Qs/Qt", "Marks"}
+    told = {name.split("\n")[0] for table in payload["other"] for name in table["head"]}
+    assert {"HR", "MAP", "PB", "DO2", "VO2I", "P50"} <= told
+    assert_inside_the_margins(timeline_pdf(order))
 
 
 def test_text_of_the_charts_can_be_selected(stay, pdftotext):

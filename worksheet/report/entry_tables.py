@@ -19,8 +19,8 @@ Cell = str | list[str]
 # The chain of oxygen, in the order it is read; every other quantity goes into the further tables.
 _CHAIN = (
     "fio2", "peep", "ph", "pco2", "po2", "so2", "so2_calculated", "o2hb", "cohb", "methb", "spo2", "hb", "lactate",
-    "cardiac_output", "cardiac_index", "cao2", "cvo2", "do2", "do2i", "vo2i", "o2er", "pf_ratio", "aa_gradient",
-    "shunt_fraction", "p50", "extractable_o2",
+    "cardiac_output", "cardiac_index", "cao2", "cvo2", "do2", "do2i", "o2er", "pf_ratio", "aa_gradient",
+    "shunt_fraction",
 )  # fmt: skip
 _OF_THE_STAY = ("height", "weight", "age", "bsa")  # said once at the top
 _MOST_COLUMNS = 22
@@ -42,15 +42,16 @@ LEGEND = (
 
 def entries_table(order: Order, notes: dict[int, int]) -> dict[str, Any]:
     """The main table. ``notes`` gives the number of each entry's note."""
-    names = [name for name in _CHAIN if has_any(order, name)]
+    names = _chain(order)
     columns = [_column(order, name) for name in names]
     marks = [_marks(order, int(row), notes) for row in order.rows]
-    rows = [[*head, *cells, mark] for head, *cells, mark in zip(_heads(order), *columns, marks, strict=True)]
+    by = [_recorded(order, int(row)) for row in order.rows]
+    parts = zip(_heads(order), *columns, by, marks, strict=True)
     return {
-        "head": ["Time", "Sample", *_headings(order, names), "Marks"],
-        "rows": rows,
-        "widths": ["auto", "auto", *["auto"] * len(names), "1"],
-        "sides": ["l", "l", *["r"] * len(names), "l"],
+        "head": ["Time", "Sample", *_headings(order, names), "Recorded by", "Marks"],
+        "rows": [[*head, *cells] for head, *cells in parts],
+        "widths": ["auto", "auto", *["auto"] * len(names), "1", "1.3"],
+        "sides": ["l", "l", *["r"] * len(names), "l", "l"],
         "empty": "No entries in this span.",
         "legend": LEGEND,
     }
@@ -58,13 +59,28 @@ def entries_table(order: Order, notes: dict[int, int]) -> dict[str, Any]:
 
 def further_tables(order: Order) -> list[dict[str, Any]]:
     """Everything else that was measured or derived, a page's width at a time; rows without any of it left out."""
+    chain = _chain(order)
     names = [
         name for name in (*MEASURED, *DERIVED)
-        if name not in _CHAIN and name not in _OF_THE_STAY and has_any(order, name)
+        if name not in chain and name not in _OF_THE_STAY and has_any(order, name)
     ]  # fmt: skip
     tables = -(-len(names) // _MOST_COLUMNS)
     each = -(-len(names) // max(tables, 1))
     return [_further(order, names[n * each : (n + 1) * each]) for n in range(tables)]
+
+
+def _chain(order: Order) -> list[str]:
+    """The main columns the span has; delivery stands once, indexed where it can be."""
+    names = [name for name in _CHAIN if has_any(order, name)]
+    return [name for name in names if name != "do2" or "do2i" not in names]
+
+
+def _recorded(order: Order, row: int) -> str:
+    """Who recorded an entry, and by what way if not by the form."""
+    entry = order.entries.get(int(order.sheet.entry_ids[row]))
+    if entry is None or order.deidentify:
+        return "" if entry is None else entry.source
+    return entry.recorded_by.username + ("" if entry.source == "form" else f" ({entry.source})")
 
 
 def _further(order: Order, names: Sequence[str]) -> dict[str, Any]:

@@ -14,6 +14,8 @@ from worksheet.report.printing import NotPrinted
 from worksheet.report.timeline import timeline_pdf
 from worksheet.ward.display import Display
 
+_LONG = 300  # entries that take more than a second to set
+
 
 class Command(BaseCommand):
     help = (
@@ -36,6 +38,8 @@ class Command(BaseCommand):
         if since and until and since >= until:
             raise CommandError("--since must lie before --until.")
         order = Order(stay, Display.of(None, stay.unit), timezone.now(), "command", since, until, options["deidentify"])
+        if len(order.rows) > _LONG and self.stderr.isatty():
+            self.stderr.write(f"Setting {len(order.rows)} entries takes some seconds …")
         try:
             pdf = timeline_pdf(order)
         except NotPrinted as error:
