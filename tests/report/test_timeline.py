@@ -353,6 +353,16 @@ def test_impossible_stored_value_is_told_and_not_used(pdftotext):
     assert "900" in flat(words_of(timeline_pdf(world.order(stay)), pdftotext))
 
 
+def test_time_mistyped_into_the_future_is_not_left_out():
+    stay = world.make_stay("T-116")
+    world.add_gases(stay, 2)
+    later = timezone.now() + timedelta(days=400)
+    record.record(stay, world.nurse(), record.NewEntry(later, Site.ARTERIAL, world.gas(0, 1)))
+    payload = timeline(world.order(stay), "0" * 64)
+    assert len(payload["entries"]["rows"]) == 3
+    assert any("ahead of now" in row[2] for row in payload["findings"]["rows"])
+
+
 def test_span_without_entries():
     stay = world.make_stay("T-113")
     world.add_gases(stay, 2)

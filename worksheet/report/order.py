@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from datetime import datetime, timedelta
+from datetime import UTC, datetime
 from functools import cached_property
 
 import numpy as np
@@ -13,6 +13,8 @@ from worksheet.oxygen.readings import Ints
 from worksheet.ward.display import Display
 from worksheet.ward.models import Entry, Stay
 from worksheet.ward.sheet import Sheet, open_sheet
+
+_NO_END = datetime(9999, 12, 30, tzinfo=UTC)
 
 
 @dataclass(frozen=True)
@@ -50,8 +52,8 @@ class Order:
 
     @property
     def end(self) -> datetime:
-        """Last moment of the span; without one, everything recorded so far (a little leeway for fast clocks)."""
-        return self.until or self.printed_at + timedelta(days=1)
+        """Last moment of the span; without one, everything, a time mistyped into the future too."""
+        return self.until or _NO_END
 
     @cached_property
     def origin(self) -> datetime:
