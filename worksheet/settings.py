@@ -15,6 +15,7 @@ DEBUG = env.flag("WORKSHEET_DEBUG")
 # Without a key in the environment every start makes a new one: sessions end with the process. `serve` refuses that.
 SECRET_KEY_GIVEN = bool(env.text("WORKSHEET_SECRET_KEY"))
 SECRET_KEY = env.text("WORKSHEET_SECRET_KEY") or secrets.token_urlsafe(50)
+SECRET_KEY_FALLBACKS = env.words("WORKSHEET_OLD_SECRET_KEYS")  # while a key is being changed
 HTTPS = env.flag("WORKSHEET_HTTPS")
 ALLOWED_HOSTS = env.words("WORKSHEET_HOSTS", "127.0.0.1,localhost,[::1]")
 CSRF_TRUSTED_ORIGINS = env.words("WORKSHEET_ORIGINS")

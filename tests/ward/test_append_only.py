@@ -57,7 +57,9 @@ def test_raw_sql_is_refused_too(stay, nurse):
         if connection.vendor == "sqlite":
             refused(lambda: cursor.execute("REPLACE INTO ward_auditevent SELECT * FROM ward_auditevent"))
             columns = ", ".join(f.column for f in Entry._meta.fields if f.column != "id")
-            again = f"REPLACE INTO ward_entry ({columns}) SELECT {columns} FROM ward_entry"  # a new number, the same key
+            again = (
+                f"REPLACE INTO ward_entry ({columns}) SELECT {columns} FROM ward_entry"  # a new number, the same key
+            )
             refused(lambda: cursor.execute(again))
         else:
             refused(lambda: cursor.execute("TRUNCATE ward_auditevent"))
@@ -136,6 +138,27 @@ def test_verify_audit_finds_a_changed_event():
     without_triggers("UPDATE ward_auditevent SET actor = 'somebody' WHERE id = %s", events[1].pk)
     with pytest.raises(CommandError, match=f"event {events[1].pk}: this event was changed"):
         call_command("verify_audit")
+
+
+def test_verify_audit_finds_content_that_was_changed_or_erased_without_telling():
+    events = write_three()
+    without_triggers("UPDATE ward_auditevent SET subject = 'K-9' WHERE id = %s", events[1].pk)
+    with pytest.raises(CommandError, match=f"event {events[1].pk}: the content of this event was changed"):
+        call_command("verify_audit")
+    with connection.cursor() as cursor:
+        cursor.execute(
+            "UPDATE ward_auditevent SET subject = '', detail = '{}', salt = '' WHERE id = %s", [events[1].pk]
+        )
+    with pytest.raises(CommandError, match=f"event {events[1].pk}: the content of this event was erased"):
+        call_command("verify_audit")
+
+
+def test_events_written_before_their_content_had_a_digest_still_hold():
+    old = AuditEvent(at=T0, actor="nurse", action="viewed", subject="K-1", detail={"b": 1, "a": [2]})
+    old.hash = audit.digest(old)
+    old.save(force_insert=True)
+    write_three()
+    call_command("verify_audit")
 
 
 def test_verify_audit_finds_a_removed_event():

@@ -8,3 +8,7 @@ class TransferConfig(AppConfig):
 
     default_auto_field = "django.db.models.BigAutoField"
     name = "worksheet.transfer"
+
+    def ready(self) -> None:
+        """Delete with the patient what waits here."""
+        from . import forget  # noqa: F401

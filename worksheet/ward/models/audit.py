@@ -14,6 +14,8 @@ class AuditEvent(models.Model):
     subject = models.CharField(max_length=120, blank=True)  # stay reference, user name, file
     action = models.CharField(max_length=40)
     detail = models.JSONField(default=dict)
+    salt = models.CharField(max_length=32, blank=True, default="")  # empty once the content was erased on lawful order
+    content_hash = models.CharField(max_length=64, blank=True, default="")  # of salt, subject and detail
     previous_hash = models.CharField(max_length=64, blank=True)
     hash = models.CharField(max_length=64)
 
