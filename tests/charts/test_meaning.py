@@ -214,3 +214,23 @@ def test_ledger_bar_of_nothing():
 @pytest.mark.parametrize(("span", "most", "step"), [(10, 5, 2), (1, 5, 0.2), (0.03, 5, 0.01), (700, 4, 200)])
 def test_round_steps(span, most, step):
     assert round_step(span, most) == pytest.approx(step)
+
+
+@pytest.mark.parametrize("po2", [55.0, 149.0, 151.0, 480.0])
+def test_curve_reaches_as_far_as_the_sample(po2):
+    gas = {"ph": 7.4, "pco2": 40.0, "po2": po2, "so2": 0.97, "hb": 13.0}
+    sheet = build.sheet_of(build.table([(build.START, Site.ARTERIAL, gas, Event.NONE)]))
+    chart = charts.curve_chart(sheet, None, build.rows_of(sheet), build.DISPLAY)
+    point = next(s for s in chart.series if s.name == "Arterial")
+    assert point.x == (po2,)
+    assert chart.x.high >= max(po2, 150)
+    assert all(max(s.x) <= chart.x.high for s in chart.series)
+    assert next(row for row in charts.table(chart).rows if row[0] == "Arterial")[1] == f"{po2:.0f}"
+
+
+def test_table_tells_both_of_two_samples_at_one_moment():
+    one, two = ({"ph": 7.4, "pco2": 40.0, "po2": po2, "hb": 10.0} for po2 in (90.0, 120.0))
+    sheet = build.sheet_of(build.table([(build.START, Site.ARTERIAL, gas, Event.NONE) for gas in (one, two)]))
+    told = charts.table(build.strip(sheet))
+    column = told.head.index("PaO2 (mmHg)")
+    assert told.rows[0][column] == "90; 120"

@@ -19,7 +19,7 @@ from .description import Chart, Series, Style
 from .maps import HEIGHT
 from .scales import TimeScale, WallClock, value_axis
 
-_GRID = np.concatenate([np.linspace(0.0, 60.0, 61), np.linspace(62.0, 150.0, 45)])
+_USUAL_END = 150.0  # mmHg; further only where the sample lies further
 
 
 @dataclass(frozen=True)
@@ -47,21 +47,28 @@ def curve_chart(sheet: Sheet, stay: Stay, rows: Ints, display: Display, scale: T
     """
     scale = scale or WallClock(display)
     blood = _latest(sheet, rows)
-    x_axis = value_axis("po2", display.heading("po2"), [0.0, float(points.shown(display, "po2", np.array(150.0)))],
-                        display, decimals=display.decimals("po2"), floor=0, ceiling=150.0 / display.unit("po2").factor,
-                        most=6, room=False)  # fmt: skip
+    grid = _grid(float(sheet.snapshots["po2"][blood.row]) if blood else np.nan)
+    end = float(points.shown(display, "po2", grid[-1:])[0])
+    x_axis = value_axis("po2", display.heading("po2"), [0.0, end], display, decimals=display.decimals("po2"), floor=0,
+                        ceiling=end, most=6, room=False)  # fmt: skip
     full = float(points.shown(display, "o2hb", np.array(1.0)))
     title = f"O2Hb, share of all Hb ({display.unit('o2hb').label or 'fraction'})"
     y_axis = value_axis("o2hb", title, [0.0, full], display, decimals=display.decimals("o2hb"), floor=0, ceiling=full,
                         empty="No arterial gas with pH and PCO2")  # fmt: skip
-    standard = saturation(_GRID, 7.40, 40.0, 37.0, 0.0, 0.0, sheet.constants)
-    series = [_line("Standard curve", _GRID, standard, display, Style("soft", "dash"))]
+    standard = saturation(grid, 7.40, 40.0, 37.0, 0.0, 0.0, sheet.constants)
+    series = [_line("Standard curve", grid, standard, display, Style("soft", "dash"))]
     if blood:
-        series = [*_unloading(sheet, blood, display), *series, *_patient(sheet, blood, display, scale)]
+        series = [*_unloading(sheet, blood, display), *series, *_patient(sheet, blood, grid, display, scale)]
     return Chart(
         "curve", "Dissociation curve", _alt(blood), _summary(sheet, blood, display, scale), x_axis, (y_axis,),
         tuple(series), height=HEIGHT, decimal_comma=display.decimal_comma,
     )  # fmt: skip
+
+
+def _grid(po2: float) -> Floats:
+    """PO2 to draw the curves at [mmHg]: to 150, or as far as the sample lies; close where the curve bends."""
+    end = _USUAL_END if not po2 > _USUAL_END else 50.0 * np.ceil(po2 / 50.0)
+    return np.concatenate([np.linspace(0.0, 60.0, 61), np.linspace(62.0, end, 45)])
 
 
 def _latest(sheet: Sheet, rows: Ints) -> _Blood | None:
@@ -88,7 +95,7 @@ def _unloading(sheet: Sheet, blood: _Blood, display: Display) -> Iterator[Series
     end = sheet.constants.end_capillary_po2
     if not np.isfinite(po2) or po2 <= end:
         return
-    grid = np.linspace(end, min(po2, _GRID[-1]), 40)
+    grid = np.linspace(end, po2, 40)
     upper = points.shown(display, "o2hb", blood.oxyhaemoglobin(grid, sheet.constants))
     x = points.floats(points.shown(display, "po2", grid))
     name = f"Can be unloaded down to {display.value('po2', end, with_unit=True)}"
@@ -97,10 +104,10 @@ def _unloading(sheet: Sheet, blood: _Blood, display: Display) -> Iterator[Series
     )
 
 
-def _patient(sheet: Sheet, blood: _Blood, display: Display, scale: TimeScale) -> Iterator[Series]:
+def _patient(sheet: Sheet, blood: _Blood, grid: Floats, display: Display, scale: TimeScale) -> Iterator[Series]:
     snap, row = sheet.snapshots, blood.row
-    own = blood.oxyhaemoglobin(_GRID, sheet.constants)
-    yield _line("Patient's own curve", _GRID, own, display, Style("function", "solid", width=2.4))
+    own = blood.oxyhaemoglobin(grid, sheet.constants)
+    yield _line("Patient's own curve", grid, own, display, Style("function", "solid", width=2.4))
     when = scale.text(float(sheet.readings.time[row]))
     active = 1.0 - blood.inactive
     yield from _sample("Arterial", snap["po2"][row], sheet.derived.saturation[row] * active, when, "circle", display)
@@ -112,10 +119,9 @@ def _patient(sheet: Sheet, blood: _Blood, display: Display, scale: TimeScale) ->
 
 def _sample(name: str, po2: float, o2hb: float, note: str, marker: str, display: Display) -> Iterator[Series]:
     if np.isfinite(po2) and np.isfinite(o2hb):
-        x = float(points.shown(display, "po2", np.array(min(po2, _GRID[-1]))))
+        x = float(points.shown(display, "po2", np.array(po2)))
         y = float(points.shown(display, "o2hb", np.array(o2hb)))
-        beyond = f", at {display.value('po2', float(po2), with_unit=True)}, beyond the axis" if po2 > _GRID[-1] else ""
-        yield Series("points", name, "o2hb", (x,), (y,), Style("ink", marker=marker), notes=(note + beyond,))  # type: ignore[arg-type]
+        yield Series("points", name, "o2hb", (x,), (y,), Style("ink", marker=marker), notes=(note,))  # type: ignore[arg-type]
 
 
 def _alt(blood: _Blood | None) -> str:
@@ -133,7 +139,7 @@ def _summary(sheet: Sheet, blood: _Blood | None, display: Display, scale: TimeSc
     row = blood.row
     unload = display.value("extractable_o2", float(sheet.derived["extractable_o2"][row]), with_unit=True)
     p50 = display.value("p50", float(sheet.derived["p50"][row]), with_unit=True)
-    words = [f"Sample of {scale.text(float(sheet.readings.time[row]))}."]
+    words = [f"Sample of {scale.text(float(sheet.readings.time[row]))}, curves at 37 °C."]
     words.append("P50 is not reported for this saturation." if p50 == MISSING else f"P50 in the body {p50}.")
     if unload != MISSING:
         words.append(f"{unload} can be unloaded.")

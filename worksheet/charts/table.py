@@ -41,7 +41,9 @@ def _by_x(chart: Chart, listed: list[Series]) -> Table:
         for i, x in enumerate(s.x):
             note = s.note(i)
             text = number(chart, s.y[i], decimals)
-            cells[x][column] = f"{text} ({note})" if note and text != MISSING else text
+            told = f"{text} ({note})" if note and text != MISSING else text
+            # Two samples at one moment are both told.
+            cells[x][column] = told if cells[x][column] == MISSING else f"{cells[x][column]}; {told}"
     head = (chart.x.title, *(_heading(chart, s, [t.name for t in listed].count(s.name) > 1) for s in listed))
     return Table(chart.title, head, tuple((words.get(x, number(chart, x, 1)), *row) for x, row in cells.items()))
 
