@@ -38,9 +38,6 @@ class AccountCap:
         if username and User.objects.filter(username=username, wrong_logins__gte=settings.WRONG_LOGINS_CAP).exists():
             raise PermissionDenied("too many wrong passwords in a row")
 
-    def get_user(self, user_id: int) -> None:
-        """Not from here."""
-
 
 def is_their_password(request: HttpRequest, password: str) -> bool:
     """Whether the logged-in person knows the password; wrong tries count as wrong logins."""
