@@ -1,6 +1,7 @@
 """What the charts say is what the numbers are."""
 
 import itertools
+from dataclasses import replace
 from datetime import UTC, datetime
 from zoneinfo import ZoneInfo
 
@@ -234,3 +235,15 @@ def test_table_tells_both_of_two_samples_at_one_moment():
     told = charts.table(build.strip(sheet))
     column = told.head.index("PaO2 (mmHg)")
     assert told.rows[0][column] == "90; 120"
+
+
+def test_quantities_on_one_axis_share_its_unit(sheet):
+    """A reader may choose a unit for one of them only."""
+    display = replace(build.DISPLAY, units={"spo2": "1", "so2_calculated": "1", "pf_ratio": "kPa"})
+    chart = build.strip(sheet, display)
+    assert "Saturation (%)" in [axis.title for axis in chart.y]
+    by_name = {s.name: s for s in chart.series}
+    for name in ("sO2 measured", "sO2 calculated", "SpO2"):
+        assert min(by_name[name].y) > 50
+    plain = {s.name: s for s in build.strip(sheet).series}
+    assert by_name["P/F"].y == plain["P/F"].y

@@ -68,12 +68,15 @@ def arterial(sheet: Sheet, rows: Ints) -> Ints:
     return chosen
 
 
-def measured(sheet: Sheet, rows: Ints, name: str, display: Display, sites: Sequence[Site] = ()) -> Points:
-    """What was measured: own values only."""
+def measured(
+    sheet: Sheet, rows: Ints, name: str, display: Display, sites: Sequence[Site] = (), unit_of: str = ""
+) -> Points:
+    """What was measured: own values only; in the unit of another quantity where two share an axis."""
     keep = rows[np.isfinite(sheet.readings[name][rows])]
     if sites:
         keep = keep[np.isin(sheet.readings.site[keep], sites)]
-    return Points(floats(sheet.readings.time[keep]), floats(shown(display, name, sheet.readings[name][keep])))
+    values = shown(display, unit_of or name, sheet.readings[name][keep])
+    return Points(floats(sheet.readings.time[keep]), floats(values))
 
 
 def known(sheet: Sheet, rows: Ints, name: str, display: Display) -> Points:
@@ -91,14 +94,14 @@ def _carried_words(age: float) -> str:
     return f"carried {age_words(age)}" if age > 0 else f"read {age_words(age)} later"
 
 
-def derived(sheet: Sheet, rows: Ints, name: str, display: Display) -> Points:
+def derived(sheet: Sheet, rows: Ints, name: str, display: Display, unit_of: str = "") -> Points:
     """A derived quantity of arterial rows; points resting on a carried value are marked and say on what."""
     keep = arterial(sheet, rows)
     keep = keep[np.isfinite(sheet.derived[name][keep])]
     flags = sheet.derived.flags[keep]
     return Points(
         floats(sheet.readings.time[keep]),
-        floats(shown(display, name, sheet.derived[name][keep])),
+        floats(shown(display, unit_of or name, sheet.derived[name][keep])),
         carried(name, flags),
         tuple(basis_words(name, int(bits)) for bits in flags),
     )

@@ -120,7 +120,7 @@ def _supply(sheet: Sheet, rows: Ints, display: Display) -> _Panel:
 
 def _oxygen(sheet: Sheet, rows: Ints, display: Display) -> _Panel:
     pao2 = points.measured(sheet, rows, "po2", display, (Site.ARTERIAL,))
-    ratio = points.derived(sheet, rows, "pf_ratio", display)
+    ratio = points.derived(sheet, rows, "pf_ratio", display, unit_of="po2")
     lung = STEP["lung"].style
     series = [_series("line", "PaO2", "po2", pao2, lung)] if pao2 else []
     if ratio:
@@ -141,7 +141,7 @@ def _saturations(sheet: Sheet, rows: Ints, display: Display) -> _Panel:
     wanted = (
         ("sO2 measured", Style("ink", marker="circle"), on_gas),
         ("sO2 calculated", Style("function", "dash", "square"), _calculated(sheet, rows, display)),
-        ("SpO2", Style("soft", "dot", "diamond"), points.measured(sheet, rows, "spo2", display)),
+        ("SpO2", Style("soft", "dot", "diamond"), points.measured(sheet, rows, "spo2", display, unit_of="so2")),
     )
     series = tuple(_series("line", name, "so2", got, style) for name, style, got in wanted if got)
     title = f"Saturation ({display.unit('so2').label or 'fraction'})"
@@ -156,7 +156,7 @@ def _calculated(sheet: Sheet, rows: Ints, display: Display) -> Points:
     values = np.where(np.isnan(stated), sheet.derived["so2_from_po2"][keep], stated)
     notes = np.where(np.isnan(stated), "from the curve", "by the analyser")
     ok = np.isfinite(values)
-    shown = points.shown(display, "so2_calculated", values[ok])
+    shown = points.shown(display, "so2", values[ok])
     return Points(points.floats(sheet.readings.time[keep[ok]]), points.floats(shown), (), tuple(notes[ok].tolist()))
 
 
