@@ -1,23 +1,21 @@
 """The rules behind the findings: which rows, and the numbers that the words need.
 
-Each rule is a function of a :class:`Case` that returns a :class:`Hit`. Limits without a source are common practice.
+Each rule is a function of a :class:`~worksheet.oxygen.finding_case.Case` that returns a ``Hit``. Limits without a
+source are common practice. What saturations that disagree may mean is in :mod:`~worksheet.oxygen.saturation_rules`.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
-from dataclasses import dataclass, field
-from typing import NamedTuple
-
 import numpy as np
 
-from . import acidbase, curve, measurement, oximetry
-from .align import Line, earlier, taken
-from .constants import Constants
-from .derive import P50_OF_BLOOD, measured_saturation
-from .domain import quiet
-from .quantities import CATALOGUE, MMHG_PER_KPA
-from .readings import Bools, Derived, Device, Event, Flag, Floats, Ints, Site, Snapshots
+from . import acidbase, curve, measurement
+from .align import taken
+from .chain import either
+from .finding_case import Case, Hit, default_sd, or_usual, rule
+from .line import earlier
+from .pairs import P50_OF_BLOOD
+from .quantities import MMHG_PER_KPA
+from .readings import Bools, Device, Event, Flag, Floats, Ints, Site
 
 TWO_SIDED = 1.96  # 95 %
 _P50_AMONG_PATIENTS = 0.05  # 1 SD of ln P50 about the modelled curve: about 1 mmHg of 26.8, more in the ill
@@ -26,115 +24,19 @@ CLOCK_SKEW = 5 / 60  # h that two clocks may differ by
 SAME_SAMPLE = 24.0  # h within which equal values are one sample twice
 _REPEATED = ("ph", "pco2", "po2", "hb", "so2", "o2hb", "lactate")
 
-Numbers = Mapping[str, tuple[str, Floats]]
 
-
-class Hit(NamedTuple):
-    """Rows of a finding and the numbers for its words: name → (quantity, or "" for a plain number; values)."""
-
-    where: Bools
-    numbers: Numbers
-
-
-@dataclass(frozen=True)
-class Case:
-    """The rows that rules look at: all of them samples, as columns."""
-
-    snapshots: Snapshots
-    derived: Derived
-    constants: Constants
-    rows: Ints
-    line: Line
-    now: float | None = None
-    _columns: dict[str, Floats] = field(default_factory=dict)
-
-    def own(self, name: str) -> Floats:
-        """What was measured on the row itself."""
-        return self._column(f"own {name}", lambda: self.snapshots.readings[name][self.rows])
-
-    def known(self, name: str) -> Floats:
-        """What was known at the row, carried values included."""
-        return self._column(name, lambda: self.snapshots[name][self.rows])
-
-    def result(self, name: str) -> Floats:
-        """What was derived for the row."""
-        return self._column(f"result {name}", lambda: self.derived[name][self.rows])
-
-    def flagged(self, flag: Flag) -> Bools:
-        """Whether the row's numbers rest on this."""
-        return np.asarray((self.derived.flags[self.rows] & flag) != 0)
-
-    @property
-    def site(self) -> Ints:
-        """Site codes."""
-        return self.snapshots.readings.site[self.rows].astype(np.int64)
-
-    @property
-    def arterial(self) -> Bools:
-        """Whether the row is an arterial sample."""
-        return np.asarray(self.site == Site.ARTERIAL)
-
-    def so2(self) -> Floats:
-        """Functional saturation as measured on the row's own sample."""
-        own, known = (self.own("so2"), self.own("o2hb")), (self.known(name) for name in ("cohb", "methb", "sulfhb"))
-        return self._column("measured", lambda: measured_saturation(*own, *known))
-
-    def by_curve(self) -> Floats:
-        """The curve at the sample's own PO2."""
-        return self.result("so2_from_po2")
-
-    def calculated(self) -> Floats:
-        """The analyser's calculated saturation, else the curve's."""
-        given = self.own("so2_calculated")
-        return np.where(np.isnan(given), self.by_curve(), given)
-
-    def co_oximetry(self) -> Bools:
-        """Whether COHb and MetHb are known (own or carried)."""
-        return np.asarray(~np.isnan(self.known("cohb") + self.known("methb")))
-
-    def curve_at(self, po2: Floats) -> Floats:
-        """Saturation at another PO2 of the same sample; a missing pH or PCO2 counts as usual here, to judge units."""
-        ph, pco2 = _or(self.own("ph"), 7.4), _or(self.own("pco2"), 40.0)
-        return curve.saturation(po2, ph, np.clip(pco2, 20.0, 80.0), 37.0, 0.0, 0.0, self.constants)
-
-    def _column(self, key: str, make: Callable[[], Floats]) -> Floats:
-        if key not in self._columns:
-            self._columns[key] = make()
-        return self._columns[key]
-
-
-RULES: dict[str, Callable[[Case], Hit]] = {}
-"""Rules that look at one row and what goes with it, by code."""
-
-
-def _rule(code: str) -> Callable[[Callable[[Case], Hit]], Callable[[Case], Hit]]:
-    def register(rule: Callable[[Case], Hit]) -> Callable[[Case], Hit]:
-        RULES[code] = quiet(rule)
-        return RULES[code]
-
-    return register
-
-
-def _or(value: Floats, usual: float) -> Floats:
-    return np.where(np.isnan(value), usual, value)
-
-
-def _sd(name: str, value: Floats) -> Floats:
-    return CATALOGUE[name].default_sd(value)
-
-
-@_rule("po2-above-alveolar")
+@rule("po2-above-alveolar")
 def _po2_above_alveolar(case: Case) -> Hit:
     """PaO2 beyond PAO2 by more than the two can be off."""
     po2, alveolar, fio2, pco2 = case.own("po2"), case.result("pao2_alveolar"), case.known("fio2"), case.known("pco2")
     r = case.constants.respiratory_quotient
-    pressure = _or(case.known("barometric_pressure"), case.constants.barometric_pressure)
+    pressure = or_usual(case.known("barometric_pressure"), case.constants.barometric_pressure)
     fio2_sd = measurement.parts(case.snapshots, "fio2").total[case.rows]
     per_fio2 = pressure - case.constants.water_vapour - pco2 * (1.0 - 1.0 / r)
     variance = (
-        _sd("po2", po2) ** 2
+        default_sd("po2", po2) ** 2
         + (per_fio2 * fio2_sd) ** 2
-        + ((fio2 + (1.0 - fio2) / r) * _sd("pco2", pco2)) ** 2
+        + ((fio2 + (1.0 - fio2) / r) * default_sd("pco2", pco2)) ** 2
         + (pco2 * (1.0 - fio2) / r**2 * 0.1) ** 2  # R 0.7 to 1.0
         + (fio2 * np.where(case.flagged(Flag.BAROMETRIC_STANDARD), 10.0, 2.0)) ** 2  # weather
     )
@@ -145,11 +47,7 @@ def _po2_above_alveolar(case: Case) -> Hit:
 
 def _saturation_hint(case: Case) -> Floats:
     """Any saturation that was not worked out from the PO2 itself."""
-    return _or_else(case.so2(), case.known("spo2"))
-
-
-def _or_else(first: Floats, second: Floats) -> Floats:
-    return np.where(np.isnan(first), second, first)
+    return either(case.so2(), case.known("spo2"))
 
 
 def _alkali(case: Case) -> Floats:
@@ -157,7 +55,7 @@ def _alkali(case: Case) -> Floats:
     return acidbase.bicarbonate(case.own("ph"), case.own("pco2"))
 
 
-@_rule("pco2-looks-like-kpa")
+@rule("pco2-looks-like-kpa")
 def _pco2_like_kpa(case: Case) -> Hit:
     """PCO2 under 12 mmHg at a pH that it cannot have, while its 7.5-fold can be.
 
@@ -169,7 +67,7 @@ def _pco2_like_kpa(case: Case) -> Hit:
     return Hit(where, {"pco2": ("pco2", pco2)})
 
 
-@_rule("pco2-looks-like-mmhg")
+@rule("pco2-looks-like-mmhg")
 def _pco2_like_mmhg(case: Case) -> Hit:
     """PCO2 above 120 mmHg at a pH that it cannot have, while a 7.5th of it can be."""
     pco2 = case.own("pco2")
@@ -178,7 +76,7 @@ def _pco2_like_mmhg(case: Case) -> Hit:
     return Hit(where, {"pco2": ("pco2", pco2)})
 
 
-@_rule("po2-looks-like-kpa")
+@rule("po2-looks-like-kpa")
 def _po2_like_kpa(case: Case) -> Hit:
     """PO2 that fits the saturation only when taken as kPa; without a saturation, when PCO2 looks like kPa too."""
     po2, seen = case.own("po2"), _saturation_hint(case)
@@ -188,7 +86,7 @@ def _po2_like_kpa(case: Case) -> Hit:
     return Hit((po2 < 80.0) & (by_saturation | jointly), {"po2": ("po2", po2)})
 
 
-@_rule("po2-looks-like-mmhg")
+@rule("po2-looks-like-mmhg")
 def _po2_like_mmhg(case: Case) -> Hit:
     """PO2 that fits a low saturation only when a 7.5th of it is taken, or stands beside such a PCO2."""
     po2, seen = case.own("po2"), _saturation_hint(case)
@@ -198,27 +96,27 @@ def _po2_like_mmhg(case: Case) -> Hit:
     return Hit((po2 > 200.0) & (by_saturation | jointly), {"po2": ("po2", po2)})
 
 
-@_rule("so2-against-curve")
+@rule("so2-against-curve")
 def _so2_against_curve(case: Case) -> Hit:
     """Measured and calculated saturation apart by more than 3 points and more than their uncertainty."""
     so2, expected, po2 = case.so2(), case.calculated(), case.own("po2")
     slope = _HILL * expected * (1.0 - expected)  # per unit of ln PO2
-    ln_po2_sd = np.hypot(_sd("po2", po2) / np.maximum(po2, 1.0), _P50_AMONG_PATIENTS)
-    sd = np.hypot(_sd("so2", so2), slope * ln_po2_sd)
+    ln_po2_sd = np.hypot(default_sd("po2", po2) / np.maximum(po2, 1.0), _P50_AMONG_PATIENTS)
+    sd = np.hypot(default_sd("so2", so2), slope * ln_po2_sd)
     where = np.abs(so2 - expected) > np.maximum(0.03, TWO_SIDED * sd)
     return Hit(where, {"so2": ("so2", so2), "expected": ("so2", expected), "po2": ("po2", po2)})
 
 
-@_rule("arterial-looks-venous")
+@rule("arterial-looks-venous")
 def _arterial_looks_venous(case: Case) -> Hit:
     """A saturation far below the finger's, or a PO2 that few living arteries hold."""
-    so2 = _or_else(case.so2(), case.by_curve())
+    so2 = either(case.so2(), case.by_curve())
     po2, spo2 = case.own("po2"), case.known("spo2")
     low = (so2 < 0.85) & ((spo2 - so2 > 0.08) | (np.isnan(spo2) & (so2 < 0.75) & (po2 < 45.0)))
     return Hit(case.arterial & low, {"so2": ("so2", so2), "po2": ("po2", po2), "spo2": ("spo2", spo2)})
 
 
-@_rule("fractions-do-not-add")
+@rule("fractions-do-not-add")
 def _fractions_do_not_add(case: Case) -> Hit:
     """O2Hb + HHb + COHb + MetHb (+ SulfHb); HHb follows from sO2. 2.5 points: four readings in whole percents."""
     so2, o2hb, cohb, methb = (case.own(name) for name in ("so2", "o2hb", "cohb", "methb"))
@@ -226,10 +124,10 @@ def _fractions_do_not_add(case: Case) -> Hit:
     whole = o2hb / so2 + dys
     parts = o2hb + dys
     where = (np.abs(whole - 1.0) > 0.025) | (np.isnan(so2) & (parts > 1.015))
-    return Hit(where, {"sum": ("o2hb", _or_else(whole, parts))})
+    return Hit(where, {"sum": ("o2hb", either(whole, parts))})
 
 
-@_rule("venous-above-arterial")
+@rule("venous-above-arterial")
 def _venous_above_arterial(case: Case) -> Hit:
     """The paired venous saturation in use above the arterial one in use."""
     arterial = case.derived.saturation[case.rows]
@@ -237,7 +135,7 @@ def _venous_above_arterial(case: Case) -> Hit:
     return Hit(case.arterial & (venous > arterial), {"venous": ("so2", venous), "arterial": ("so2", arterial)})
 
 
-@_rule("hb-jump")
+@rule("hb-jump")
 def _hb_jump(case: Case) -> Hit:
     """More than 3 g/dL and 30 % from the stay's previous haemoglobin within 12 h, with nothing recorded between.
 
@@ -257,7 +155,7 @@ def _hb_jump(case: Case) -> Hit:
     return Hit(jumped[at], {"before": ("hb", before[at]), "hb": ("hb", hb[at]), "hours": ("", hours[at])})
 
 
-@_rule("ph-pco2-hco3-disagree")
+@rule("ph-pco2-hco3-disagree")
 def _ph_pco2_hco3(case: Case) -> Hit:
     """Bicarbonate against Henderson-Hasselbalch: more than 4 mmol/L and 15 % (total CO2 runs 1-2 above)."""
     given, expected = case.own("bicarbonate"), _alkali(case)
@@ -266,7 +164,7 @@ def _ph_pco2_hco3(case: Case) -> Hit:
                        "ph": ("ph", case.own("ph")), "pco2": ("pco2", case.own("pco2"))})  # fmt: skip
 
 
-@_rule("calculated-as-measured")
+@rule("calculated-as-measured")
 def _calculated_as_measured(case: Case) -> Hit:
     """A measured saturation with decimals that is a calculated one to the last digit.
 
@@ -303,7 +201,7 @@ def _third_in_a_row(case: Case, run: Bools) -> Bools:
     return np.asarray(run & both[case.rows])
 
 
-@_rule("co-and-ci-disagree")
+@rule("co-and-ci-disagree")
 def _co_and_ci_disagree(case: Case) -> Hit:
     """Body surface from CO over CI against that from height and weight, by more than 15 %."""
     co, ci, bsa = case.known("cardiac_output"), case.known("cardiac_index"), case.result("bsa")
@@ -312,35 +210,35 @@ def _co_and_ci_disagree(case: Case) -> Hit:
                        "bsa": ("bsa", bsa)})  # fmt: skip
 
 
-@_rule("p50-out-of-range")
+@rule("p50-out-of-range")
 def _p50_out_of_range(case: Case) -> Hit:
     """P50 that no blood has, from a saturation that should have shown it well (up to 0.95)."""
     p50 = case.result("p50")
     return Hit((p50 < P50_OF_BLOOD[0]) | (p50 > P50_OF_BLOOD[1]), {"p50": ("p50", p50)})
 
 
-@_rule("o2er-out-of-range")
+@rule("o2er-out-of-range")
 def _o2er_out_of_range(case: Case) -> Hit:
     """Extraction under 5 % or above 80 %."""
     o2er = case.result("o2er")
     return Hit((o2er < 0.05) | (o2er > 0.80), {"o2er": ("o2er", o2er)})
 
 
-@_rule("room-air-with-oxygen")
+@rule("room-air-with-oxygen")
 def _room_air_with_oxygen(case: Case) -> Hit:
     """Room air recorded with more than 22 % oxygen."""
     fio2 = case.known("fio2")
     return Hit((case.snapshots.device[case.rows] == Device.ROOM_AIR) & (fio2 > 0.22), {"fio2": ("fio2", fio2)})
 
 
-@_rule("time-in-future")
+@rule("time-in-future")
 def _time_in_future(case: Case) -> Hit:
     """Later than now, by more than two clocks differ."""
     ahead = case.snapshots.readings.time[case.rows] - (np.inf if case.now is None else case.now)
     return Hit(ahead > CLOCK_SKEW, {"hours": ("", ahead)})
 
 
-@_rule("duplicate-sample")
+@rule("duplicate-sample")
 def _duplicate_sample(case: Case) -> Hit:
     """The stay's previous sample from the same site with equal pH, PCO2 and PO2, or two gases at one time.
 
@@ -368,70 +266,7 @@ def _earlier_same_site(case: Case) -> Ints:
     return found
 
 
-def _gap(case: Case) -> Bools:
-    """SpO2 below the calculated saturation by more than the gap that asks for co-oximetry."""
-    return np.asarray(case.arterial & (case.calculated() - case.known("spo2") > oximetry.GAP_ASKS))
-
-
-def _gap_numbers(case: Case) -> dict[str, tuple[str, Floats]]:
-    return {
-        "spo2": ("spo2", case.known("spo2")), "calculated": ("so2", case.calculated()), "po2": ("po2", case.own("po2")),
-    }  # fmt: skip
-
-
-@_rule("gap-reading-false")
-def _gap_reading_false(case: Case) -> Hit:
-    """PaO2 normal, co-oximetry clean (COHb < 5 %, MetHb and SulfHb < 3 %), measured saturation as calculated."""
-    so2 = case.so2()
-    clean = case.co_oximetry() & (case.known("cohb") < 0.05) & (_met(case) < 0.03)
-    agree = np.isnan(so2) | (np.abs(so2 - case.calculated()) <= 0.03)
-    where = _gap(case) & clean & agree & (case.own("po2") >= 70.0)
-    return Hit(where, _gap_numbers(case) | {"so2": ("so2", _or_else(so2, case.calculated()))})
-
-
-def _met(case: Case) -> Floats:
-    return np.asarray(case.known("methb") + np.nan_to_num(case.known("sulfhb")))
-
-
-@_rule("gap-dyshaemoglobin")
-def _gap_dyshaemoglobin(case: Case) -> Hit:
-    """The same gap with MetHb or SulfHb of 3 % or more."""
-    share = np.nan_to_num(case.known("methb")) + np.nan_to_num(case.known("sulfhb"))
-    return Hit(_gap(case) & (share >= 0.03), _gap_numbers(case) | {"share": ("methb", share)})
-
-
-@_rule("gap-send-co-oximetry")
-def _gap_send_co_oximetry(case: Case) -> Hit:
-    """The same gap with MetHb not measured; the MetHb that would explain it is stated, never concluded."""
-    methb = oximetry.methb_explaining(case.known("spo2"), _or_else(case.so2(), case.calculated()))
-    where = _gap(case) & np.isnan(case.known("methb")) & ~_arterial_looks_venous(case).where
-    return Hit(where, _gap_numbers(case) | {"methb": ("methb", methb)})
-
-
-@_rule("cohb-hidden")
-def _cohb_hidden(case: Case) -> Hit:
-    """COHb of 5 % or more with a normal SpO2 (from 94 %) or, without one, a normal PaO2 (from 70 mmHg)."""
-    spo2, po2, cohb = case.known("spo2"), case.own("po2"), case.known("cohb")
-    looks_well = np.where(np.isnan(spo2), po2 >= 70.0, spo2 >= 0.94)
-    return Hit(case.arterial & (cohb >= 0.05) & looks_well, {"cohb": ("cohb", cohb)})
-
-
-@_rule("hypoxaemia-agreed")
-def _hypoxaemia_agreed(case: Case) -> Hit:
-    """SpO2 and measured saturation under 90 %, PaO2 under 60 mmHg."""
-    so2, spo2, po2 = case.so2(), case.known("spo2"), case.own("po2")
-    where = case.arterial & (so2 < 0.90) & (spo2 < 0.90) & (po2 < 60.0)
-    return Hit(where, {"so2": ("so2", so2), "spo2": ("spo2", spo2), "po2": ("po2", po2)})
-
-
-@_rule("hypoxaemia-occult")
-def _hypoxaemia_occult(case: Case) -> Hit:
-    """SpO2 above the measured saturation by more than 4 points."""
-    so2, spo2 = case.so2(), case.known("spo2")
-    return Hit(case.arterial & (spo2 - so2 > 0.04 + 1e-9), {"so2": ("so2", so2), "spo2": ("spo2", spo2)})
-
-
-@_rule("pf-from-estimated-fio2")
+@rule("pf-from-estimated-fio2")
 def _pf_from_estimated_fio2(case: Case) -> Hit:
     """P/F with an FiO2 of a low-flow device."""
     pf = case.result("pf_ratio")
@@ -439,7 +274,7 @@ def _pf_from_estimated_fio2(case: Case) -> Hit:
     return Hit(where, {"pf_ratio": ("pf_ratio", pf), "fio2": ("fio2", case.known("fio2"))})
 
 
-@_rule("spo2-above-97")
+@rule("spo2-above-97")
 def _spo2_above_97(case: Case) -> Hit:
     """S/F asked for where the curve is flat."""
     return Hit(case.flagged(Flag.SPO2_ABOVE_97), {"spo2": ("spo2", case.known("spo2"))})

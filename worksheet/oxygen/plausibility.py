@@ -6,136 +6,26 @@ after ``derive`` and looks at whole rows; :func:`check_value` looks at one typed
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
-from dataclasses import dataclass, replace
+from collections.abc import Mapping
+from dataclasses import replace
 
 import numpy as np
-from numpy.typing import NDArray
 
-from .align import Line
+from . import finding_rules, saturation_rules  # noqa: F401 (they register themselves)
 from .constants import DEFAULT, Constants
 from .domain import quiet
-from .finding_kinds import KINDS, Kind, Severity
-from .finding_rules import RULES, Case, Hit
+from .finding_case import RULES, Case, Hit
+from .finding_kinds import KINDS
+from .finding_table import Finding, Findings, gathered, in_words, plain
+from .line import Line
 from .quantities import CATALOGUE, MEASURED, Quantity
-from .readings import Bools, Derived, Floats, Ints, Readings, Snapshots
+from .readings import Bools, Derived, Floats, Readings, Snapshots
+
+__all__ = ["Finding", "Findings", "check_value", "findings", "gathered", "plain", "without_impossible"]
 
 SATURATIONS = ("so2", "so2_calculated", "o2hb", "spo2")
 LIKE_FRACTION = 0.01  # a saturation of 1 % or less: typed as a fraction, or no living blood
-Show = Callable[[str, float], str]
 Refused = Mapping[str, Floats]
-
-
-@dataclass(frozen=True)
-class Finding:
-    """One finding about one row or one value, in finished words.
-
-    Attributes
-    ----------
-    code : str
-        Code of its :class:`~worksheet.oxygen.finding_kinds.Kind`.
-    severity : Severity
-        Blocks, asks or informs.
-    sentence : str
-        What is wrong, with the numbers.
-    settle : str
-        What would settle it.
-    source : str
-        Basis of the limit.
-    """
-
-    code: str
-    severity: Severity
-    sentence: str
-    settle: str
-    source: str
-
-
-@dataclass(frozen=True)
-class Findings:
-    """All findings of a table.
-
-    Attributes
-    ----------
-    size : int
-        Number of rows.
-    rows : mapping of str to ndarray of int64
-        Rows by code, in the order of the catalogue; codes without a row are left out [row number].
-    numbers : mapping of str to mapping
-        Numbers for the words by code: name → (quantity or "", values in the order of ``rows``) [canonical units].
-    """
-
-    size: int
-    rows: Mapping[str, Ints]
-    numbers: Mapping[str, Mapping[str, tuple[str, Floats]]]
-
-    def mask(self, code: str) -> Bools:
-        """Rows that have the finding, as a mask."""
-        result = np.zeros(self.size, dtype=np.bool_)
-        result[self.rows.get(code, np.zeros(0, dtype=np.int64))] = True
-        return result
-
-    def worst(self) -> NDArray[np.int8]:
-        """For each row 3 if a finding blocks, 2 if one asks, 1 if one informs, else 0."""
-        level = np.zeros(self.size, dtype=np.int8)
-        rank = {Severity.IMPOSSIBLE: 3, Severity.UNLIKELY: 2, Severity.NOTE: 1}
-        for code, rows in self.rows.items():
-            level[rows] = np.maximum(level[rows], rank[KINDS[code].severity])
-        return level
-
-    def codes(self) -> list[str]:
-        """The codes of each row, separated by semicolons."""
-        words = (len(self.rows) + 62) // 63
-        packed = np.zeros((max(words, 1), self.size), dtype=np.int64)
-        for bit, rows in enumerate(self.rows.values()):
-            packed[bit // 63, rows] |= np.int64(1) << np.int64(bit % 63)
-        combinations, which = np.unique(packed, axis=1, return_inverse=True)
-        texts = [self._text(combination) for combination in combinations.T.tolist()]
-        return [texts[i] for i in which.ravel().tolist()]
-
-    def _text(self, combination: list[int]) -> str:
-        return ";".join(code for bit, code in enumerate(self.rows) if combination[bit // 63] >> (bit % 63) & 1)
-
-    def of_row(self, row: int, show: Show | None = None) -> tuple[Finding, ...]:
-        """The findings of one row in words; ``show(quantity, canonical value)`` writes a number with its unit."""
-        found = []
-        for code, rows in self.rows.items():
-            at = int(np.searchsorted(rows, row))
-            if at < len(rows) and rows[at] == row:
-                numbers = {name: (q, float(values[at])) for name, (q, values) in self.numbers[code].items()}
-                found.append(_finding(KINDS[code], numbers, show or plain))
-        return tuple(found)
-
-
-def plain(name: str, value: float) -> str:
-    """A value with its edge unit, as files and messages write it.
-
-    Parameters
-    ----------
-    name : str
-        Quantity of the catalogue, empty for a plain number.
-    value : float
-        Value [canonical unit].
-
-    Returns
-    -------
-    str
-        Number and unit [edge unit]; "not measured" for NaN.
-    """
-    if np.isnan(value):
-        return "not measured"
-    if not name:
-        return f"{value:.2g}" if value < 10.0 else f"{value:.0f}"
-    quantity = CATALOGUE[name]
-    decimals = max(quantity.decimals, 1) if quantity.unit.ucum == "%" else quantity.decimals
-    return f"{float(quantity.unit.from_canonical(value)):.{decimals}f} {quantity.unit.label}".rstrip()
-
-
-def _finding(kind: Kind, numbers: Mapping[str, tuple[str, float]], show: Show) -> Finding:
-    shown = {
-        name: show(quantity, value) if quantity else plain("", value) for name, (quantity, value) in numbers.items()
-    }
-    return Finding(kind.code, kind.severity, kind.words.format(**shown), kind.settle, kind.source)
 
 
 def check_value(quantity: Quantity | str, value: float) -> Finding | None:
@@ -158,10 +48,10 @@ def check_value(quantity: Quantity | str, value: float) -> Finding | None:
     if not outside:
         return None
     if known.name == "fio2" and outside == "impossible" and _fraction_or_percent(np.asarray(value)):
-        return _finding(KINDS["fio2-fraction-or-percent"], {"fio2": ("fio2", value)}, plain)
+        return in_words(KINDS["fio2-fraction-or-percent"], {"fio2": ("fio2", value)}, plain)
     kind = KINDS[f"{known.name.replace('_', '-')}-{outside}"]
     low, high = ((known.name, limit) for limit in limits)
-    found = _finding(kind, {"value": (known.name, value), "low": low, "high": high}, plain)
+    found = in_words(kind, {"value": (known.name, value), "low": low, "high": high}, plain)
     hint = _unit_hint(known, value) if outside == "impossible" else ""
     return replace(found, sentence=found.sentence.replace("; it was not used", ""), settle=hint or found.settle)
 
@@ -265,30 +155,6 @@ def findings(
     if across_stays:
         hits["values-of-another-patient"] = Hit(_of_another_patient(snapshots.readings), {})
     return gathered(len(rows), hits | dict(extra or {}))
-
-
-def gathered(size: int, hits: Mapping[str, Hit]) -> Findings:
-    """Findings from masks: what is empty is left out, the rest in the order of the catalogue.
-
-    Parameters
-    ----------
-    size : int
-        Number of rows [1].
-    hits : mapping of str to Hit
-        Masks and numbers by code [canonical units].
-
-    Returns
-    -------
-    Findings
-        Rows and numbers by code.
-    """
-    found = {code: np.flatnonzero(hits[code].where) for code in KINDS if code in hits}
-    kept = {code: rows for code, rows in found.items() if len(rows)}
-    numbers = {
-        code: {name: (quantity, values[rows]) for name, (quantity, values) in hits[code].numbers.items()}
-        for code, rows in kept.items()
-    }
-    return Findings(size, kept, numbers)
 
 
 @quiet

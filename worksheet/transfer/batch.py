@@ -24,8 +24,9 @@ from signal import SIGTERM, default_int_handler, signal
 from threading import current_thread, main_thread
 from typing import BinaryIO
 
+from .batch_cells import BatchError, Header, Problem
 from .batch_files import reading, writing
-from .batch_read import BatchError, Header, Problem, header_of
+from .batch_read import header_of
 from .batch_rows import OUTPUT, TYPES, Derivation, derive_block, summary
 from .batch_split import Piece, pieces, regrouped
 

@@ -20,7 +20,7 @@ import pyarrow as pa
 import pyarrow.compute as pc
 from pyarrow import csv as arrow_csv
 
-from .batch_read import NUMBERS, BatchError, Problem
+from .batch_cells import NUMBERS, BatchError, Problem
 
 _COPIED = 1 << 20
 

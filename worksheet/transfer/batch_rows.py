@@ -17,13 +17,14 @@ from worksheet.oxygen import judgement, ledger, uncertainty
 from worksheet.oxygen.align import CARRIED, align
 from worksheet.oxygen.constants import DEFAULT
 from worksheet.oxygen.derive import derive
-from worksheet.oxygen.finding_rules import Hit
+from worksheet.oxygen.finding_case import Hit
 from worksheet.oxygen.ledger_table import UNITS
 from worksheet.oxygen.plausibility import findings, without_impossible
 from worksheet.oxygen.quantities import CATALOGUE, DERIVED, WITH_SD
 from worksheet.oxygen.readings import Bools, Derived, Flag, Floats, Ints, Site, Snapshots
 
-from .batch_read import Block, Header, Table, table_of
+from .batch_cells import Block, Header
+from .batch_read import Table, table_of
 
 STEPS = ("lung", "haemoglobin", "function", "flow")
 OUTPUT = (

@@ -11,7 +11,8 @@ import numpy as np
 
 from worksheet.oxygen.readings import Ints
 
-from .batch_read import Block, Header, cell_of, records_of
+from .batch_cells import Block, Header
+from .batch_read import cell_of, records_of
 
 PIECE = 3_000_000  # bytes: some 20,000 rows
 
