@@ -16,7 +16,7 @@ from django.shortcuts import redirect
 from django.urls import reverse
 from django_otp.plugins.otp_totp.models import TOTPDevice
 
-from .models import Membership
+from .models import Membership, User
 
 POLLS = {"live", "progress"}  # ids of the page parts that ask by themselves
 METHODS = ("GET", "HEAD", "POST", "OPTIONS")
@@ -95,7 +95,7 @@ def _second_factor_of(user: Any) -> tuple[bool, bool]:
     """Whether the person has a second factor, and whether the site or a unit of theirs asks for one; in one query."""
     device = TOTPDevice.objects.filter(user=OuterRef("pk"), confirmed=True)
     asked = Membership.objects.filter(user=OuterRef("pk"), unit__second_factor=True)
-    has_one, required = type(user).objects.filter(pk=user.pk).values_list(Exists(device), Exists(asked)).get()
+    has_one, required = User.objects.filter(pk=user.pk).values_list(Exists(device), Exists(asked)).get()
     return has_one, required or settings.SECOND_FACTOR_REQUIRED
 
 
