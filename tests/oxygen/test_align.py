@@ -153,6 +153,11 @@ def test_the_nearest_of_before_and_after_is_taken_and_the_earlier_of_two_equally
     assert snapshots(early | {"minute": -10}, late, {})["cardiac_output"][2] == 4.0
 
 
+def test_equally_near_is_judged_in_minutes_and_not_by_the_last_bit_of_the_time():
+    rows = [{"minute": 65, "site": NONE, "spo2": 0.91}, {"minute": 70}, {"minute": 75, "site": NONE, "spo2": 0.92}]
+    assert snapshots(*rows)["spo2"][1] == 0.91
+
+
 @pytest.mark.parametrize("name", PERSON)
 def test_facts_of_the_person_have_no_age_limit_and_reach_back(name):
     table = snapshots(

@@ -75,7 +75,8 @@ class Line:
     def nearest(self, valid: Bools, before: float, after: float) -> Ints:
         """Nearest valid position; of two equally near the earlier one."""
         old, new = self.within(self.last_position(valid), before), self.within(self.next_position(valid), after)
-        newer = (old < 0) | ((new >= 0) & (self.time[new] - self.time < self.time - self.time[old]))
+        nearer = self.time - self.time[old] - (self.time[new] - self.time) > _ROUNDING
+        newer = (old < 0) | ((new >= 0) & nearer)
         return np.where(newer, new, old)
 
     def nearest_known(self, valid: Bools) -> Ints:
