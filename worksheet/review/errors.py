@@ -2,12 +2,16 @@
 
 from __future__ import annotations
 
+import logging
+import secrets
 import sys
 
 from django.db import OperationalError
 from django.http import HttpRequest, HttpResponse
 from django.shortcuts import render
 from django.template.loader import render_to_string
+
+log = logging.getLogger(__name__)
 
 
 def csrf_failure(request: HttpRequest, reason: str = "") -> HttpResponse:
@@ -52,7 +56,11 @@ def failed(request: HttpRequest) -> HttpResponse:
     words = (
         "The program failed here. Nothing of this request was stored; what was stored before is untouched. Try again."
     )
-    return _bare("Something failed", words, 500)
+    number = secrets.token_hex(4)
+    log.error("failure %s", number, exc_info=True)
+    return _bare(
+        "Something failed", f"{words} If it fails again, tell whoever runs this program: failure {number}.", 500
+    )
 
 
 def _bare(title: str, words: str, status: int) -> HttpResponse:

@@ -16,5 +16,5 @@ def health(request: HttpRequest) -> HttpResponse:
         with connection.cursor() as cursor:
             cursor.execute("SELECT 1")
     except DatabaseError:
-        return HttpResponse("database does not answer", status=503, content_type="text/plain")
-    return HttpResponse("ok", content_type="text/plain")
+        return HttpResponse("database does not answer", status=503, content_type="text/plain; charset=utf-8")
+    return HttpResponse("ok", content_type="text/plain; charset=utf-8")

@@ -33,7 +33,7 @@ class JsonLines(logging.Formatter):
         if record.exc_info and record.exc_info[0] is not None:
             line["exception"] = record.exc_info[0].__name__
             line["where"] = _place(record.exc_info[2])
-        return json.dumps(line, ensure_ascii=False)
+        return json.dumps(line)  # ASCII: no letter of a client can end or colour a line
 
 
 def cleaned(text: str) -> str:
