@@ -134,7 +134,7 @@ def test_settings_that_must_stay():
 def test_no_regular_expression_can_be_made_slow(pattern):
     import time
 
-    begun = time.monotonic()
+    begun = time.process_time()
     for text in ("a" * 2000, "1" * 2000, "1," * 1000 + "x", " " * 2000 + "x", "/stay/" * 400, "([" * 1000):
         re.search(pattern, text)
-    assert time.monotonic() - begun < 2.0
+    assert time.process_time() - begun < 2.0
