@@ -499,3 +499,12 @@ def test_wrong_old_passwords_lock_as_wrong_logins_do(client, lead, settings):
 
 def test_a_fresh_site_has_no_account():
     assert not User.objects.exists()
+
+
+def test_every_limit_of_carrying_has_its_words():
+    from dataclasses import fields
+
+    from worksheet.oxygen.constants import CarryLimits
+    from worksheet.review.unit_settings import CARRY
+
+    assert set(CARRY) == {field.name for field in fields(CarryLimits)}

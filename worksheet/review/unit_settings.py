@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import re
-from dataclasses import fields
 from typing import Any
 
 from django import forms
@@ -37,7 +36,18 @@ CONSTANTS: dict[str, tuple[str, float, float, str]] = {
         "38 mmHg: Siggaard-Andersen & Gøthgen 1995",
     ),
 }
-CARRY = {field.name: field.default for field in fields(CarryLimits)}
+CARRY = {
+    "venous": "A venous sample is paired, either side",
+    "hb": "Haemoglobin is carried for",
+    "settings": "FiO2, device, PEEP and mean airway pressure are carried for",
+    "flow_before": "Flow may be older by",
+    "flow_after": "Flow may be later by",
+    "temperature": "Temperature is carried for",
+    "spo2": "SpO2 is paired, either side",
+    "vo2_before": "Measured VO2 may be older by",
+    "vo2_after": "Measured VO2 may be later by",
+    "dyshaemoglobins": "Dyshaemoglobins are carried for",
+}
 _SHIFTS = re.compile(r"^([01]\d|2[0-3]):[0-5]\d$")
 
 
@@ -66,17 +76,17 @@ class UnitForm(forms.ModelForm):  # type: ignore[type-arg]
         now = self.instance.constants_in_force()
         for name, (label, low, high, source) in CONSTANTS.items():
             self._number(f"constant_{name}", label, low, high, getattr(now, name), source)
-        for name in CARRY:
-            label = f"Carry {name.replace('_', ' ')} (h)"
-            self._number(f"carry_{name}", label, 0.0, 72.0, round(getattr(now.carry, name), 4), "common practice")
+        for name, words in CARRY.items():
+            self._number(
+                f"carry_{name}", f"{words} (h)", 0.0, 72.0, round(getattr(now.carry, name), 4), "common practice"
+            )
         self.fields["curve"].initial, self.fields["bsa_formula"].initial = now.curve, now.bsa_formula
         quantities = self.instance.uncertainties_in_force().quantities
         for quantity in measured():
             absolute, relative = quantities[quantity.name]
-            label, unit, source = f"{quantity.symbol}: SD", quantity.unit, quantity.sd_source
-            self._number(
-                f"sd_{quantity.name}", f"{label} ({unit.label or '1'})", 0.0, 1e4, absolute / unit.factor, source
-            )
+            label, unit, source = f"Uncertainty of {quantity.symbol}, 1 SD", quantity.unit, quantity.sd_source
+            shown = f"{label} ({unit.label})" if unit.label else label
+            self._number(f"sd_{quantity.name}", shown, 0.0, 1e4, absolute / unit.factor, source)
             self._number(f"rel_{quantity.name}", f"{label}, relative (%)", 0.0, 100.0, 100 * relative, source)
 
     def _number(self, name: str, label: str, low: float, high: float, value: float, source: str) -> None:
