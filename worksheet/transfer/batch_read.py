@@ -53,7 +53,10 @@ def header_of(line: bytes, taken: Sequence[str]) -> Header:
     text = line.removeprefix(b"\xef\xbb\xbf").rstrip(b"\r\n")
     if not text.strip():
         raise BatchError([Problem(1, "", "the file is empty: a header row with column names is needed")])
-    cells = next(csv.reader([text.decode("utf-8", "surrogateescape")]), [])
+    try:
+        cells = next(csv.reader([text.decode("utf-8", "surrogateescape")]), [])
+    except csv.Error:
+        raise BatchError([Problem(1, "", "this is no CSV file: the header row cannot be read as cells")]) from None
     names = tuple(cell.strip() for cell in cells)
     if not any(name in KNOWN for name in names):
         raise BatchError([Problem(1, "", _no_known_column(text.decode("utf-8", "replace"), names))])
@@ -110,7 +113,10 @@ def cell_of(record: bytes, place: int) -> bytes:
     if b'"' not in record:
         cells = record.split(b",", place + 1)
         return cells[place] if place < len(cells) else b""
-    row = next(csv.reader([record.decode("utf-8", "surrogateescape")], strict=False), [])
+    try:
+        row = next(csv.reader([record.decode("utf-8", "surrogateescape")], strict=False), [])
+    except csv.Error:  # told with its line where the cells are read
+        return b""
     return row[place].encode("utf-8", "surrogateescape") if place < len(row) else b""
 
 

@@ -11,7 +11,7 @@ from typing import Any
 
 from django.conf import settings
 from django.core.management import call_command
-from django.core.management.base import BaseCommand
+from django.core.management.base import BaseCommand, CommandError
 from django.utils import timezone
 
 from worksheet.ward import demo
@@ -28,6 +28,8 @@ class Command(BaseCommand):
         parser.add_argument("--no-serve", action="store_true", help="prepare everything, then stop")
 
     def handle(self, *args: Any, **options: Any) -> None:
+        if not 1 <= options["port"] <= 65535:
+            raise CommandError(f"{options['port']} is not a port: choose 1 to 65535.")
         Path(settings.DATA_DIR).mkdir(parents=True, exist_ok=True)
         call_command("migrate", verbosity=0, interactive=False)
         password, key = _kept_secrets(Path(settings.DATA_DIR) / "demo.json")
