@@ -508,3 +508,28 @@ def test_every_limit_of_carrying_has_its_words():
     from worksheet.review.unit_settings import CARRY
 
     assert set(CARRY) == {field.name for field in fields(CarryLimits)}
+
+
+def test_logins_outlive_a_change_of_the_key(client, lead, settings):
+    log_in(client)
+    settings.SECRET_KEY, settings.SECRET_KEY_FALLBACKS = "n" * 60, [settings.SECRET_KEY]
+    assert client.get("/account/").status_code == 200
+    settings.SECRET_KEY_FALLBACKS = []
+    assert client.get("/account/").status_code == 302
+
+
+def test_the_units_of_a_unit_are_shown_to_its_readers_unless_they_chose_their_own(client, lead, unit):
+    from worksheet.ward.display import Display
+
+    log_in(client)
+    form = client.get("/u/unit-7/settings/").context["form"]
+    values = {name: item.initial if item.initial is not None else "" for name, item in form.fields.items()}
+    values |= {"time_zone": "UTC", "paper": "a4", "unit_po2": "kPa", "unit_hb": "g/L"}
+    for box in ("decimal_comma", "second_factor"):
+        values.pop(box)
+    assert client.post("/u/unit-7/settings/", values).status_code == 302
+    unit.refresh_from_db()
+    assert unit.units == {"po2": "kPa", "hb": "g/L"}
+    assert Display.of(lead, unit).value("po2", 90.0, with_unit=True) == "12.0 kPa"
+    lead.preferences = {"units": {"po2": "mm[Hg]"}}
+    assert Display.of(lead, unit).value("po2", 90.0, with_unit=True) == "90 mmHg"

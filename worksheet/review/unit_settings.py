@@ -12,10 +12,12 @@ from django.http import HttpRequest, HttpResponse
 from django.shortcuts import redirect, render
 
 from worksheet.oxygen.constants import CarryLimits, Constants
-from worksheet.oxygen.quantities import measured
+from worksheet.oxygen.quantities import CATALOGUE, measured
 from worksheet.ward import audit
 from worksheet.ward.access import person, unit_or_404
 from worksheet.ward.models import Role, Unit
+
+from .preferences import choosable
 
 # Published or usual range of each constant that a site may choose; outside it the form refuses.
 CONSTANTS: dict[str, tuple[str, float, float, str]] = {
@@ -73,6 +75,12 @@ class UnitForm(forms.ModelForm):  # type: ignore[type-arg]
     def __init__(self, *args: Any, **kwargs: Any) -> None:
         super().__init__(*args, **kwargs)
         self.fields["shifts"].initial = ", ".join(self.instance.shift_starts)
+        for name in choosable():
+            quantity = CATALOGUE[name]
+            chosen = self.instance.units.get(name, quantity.unit.ucum)
+            kinds = [(unit.ucum, unit.label or unit.ucum) for unit in quantity.units]
+            self.fields[f"unit_{name}"] = forms.ChoiceField(label=f"{quantity.label} is shown in", choices=kinds)
+            self.fields[f"unit_{name}"].initial = chosen
         now = self.instance.constants_in_force()
         for name, (label, low, high, source) in CONSTANTS.items():
             self._number(f"constant_{name}", label, low, high, getattr(now, name), source)
@@ -94,6 +102,21 @@ class UnitForm(forms.ModelForm):  # type: ignore[type-arg]
         field.initial = float(f"{value:.6g}")
         self.fields[name] = field
 
+    def plain_fields(self) -> list[forms.BoundField]:
+        """What is not a number in a table."""
+        return [field for field in self if not field.name.startswith(("constant_", "carry_", "sd_", "rel_"))]
+
+    def groups(self) -> list[tuple[str, dict[str, Any]]]:
+        """The numbers as tables: title, and rows of a field with its relative partner where it has one."""
+        titles = (("constant_", "Constants"), ("carry_", "How long a value is carried"), ("sd_", "Uncertainties"))
+        made = []
+        for prefix, title in titles:
+            rows = [{"field": field} for field in self if field.name.startswith(prefix)]
+            if prefix == "sd_":
+                rows = [{**row, "relative": self["rel_" + row["field"].name[3:]]} for row in rows]
+            made.append((title, {"rows": rows, "relative": prefix == "sd_"}))
+        return made
+
     def clean_shifts(self) -> list[str]:
         """Times of handover, in order."""
         shifts = [text.strip() for text in self.cleaned_data["shifts"].split(",") if text.strip()]
@@ -106,6 +129,8 @@ class UnitForm(forms.ModelForm):  # type: ignore[type-arg]
         unit: Unit = super().save(commit=False)
         got, default = self.cleaned_data, Constants()
         unit.shift_starts = got["shifts"]
+        picked = {name: got[f"unit_{name}"] for name in choosable()}
+        unit.units = {name: ucum for name, ucum in picked.items() if ucum != CATALOGUE[name].unit.ucum}
         chosen = {name: got[f"constant_{name}"] for name in CONSTANTS} | {n: got[n] for n in ("curve", "bsa_formula")}
         unit.constants = {name: value for name, value in chosen.items() if value != getattr(default, name)}
         unit.carry = {n: got[f"carry_{n}"] for n in CARRY if abs(got[f"carry_{n}"] - getattr(CarryLimits(), n)) > 1e-3}
