@@ -153,6 +153,29 @@ def test_verify_audit_finds_content_that_was_changed_or_erased_without_telling()
         call_command("verify_audit")
 
 
+@pytest.mark.parametrize(
+    ("statement", "wrong"),
+    [("UPDATE ward_entry SET po2 = 55 WHERE id = %s", "is not what was recorded"),
+     ("UPDATE ward_entry SET time = '2026-03-02 06:00:00+00:00' WHERE id = %s", "is not what was recorded"),
+     ("DELETE FROM ward_entry WHERE id = %s", "is gone")],
+)  # fmt: skip
+def test_verify_audit_finds_an_entry_that_was_changed_past_the_program(stay, nurse, statement, wrong):
+    entry, _ = record.record(stay, nurse, slip())
+    second, _ = record.record(stay, nurse, slip("b", po2=70.0))
+    record.correct(second, nurse, slip("c", po2=71.0), "typed the wrong line")
+    call_command("verify_audit")
+    with connection.cursor() as cursor:
+        if connection.vendor == "sqlite":
+            cursor.execute("DROP TRIGGER ward_entry_no_update")
+            cursor.execute("DROP TRIGGER ward_entry_no_delete")
+        else:
+            cursor.execute("SET CONSTRAINTS ALL IMMEDIATE")  # no trigger may wait while others are switched off
+            cursor.execute("ALTER TABLE ward_entry DISABLE TRIGGER USER")
+        cursor.execute(statement, [entry.pk])
+    with pytest.raises(CommandError, match=f"entry {entry.pk} {wrong}"):
+        call_command("verify_audit")
+
+
 def test_events_written_before_their_content_had_a_digest_still_hold():
     old = AuditEvent(at=T0, actor="nurse", action="viewed", subject="K-1", detail={"b": 1, "a": [2]})
     old.hash = audit.digest(old)

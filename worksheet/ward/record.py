@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 import uuid
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from datetime import datetime
+from itertools import islice
 from typing import Any
 
 from django.db import IntegrityError, transaction
@@ -14,7 +15,7 @@ from worksheet.oxygen.quantities import CATALOGUE, MEASURED
 from worksheet.oxygen.readings import Device, Event, FlowMethod, Site
 
 from . import audit
-from .models import Entry, Stay, User
+from .models import AuditEvent, Entry, Stay, User
 
 
 class AlreadyReplaced(Exception):
@@ -131,6 +132,26 @@ def _replace(entry: Entry, user: User, new: NewEntry, reason: str, *, struck: bo
     except IntegrityError:
         raise AlreadyReplaced(Entry.objects.filter(replaces=entry).first()) from None
     return replacement
+
+
+def altered() -> Iterator[tuple[int, str]]:
+    """Entries that are not as the trail says they were recorded, corrected or struck out: number and what is wrong."""
+    told = AuditEvent.objects.filter(action__in=("recorded", "corrected", "struck out")).exclude(salt="").order_by("id")
+    events = told.values_list("detail", flat=True).iterator(chunk_size=500)
+    while some := {detail["entry"]: detail for detail in islice(events, 500) if "entry" in detail}:
+        entries = Entry.objects.in_bulk(some)
+        for number, detail in some.items():
+            if number not in entries:
+                yield number, "is gone"
+            elif not _same(described(entries[number]), detail.get("after", detail.get("values", {}))):
+                yield number, "is not what was recorded"
+
+
+def _same(now: Mapping[str, Any], told: Mapping[str, Any]) -> bool:
+    """Whether the values agree, and the moment, in whatever zone it was written."""
+    told = {"time": now["time"], "site": now["site"], **told}
+    moments = datetime.fromisoformat(now["time"]), datetime.fromisoformat(told["time"])
+    return moments[0] == moments[1] and {**now, "time": ""} == {**told, "time": ""}
 
 
 def described(entry: Entry) -> dict[str, Any]:
