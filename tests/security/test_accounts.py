@@ -536,3 +536,10 @@ def test_the_units_of_a_unit_are_shown_to_its_readers_unless_they_chose_their_ow
     assert Display.of(lead, unit).value("po2", 90.0, with_unit=True) == "12.0 kPa"
     lead.preferences = {"units": {"po2": "mm[Hg]"}}
     assert Display.of(lead, unit).value("po2", 90.0, with_unit=True) == "90 mmHg"
+
+
+def test_the_lead_finds_every_choice_of_the_unit_on_its_page(client, lead, unit):
+    log_in(client)
+    answer = client.get("/u/unit-7/settings/")
+    text = answer.content.decode()
+    assert [name for name in answer.context["form"].fields if f'name="{name}"' not in text] == []
