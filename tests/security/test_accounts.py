@@ -543,3 +543,15 @@ def test_the_lead_finds_every_choice_of_the_unit_on_its_page(client, lead, unit)
     answer = client.get("/u/unit-7/settings/")
     text = answer.content.decode()
     assert [name for name in answer.context["form"].fields if f'name="{name}"' not in text] == []
+
+
+def test_a_changed_unit_of_display_is_in_the_trail(client, lead, unit):
+    log_in(client)
+    form = client.get("/u/unit-7/settings/").context["form"]
+    values = {name: field.initial if field.initial is not None else "" for name, field in form.fields.items()}
+    values |= {"time_zone": "UTC", "paper": "a4"}
+    values = {name: value for name, value in values.items() if name not in {"decimal_comma", "second_factor"}}
+    where = next(name for name in form.fields if name.endswith("po2") and name.startswith("unit"))
+    other = next(code for code, _ in form.fields[where].choices if code != form.fields[where].initial)
+    assert client.post("/u/unit-7/settings/", values | {where: other}).status_code == 302
+    assert AuditEvent.objects.get(action="changed the unit").detail["changed"] == {"units": [{}, {"po2": other}]}

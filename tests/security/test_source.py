@@ -18,6 +18,7 @@ OWN_SQL = {
     "audit.py",
     "commit.py",
     "copies.py",
+    "forget.py",
     "health.py",
     "migrate_database.py",
     "0002_append_only.py",

@@ -177,6 +177,7 @@ def _stored(unit: Unit) -> dict[str, Any]:
         "paper",
         "decimal_comma",
         "second_factor",
+        "units",
         "shift_starts",
         "constants",
         "carry",

@@ -44,6 +44,7 @@ def forget(patient: Patient, actor: str, reason: str) -> Holdings:
     if not reason.strip():
         raise ValueError("A reason is needed.")
     with transaction.atomic():
+        _wait_for_writers()
         audit.one_at_a_time()
         found, events = holdings(patient), _events_about(patient)
         units = sorted({stay.unit.name for stay in patient.stays.select_related("unit")})
@@ -67,6 +68,13 @@ def _events_about(patient: Patient) -> list[AuditEvent]:
         for event in AuditEvent.objects.filter(unit__in=units).exclude(salt="").iterator(chunk_size=2000)
         if told.search(event.subject) or told.search(json.dumps(event.detail, ensure_ascii=False))
     ]
+
+
+def _wait_for_writers() -> None:
+    """Let whoever is writing finish first: they hold an entry and wait for the chain, this holds the chain."""
+    if connection.vendor == "postgresql":
+        with connection.cursor() as cursor:
+            cursor.execute(f"LOCK TABLE {', '.join(_TRIGGERS.TABLES)} IN ACCESS EXCLUSIVE MODE")
 
 
 def _without_triggers(patient: Patient, events: list[AuditEvent]) -> None:
