@@ -85,6 +85,19 @@ def test_cautions_name_their_sources():
     assert all(words and source for words, source in made.cautions)
 
 
+def test_carbon_monoxide_turns_the_caution_on_oxygen():
+    """Oxygen shortens the half-life of COHb (Weaver 2000: 74 min, SD 25): no word against it while COHb is raised."""
+    said = {}
+    for cohb in (0.02, 0.28, None):
+        made, _, _ = with_levers({}, {"cohb": cohb, "hb": 9.0})
+        said[cohb] = " ".join(words for words, _ in made.cautions)
+    assert "More inspired oxygen than needed does harm" in said[0.02]
+    assert said[None] == said[0.02]
+    assert "does harm" not in said[0.28]
+    assert "on 100 % its half-life is about 75 min" in said[0.28]
+    assert "Restrictive transfusion" in said[0.28]
+
+
 def test_no_target_no_levers():
     snapshots, found = derived(table({"hb": None}, {}))
     assert levers.levers(snapshots, found, 0, DEFAULT) is None

@@ -21,17 +21,24 @@ HB_LIMIT = 16.0  # g/dL, upper normal; common practice
 INDEX_LIMIT = 8.0  # L/min/m², about what an adult heart gives at most in sepsis; common practice
 G_PER_UNIT, UNIT_WEIGHT = 1.0, 70.0  # one red-cell unit raises Hb by about 1 g/dL in a 70 kg adult, common practice
 _LOWEST_PO2, HIGHEST_PO2 = 1.0, 700.0  # mmHg
+COHB_RAISED = 0.10  # more than smoking explains; common practice
 
+_TOO_MUCH_OXYGEN = (
+    "More inspired oxygen than needed does harm; a PaO2 above normal adds little content.",
+    "Chu 2018 (IOTA), Lancet 391:1693",
+)
+OXYGEN_AGAINST_CO = (
+    "Carbon monoxide: oxygen breathed drives it out, whatever PaO2 is; on 100 % its half-life is about 75 min (SD 25), "
+    "on air about 5 h. The rule against more oxygen than needed does not hold while COHb is raised.",
+    "Weaver 2000, Chest 117:801; on air Peterson & Stewart 1970, Arch Environ Health 21:165 (from memory)",
+)
 CAUTIONS: tuple[tuple[str, str], ...] = (
     (
         "Restrictive transfusion: for most stable adults in hospital a threshold of 7 g/dL, 7.5 in cardiac surgery, "
         "8 in orthopaedic surgery or known heart disease.",
         "Carson 2023, AABB guideline, JAMA 330:1892",
     ),
-    (
-        "More inspired oxygen than needed does harm; a PaO2 above normal adds little content.",
-        "Chu 2018 (IOTA), Lancet 391:1693",
-    ),
+    _TOO_MUCH_OXYGEN,
     ("Bleeding, flow and demand (fever, shivering, pain, work of breathing) come first.", "common practice"),
     ("Local protocols and licensed practice decide; this is arithmetic, not an order.", "common practice"),
 )
@@ -177,7 +184,26 @@ def levers(
     point = _point(snapshots, derived, row, name, constants)
     makers = (_haemoglobin, _lung, _function, *(() if name == "cao2" else (_flow,)))
     made = tuple(make(point, wanted, speech) for make in makers)
-    return Levers(name, point.supply(), wanted, why, tuple(one for one in made if one is not None))
+    cautions = cautions_for(float(snapshots["cohb"][row]))
+    return Levers(name, point.supply(), wanted, why, tuple(one for one in made if one is not None), cautions)
+
+
+def cautions_for(cohb: float) -> tuple[tuple[str, str], ...]:
+    """What to bear in mind: with much COHb the caution on inspired oxygen gives way to its use.
+
+    Parameters
+    ----------
+    cohb : float
+        Carboxyhaemoglobin, share of total, NaN where not known [0-1].
+
+    Returns
+    -------
+    tuple of (str, str)
+        Caution and its source [words].
+    """
+    if not cohb >= COHB_RAISED:
+        return CAUTIONS
+    return tuple(OXYGEN_AGAINST_CO if one is _TOO_MUCH_OXYGEN else one for one in CAUTIONS)
 
 
 def _target(derived: Derived, name: str, row: int, target: float | None, start_row: int | None) -> tuple[float, str]:

@@ -15,7 +15,7 @@ from django.shortcuts import render
 
 from worksheet.oxygen.constants import DEFAULT, Constants
 from worksheet.oxygen.finding_kinds import KINDS, Kind
-from worksheet.oxygen.levers import CAUTIONS
+from worksheet.oxygen.levers import CAUTIONS, OXYGEN_AGAINST_CO
 from worksheet.oxygen.measurement import DEFAULT as USUAL
 from worksheet.oxygen.measurement import Uncertainties
 from worksheet.oxygen.quantities import CATALOGUE, Quantity, derived, measured
@@ -84,7 +84,7 @@ def methods(request: HttpRequest, slug: str = "") -> HttpResponse:
         "unit": unit, "here": "methods", "derived": list(derived_lines(constants, display)),
         "measured": list(measured_lines(settings, display)), "constants": list(constants_in_force(constants, display)),
         "carry": list(carry_in_force(constants.carry)), "spreads": list(spread_lines(settings, display)),
-        "parts": parts(), "kinds": _kinds(), "cautions": CAUTIONS,
+        "parts": parts(), "kinds": _kinds(), "cautions": (*CAUTIONS, OXYGEN_AGAINST_CO),
     }  # fmt: skip
     return render(request, "review/methods.html", context)
 
