@@ -10,7 +10,8 @@ from hypothesis import strategies as st
 
 from worksheet.oxygen.align import align
 from worksheet.oxygen.constants import Constants
-from worksheet.oxygen.derive import CHAIN_INPUTS, chain_inputs, derive, oxygen_chain
+from worksheet.oxygen.curve import po2_tanh
+from worksheet.oxygen.derive import CHAIN_INPUTS, chain_inputs, derive, oxygen_chain, p50_is_venous
 from worksheet.oxygen.quantities import DERIVED, MEASURED, WITH_SD
 from worksheet.oxygen.readings import Device, Flag, Readings, Site
 
@@ -134,6 +135,23 @@ def test_p50_prefers_the_venous_pair_and_takes_no_calculated_saturation():
     assert value(both, "p50") == value(venous, "p50")
     assert value(both, "p50") == value(both, "p50", 1)  # the venous row's own
     assert math.isnan(value(derived(GAS | {"so2": np.nan, "so2_calculated": 0.9}), "p50"))
+
+
+def test_p50_follows_carbon_monoxide_by_haldanes_law():
+    """A pair on the curve of blood with 20 % COHb: P50 is where that very curve is at a half, not the pair's shift."""
+    cohb, methb = 0.20, 0.01
+    po2, half = (float(po2_tanh(s, cohb=cohb, methb=methb)) for s in (0.9, 0.5))
+    gas = GAS | {"po2": po2, "so2": 0.9, "cohb": cohb, "methb": methb}
+    assert value(derived(gas), "p50") == pytest.approx(half, rel=1e-6)
+    # with COHb unknown its shift stays in the displacement: near by, but another number
+    assert value(derived(gas | {"cohb": np.nan}), "p50") != pytest.approx(half, rel=0.01)
+
+
+def test_which_pair_p50_comes_from_is_known():
+    full = VENOUS | {"so2": 0.985, "po2": 130.0}
+    assert p50_is_venous(snapshots(GAS, VENOUS))[0]
+    assert not p50_is_venous(snapshots(GAS))[0]
+    assert not p50_is_venous(snapshots(GAS, full))[0]
 
 
 def test_no_p50_that_only_noise_on_the_flat_part_can_have_made():

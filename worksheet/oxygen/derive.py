@@ -25,7 +25,7 @@ from .pairs import measured_saturation, p50_of_pair
 from .quantities import DERIVED
 from .readings import Bools, Derived, Device, Flag, Floats, Ints, Site, Snapshots
 
-__all__ = ["CHAIN_INPUTS", "chain_inputs", "derive", "oxygen_chain"]
+__all__ = ["CHAIN_INPUTS", "chain_inputs", "derive", "oxygen_chain", "p50_is_venous"]
 
 LOW_FLOW = (Device.NASAL_CANNULA, Device.SIMPLE_MASK, Device.RESERVOIR_MASK)
 _BLOCK = 32_768  # rows that are worked on at a time: temporaries stay in the processor's cache
@@ -134,14 +134,40 @@ def _function(chain: Chain, own: Raw) -> dict[str, Floats]:
 
 def _p50(chain: Chain, measured: Floats) -> Floats:
     """P50 of the venous pair, which says more, else of the arterial one."""
-    raw = chain.raw
+    raw, own = chain.raw, (chain.raw["cohb"], chain.raw["methb"])
     if not chain.paired:
-        return p50_of_pair(raw["po2"], measured)
-    dys = (chain.venous_or_arterial(name) for name in ("cohb", "methb", "sulfhb"))
-    venous = p50_of_pair(raw["venous_po2"], measured_saturation(raw["venous_so2"], raw["venous_o2hb"], *dys))
+        return p50_of_pair(raw["po2"], measured, *own)
+    venous = _venous_p50(chain)
     rest = np.isnan(venous)
-    venous[rest] = p50_of_pair(raw["po2"][rest], measured[rest])
+    venous[rest] = p50_of_pair(raw["po2"][rest], measured[rest], *(share[rest] for share in own))
     return venous
+
+
+def _venous_p50(chain: Chain) -> Floats:
+    raw, dys = chain.raw, [chain.venous_or_arterial(name) for name in ("cohb", "methb", "sulfhb")]
+    measured = measured_saturation(raw["venous_so2"], raw["venous_o2hb"], *dys)
+    return p50_of_pair(raw["venous_po2"], measured, *dys[:2])
+
+
+@np.errstate(all="ignore")
+def p50_is_venous(snapshots: Snapshots, rows: Rows = slice(None), constants: Constants = DEFAULT) -> Bools:
+    """Whether the P50 of arterial entries comes from the paired venous sample.
+
+    Parameters
+    ----------
+    snapshots : Snapshots
+        From :func:`~worksheet.oxygen.align.align` [canonical units].
+    rows : slice or ndarray
+        Which rows [row number].
+    constants : Constants
+        Constants in force.
+
+    Returns
+    -------
+    ndarray of bool
+        True where the venous pair gives one; elsewhere it is the arterial pair's, if any [bool].
+    """
+    return np.asarray(~np.isnan(_venous_p50(Chain(chain_inputs(snapshots, constants, rows), constants))))
 
 
 def _arterial_flags(snapshots: Snapshots, chain: Chain, columns: Raw, rows: Rows) -> Ints:
@@ -181,7 +207,7 @@ def _venous(snapshots: Snapshots, constants: Constants, rows: Rows, table: Deriv
     dys = [chain.venous_or_arterial(name) for name in ("cohb", "methb", "sulfhb")]
     measured = measured_saturation(own["so2"], own["o2hb"], *dys)
     table["so2_from_po2"][rows] = curve_at_37(own["po2"], own["ph"], own["pco2"], dys[0], dys[1], constants)
-    table["p50"][rows] = p50_of_pair(own["po2"], measured)
+    table["p50"][rows] = p50_of_pair(own["po2"], measured, *dys[:2])
     content_there = np.where(central, chain.column("cvo2"), np.nan)
     table["cvo2"][rows] = content_there
     table.saturation[rows] = chain.venous.saturation

@@ -36,7 +36,7 @@ def measured_saturation(so2: Floats, o2hb: Floats, cohb: Floats, methb: Floats, 
 
 
 @np.errstate(all="ignore")
-def p50_of_pair(po2: Floats, so2: Floats) -> Floats:
+def p50_of_pair(po2: Floats, so2: Floats, cohb: Floats, methb: Floats) -> Floats:
     """In-vivo P50 that can be meant: on the flat part of the curve noise alone makes values that no blood has.
 
     Parameters
@@ -45,12 +45,14 @@ def p50_of_pair(po2: Floats, so2: Floats) -> Floats:
         Oxygen partial pressure at 37 °C [mmHg].
     so2 : ndarray
         Functional saturation by co-oximetry [0-1].
+    cohb, methb : ndarray
+        Carboxy- and methaemoglobin, share of total; what was not measured stays inside the displacement [0-1].
 
     Returns
     -------
     ndarray
         P50 [mmHg]; NaN outside a saturation of 0.30 to 0.97, and above 0.95 where it is not 12 to 50 mmHg.
     """
-    p50 = curve.p50_in_vivo(po2, so2)
+    p50 = curve.p50_in_vivo(po2, so2, 37.0, or_zero(cohb), or_zero(methb))
     noise = (so2 > curve.P50_FULL[1]) & ~((p50 >= P50_OF_BLOOD[0]) & (p50 <= P50_OF_BLOOD[1]))
     return np.where(noise, np.nan, p50)
