@@ -39,6 +39,20 @@ def page(client, stay, entry, name, **headers):
     return html.unescape(answer.content.decode())
 
 
+def test_p50_names_the_pair_that_it_was_solved_from(ward):
+    """Venous where there is a paired sample with a saturation, else arterial; and the numbers are that pair's."""
+    _unit, nurse, client, stay, entry = ward
+    venous = page(client, stay, entry, "p50")
+    assert "measured venous PO2 and saturation" in venous
+    assert "0.660" in venous
+    assert "central venous sample of" in venous
+    alone = add_gas(stay, nurse, 20, so2=0.93, po2=65.0)
+    arterial = page(client, stay, alone, "p50")
+    assert "measured PaO2 and sO2" in arterial
+    assert "0.930" in arterial
+    assert "venous sample of" not in arterial
+
+
 def test_every_derived_quantity_has_an_equation():
     assert set(EQUATIONS) == set(DERIVED)
 

@@ -10,7 +10,12 @@ import math
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
+import numpy as np
+
+from worksheet.oxygen.chain import chain_inputs, either
 from worksheet.oxygen.constants import Constants
+from worksheet.oxygen.derive import p50_is_venous
+from worksheet.oxygen.pairs import measured_saturation
 from worksheet.oxygen.quantities import CATALOGUE
 from worksheet.ward.display import Display
 from worksheet.ward.sheet import Sheet
@@ -23,7 +28,8 @@ TERMS: Mapping[str, tuple[str, int, str]] = {
     "cv_saturation": ("Sv", 3, ""), "venous_hb": ("Hb", 1, "g/dL"), "venous_po2": ("PvO2", 0, "mmHg"),
     "venous_pco2": ("PvCO2", 0, "mmHg"), "index": ("CI", 2, "L/min/m²"), "output": ("CO", 2, "L/min"),
     "pb": ("PB", 0, "mmHg"), "ph2o": ("PH2O", 0, "mmHg"), "r": ("R", 2, ""), "cco2": ("Cc'O2", 2, "mL/dL"),
-    "calculated": ("sO2 calculated", 3, ""), "measured": ("sO2", 3, ""), "fio2": ("FiO2", 2, ""),
+    "calculated": ("sO2 calculated", 3, ""), "measured": ("sO2", 3, ""), "venous_measured": ("SvO2", 3, ""),
+    "fio2": ("FiO2", 2, ""),
     "spo2": ("SpO2", 2, ""), "po2": ("PaO2", 0, "mmHg"), "pco2": ("PaCO2", 0, "mmHg"), "hb": ("Hb", 1, "g/dL"),
     "ph": ("pH", 2, ""), "mean_airway_pressure": ("Paw", 0, "cmH2O"), "respiratory_rate": ("RR", 0, "1/min"),
     "height": ("height", 0, "cm"), "weight": ("weight", 1, "kg"), "cao2": ("CaO2", 2, "mL/dL"),
@@ -112,8 +118,10 @@ EQUATIONS: Mapping[str, Equation] = {
     "gap_measured": Equation("gap = measured saturation − SpO2", "{measured} − {spo2}", ("measured", "spo2"),
                              lambda t: t["measured"] - t["spo2"]),
     "p50": Equation(
-        "S(P50) = 0.5 on the curve that goes through the measured PaO2 and sO2", "", ("po2", "measured"), None,
-        "The displacement of the curve is solved from the measured pair; only for sO2 of 30 to 97 %.",
+        "S(P50) = 0.5 on the curve that goes through the measured PaO2 and sO2", "",
+        ("po2", "measured", "cohb", "methb"), None,
+        "The displacement of the curve is solved from the measured pair; only for sO2 of 30 to 97 %. COHb enters by "
+        "Haldane's law. A paired venous sample, which says more, goes before the arterial one.",
     ),
     "extractable_o2": Equation(
         "extractable O2 = CaO2 − content of the same blood at PcO2 and body temperature", "",
@@ -130,6 +138,12 @@ EQUATIONS: Mapping[str, Equation] = {
     "bsa": Equation("BSA = √(height · weight / 3600)", "√({height} × {weight} / 3600)", ("height", "weight"),
                     lambda t: math.sqrt(t["height"] * t["weight"] / 3600)),
 }  # fmt: skip
+P50_VENOUS = Equation(
+    "S(P50) = 0.5 on the curve that goes through the measured venous PO2 and saturation", "",
+    ("venous_po2", "venous_measured", "cohb", "methb"), None,
+    "From the paired venous sample, which says more than the arterial one: there the curve is steep. The displacement "
+    "of the curve is solved from the pair; only for a saturation of 30 to 97 %. COHb enters by Haldane's law.",
+)  # fmt: skip
 DUBOIS = Equation("BSA = 0.007184 · weight^0.425 · height^0.725", "0.007184 × {weight}^0.425 × {height}^0.725",
                   ("height", "weight"), lambda t: 0.007184 * t["weight"] ** 0.425 * t["height"] ** 0.725)  # fmt: skip
 CURVE_SEVERINGHAUS = Equation(
@@ -146,6 +160,13 @@ def equation_of(name: str, constants: Constants) -> Equation:
     if name == "so2_from_po2" and constants.curve == "severinghaus":
         return CURVE_SEVERINGHAUS
     return EQUATIONS[name]
+
+
+def equation_at(name: str, sheet: Sheet, row: int) -> Equation:
+    """The equation that one row's number came from: P50 has two, by the pair that was used."""
+    if name == "p50" and bool(p50_is_venous(sheet.snapshots, np.array([row]), sheet.constants)[0]):
+        return P50_VENOUS
+    return equation_of(name, sheet.constants)
 
 
 def terms_of(equation: Equation, sheet: Sheet, row: int) -> dict[str, float]:
@@ -167,7 +188,8 @@ def _term(name: str, sheet: Sheet, row: int) -> float:
         "pb": lambda: _or(float(snap["barometric_pressure"][row]), constants.barometric_pressure),
         "cco2": lambda: _end_capillary(sheet, row),
         "calculated": lambda: _or(float(snap["so2_calculated"][row]), float(derived["so2_from_po2"][row])),
-        "measured": lambda: float(derived["gap_measured"][row] + snap["spo2"][row]),
+        "measured": lambda: _measured(sheet, row, ""),
+        "venous_measured": lambda: _measured(sheet, row, "venous_"),
         "venous_hb": lambda: _or(float(snap.venous["hb"][row]), float(snap["hb"][row])),
         "temperature": lambda: _or(float(snap["temperature"][row]), 37.0),
     }
@@ -176,6 +198,13 @@ def _term(name: str, sheet: Sheet, row: int) -> float:
     if name.startswith("venous_"):
         return float(snap.venous[name.removeprefix("venous_")][row])
     return float((derived if CATALOGUE[name].derived else snap)[name][row])
+
+
+def _measured(sheet: Sheet, row: int, sample: str) -> float:
+    """The functional saturation as measured in the sample; dyshaemoglobins not measured in it are the arterial ones."""
+    raw = chain_inputs(sheet.snapshots, sheet.constants, np.array([row]))
+    dys = (either(raw[sample + name], raw[name]) for name in ("cohb", "methb", "sulfhb"))
+    return float(measured_saturation(raw[f"{sample}so2"], raw[f"{sample}o2hb"], *dys)[0])
 
 
 def _or(value: float, other: float) -> float:

@@ -23,7 +23,7 @@ from worksheet.ward.sheet import Sheet, open_sheet
 from . import words
 from .basis import basis_words
 from .constants_table import CONSTANTS
-from .equations import TERMS, Equation, equation_of, numbers_put_in, terms_of
+from .equations import TERMS, Equation, equation_at, numbers_put_in, terms_of
 from .reach import entries_in_reach
 from .stays_here import find
 from .window import Window
@@ -32,6 +32,7 @@ _CONSTANT = {"k": "hufner", "alpha": "o2_solubility", "ph2o": "water_vapour", "r
              "end_capillary": "end_capillary_po2"}  # fmt: skip
 _MADE = {"saturation": "the saturation in use", "inactive": "the share of haemoglobin that cannot carry oxygen",
          "cco2": "content of end-capillary blood, by the curve at PAO2", "measured": "measured saturation"}  # fmt: skip
+_VENOUS_WORDS = {"venous_measured": "measured venous saturation"}
 _BY = {
     "index": "cardiac_index",
     "output": "cardiac_output",
@@ -117,7 +118,7 @@ class Explanation:
     @cached_property
     def equation(self) -> Equation:
         """The equation in force."""
-        return equation_of(self.name, self.sheet.constants)
+        return equation_at(self.name, self.sheet, self.row)
 
     @property
     def put_in(self) -> str:
@@ -154,9 +155,8 @@ class Explanation:
             origin = "; ".join(basis_words(int(self.sheet.derived.flags[self.row]), name)) or "of this sample"
             return Input(symbol, _MADE[name], plain, origin)
         if name.startswith("venous_"):
-            return Input(
-                symbol, f"venous {CATALOGUE[name.removeprefix('venous_')].label}", plain, self._venous_origin(name)
-            )
+            return Input(symbol, _VENOUS_WORDS.get(name) or f"venous {CATALOGUE[name.removeprefix('venous_')].label}",
+                         plain, self._venous_origin(name))  # fmt: skip
         known = _BY.get(name, name)
         if CATALOGUE[known].derived:
             shown = self.display.value(known, value, with_unit=True)
@@ -191,7 +191,8 @@ class Explanation:
         other = int(self.sheet.snapshots.venous_row[self.row])
         if other < 0:
             return "no paired sample"
-        own = math.isfinite(float(self.sheet.snapshots.venous[name.removeprefix("venous_")][self.row]))
+        column = name.removeprefix("venous_")
+        own = column == "measured" or math.isfinite(float(self.sheet.snapshots.venous[column][self.row]))
         site = words.SITE_WORDS[Site(int(self.sheet.readings.site[other]))]
         when = self.display.stamp(float(self.sheet.readings.time[other]))
         return f"{site} sample of {when}" if own else "of the arterial sample: the venous one has none"
