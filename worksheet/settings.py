@@ -93,7 +93,9 @@ TEMPLATES = [
 
 DATABASES = {
     "default": dj_database_url.parse(
-        env.text("WORKSHEET_DATABASE") or f"sqlite:///{DATA_DIR / 'worksheet.sqlite3'}", conn_max_age=60
+        env.text("WORKSHEET_DATABASE") or f"sqlite:///{DATA_DIR / 'worksheet.sqlite3'}",
+        conn_max_age=60,
+        conn_health_checks=True,  # a database server that was restarted costs nobody an error page
     )
 }
 if DATABASES["default"]["ENGINE"] == "django.db.backends.sqlite3":

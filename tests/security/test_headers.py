@@ -110,3 +110,38 @@ def test_what_people_type_is_shown_as_typed(inside, hostile):
     page = inside.get("/u/unit-7/stay/K-1/").content.decode()
     assert "<script>alert(1)" not in page
     assert "{{ 7|add:7 }}" in page or "add:7" not in hostile
+
+
+class Unreachable:
+    """A database that does not answer."""
+
+    def cursor(self):
+        from django.db import OperationalError
+
+        raise OperationalError("could not connect to 10.0.0.5, user worksheet")
+
+
+def test_the_health_page_says_that_the_database_does_not_answer_and_nothing_more(client, monkeypatch):
+    from worksheet.review import health
+
+    monkeypatch.setattr(health, "connection", Unreachable())
+    answer = client.get("/health/")
+    assert (answer.status_code, answer.content) == (503, b"database does not answer")
+
+
+@pytest.mark.parametrize("kind", ["OperationalError", "InterfaceError"])
+def test_a_page_without_a_database_is_a_sentence(inside, monkeypatch, kind):
+    from django import db
+
+    from worksheet.review import patient
+
+    def fail(*args):
+        raise getattr(db, kind)("could not connect to 10.0.0.5, user worksheet")
+
+    monkeypatch.setattr(patient, "unit_or_404", fail)
+    inside.raise_request_exception = False
+    answer = inside.get("/u/unit-7/stay/K-1/")
+    assert answer.status_code == 503
+    assert b"does not answer" in answer.content
+    assert b"10.0.0.5" not in answer.content
+    assert "no-store" in answer.headers["Cache-Control"]

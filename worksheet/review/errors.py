@@ -6,7 +6,7 @@ import logging
 import secrets
 import sys
 
-from django.db import OperationalError
+from django.db import InterfaceError, OperationalError
 from django.http import HttpRequest, HttpResponse
 from django.shortcuts import render
 from django.template.loader import render_to_string
@@ -47,7 +47,7 @@ def failed(request: HttpRequest) -> HttpResponse:
 
     The page is made without the request: who is logged in could only be asked of the database that just failed.
     """
-    if isinstance(sys.exc_info()[1], OperationalError):
+    if isinstance(sys.exc_info()[1], (OperationalError, InterfaceError)):
         words = (
             "The database does not answer, or its disk is full. Nothing of this request was stored; what was stored "
             "before is untouched. Go back: what you typed is still in the form. Tell whoever runs this program."
