@@ -8,6 +8,8 @@ import pytest
 from tests.oxygen.change_world import crowd, derived, table
 from worksheet.oxygen import judgement, ledger, verdict
 from worksheet.oxygen.constants import DEFAULT
+from worksheet.oxygen.finding_kinds import KINDS
+from worksheet.oxygen.plausibility import findings
 from worksheet.oxygen.readings import FlowMethod, Site
 
 COURSES = {
@@ -35,6 +37,27 @@ def test_each_step_is_named(step):
         assert "fell" in said.sentences[0]
         worst = min(said.evidence, key=lambda item: item.share)
         assert (worst.step, worst.real, worst.material) == (step, True, True)
+
+
+VENOUS_LOOKING = {"po2": 39.0, "so2": 0.71, "pco2": 47.0, "ph": 7.33, "cohb": None, "methb": None}
+
+
+@pytest.mark.parametrize(("rows", "where"), [((VENOUS_LOOKING, {}), "starts"), (({}, VENOUS_LOOKING), "ends")])
+def test_a_gas_in_doubt_does_not_carry_the_verdict_unsaid(rows, where):
+    snapshots, found = derived(table(*rows))
+    review, asked = verdict.review(snapshots, found, DEFAULT), findings(snapshots, found)
+    assert "arterial-looks-venous" in asked.rows
+    said = verdict.verdict(snapshots, found, review, 1, DEFAULT, asked=asked)
+    assert len(said.sentences) == 3
+    assert f"with which the comparison {where}, is in doubt (it looks venous)" in said.sentences[0]
+    assert said.sentences[1:] == verdict.verdict(snapshots, found, review, 1, DEFAULT).sentences
+    sound = derived(table({}, {"hb": 8.0}))
+    review, asked = verdict.review(*sound, DEFAULT), findings(*sound)
+    assert len(verdict.verdict(*sound, review, 1, DEFAULT, asked=asked).sentences) == 2
+
+
+def test_doubts_are_kinds_of_findings():
+    assert set(verdict.DOUBTS) <= set(KINDS)
 
 
 def test_words_of_a_bleed():

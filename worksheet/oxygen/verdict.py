@@ -8,6 +8,8 @@ import numpy as np
 
 from .change import Z95, RealChange, probability_of_fall, real_change
 from .constants import Constants
+from .doubts import DOUBTS, doubts
+from .finding_table import Findings
 from .judgement import MATERIAL, NONE, UNDETERMINED, Judgement, Review, judge, limiting_steps, review
 from .ledger_table import STEPS, UNITS, Ledger, Level, Note
 from .measurement import DEFAULT, Uncertainties
@@ -15,7 +17,18 @@ from .readings import Derived, Flag, Ints, Snapshots
 from .speech import PLAIN, Speech, age, joined
 from .use import Use, use_of
 
-__all__ = ["Evidence", "Judgement", "Review", "Use", "Verdict", "judge", "limiting_steps", "review", "verdict"]
+__all__ = [
+    "DOUBTS",
+    "Evidence",
+    "Judgement",
+    "Review",
+    "Use",
+    "Verdict",
+    "judge",
+    "limiting_steps",
+    "review",
+    "verdict",
+]
 
 QUANTITY = {Level.DO2I: "do2i", Level.DO2: "do2", Level.CAO2: "cao2"}
 _NAMES = {Level.DO2I: "Delivery", Level.DO2: "Delivery", Level.CAO2: "Arterial oxygen content"}
@@ -61,7 +74,7 @@ class Verdict:
     Attributes
     ----------
     sentences : tuple of str
-        One or two.
+        One or two; one more in front where a compared gas is itself asked about.
     limiting_step : str
         As in :func:`limiting_steps`.
     total : RealChange or None
@@ -118,6 +131,7 @@ def verdict(
     constants: Constants,
     settings: Uncertainties = DEFAULT,
     speech: Speech = PLAIN,
+    asked: Findings | None = None,
 ) -> Verdict:
     """The verdict on one stay of a review, in words.
 
@@ -135,6 +149,8 @@ def verdict(
         Standard uncertainties in force.
     speech : Speech
         How numbers and times are said.
+    asked : Findings, optional
+        Findings about the rows: a gas at either end whose blood or values are asked about is told first.
 
     Returns
     -------
@@ -152,7 +168,8 @@ def verdict(
     use = use_of(snapshots, derived, constants, settings, rows, speech)
     evidence = tuple(_evidence(snapshots, derived, found, at, name, speech) for name in STEPS)
     total = real_change(one.total[0], one.sd["total"][0])
-    sentences = (_supply(one, total, snapshots, speech), _cause(step, evidence, total, use))
+    doubted = doubts(snapshots, (int(one.start_row[0]), int(one.end_row[0])), asked, speech)
+    sentences = (*doubted, _supply(one, total, snapshots, speech), _cause(step, evidence, total, use))
     basis = _basis(snapshots, derived, one, use, speech)
     start = float(one.start_supply[0])
     return Verdict(sentences, step, total, UNITS[int(one.level[0])], evidence, use, basis, start)
@@ -289,7 +306,10 @@ def _basis(snapshots: Snapshots, derived: Derived, one: Ledger, use: Use, speech
             when = speech.clock(float(snapshots.readings.time[source]))
             said.append(f"{words} from {when} ({age(hours)} {'old' if hours > 0.0 else 'later'})")
     if np.isfinite(use.now) and int(derived.flags[last]) & Flag.CENTRAL_VENOUS:
-        said.append("central venous sample: extraction is an estimate")
+        said.append(
+            "central venous sample: extraction is an estimate; its ± leaves out how far central stands from mixed "
+            "venous blood"
+        )
     if use.lactate.mixed:
         said.append("arterial and venous lactate taken together")
     return tuple(dict.fromkeys(said))

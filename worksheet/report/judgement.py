@@ -63,7 +63,7 @@ class Judged:
             return None
         telling = Telling(self.order)
         return verdict.verdict(
-            sheet.snapshots, sheet.derived, self.review, pk, sheet.constants, sheet.settings, telling
+            sheet.snapshots, sheet.derived, self.review, pk, sheet.constants, sheet.settings, telling, sheet.findings
         )
 
     def sentences(self) -> list[str]:

@@ -367,8 +367,11 @@ class BedRow:
 
     @cached_property
     def findings(self) -> tuple[Finding, ...]:
-        """Findings about the rows of the window, newest row first, each kind once."""
-        recent = self.rows[self.sheet.readings.time[self.rows] >= self.window.since_hours][::-1]
+        """Findings about the rows of the window and of the gas compared with, newest row first, each kind once."""
+        time, since = self.sheet.readings.time, self.window.since_hours
+        if self.level:  # the gas that the comparison starts from may be older than the window
+            since = min(since, float(time[int(self.review.ledger.start_row[self.place])]))
+        recent = self.rows[time[self.rows] >= since][::-1]
         recent = recent[self.ward.remarkable[recent]]
         seen: dict[str, Finding] = {}
         for row in recent.tolist():
