@@ -186,3 +186,17 @@ def test_units_and_decimal_comma_of_the_reader_hold(ward):
     row = bed(page(client, unit), "W-01")
     assert "CaO2 mmol/L" in row
     assert re.search(r'class="now">\d,\d', row)
+
+
+def test_made_up_for_only_where_another_step_really_gained(ward):
+    unit, nurse, client = ward
+    helped, alone = make_stay(unit, 1), make_stay(unit, 2)
+    add_gas(helped, nurse, 10)
+    add_gas(helped, nurse, 0.5, hb=8.4, cardiac_output=7.0)
+    add_gas(alone, nurse, 10)
+    add_gas(alone, nurse, 0.5, hb=9.3)  # beyond its own noise, within that of delivery
+    text = page(client, unit, "?window=12")
+    assert "made up for" in bed(text, "W-01")
+    assert "made up for" not in bed(text, "W-02")
+    assert ">haemoglobin</strong>" in bed(text, "W-02")
+    assert "supply within noise" in bed(text, "W-02")

@@ -13,7 +13,7 @@ from django.utils.safestring import SafeString
 from worksheet.charts.bar import LedgerBar, ledger_bar
 from worksheet.oxygen.change import Z95
 from worksheet.oxygen.factors import RowFactors, row_factors
-from worksheet.oxygen.judgement import Review
+from worksheet.oxygen.judgement import MATERIAL, Review
 from worksheet.oxygen.ledger_table import STEPS, Level
 from worksheet.oxygen.next_measurement import NextMeasurement, next_measurement
 from worksheet.oxygen.plausibility import Finding
@@ -188,6 +188,19 @@ class BedRow:
     def worse(self) -> bool:
         """A fall beyond noise, or a step that failed while others made up for it."""
         return self.fell or self.step in STEPS
+
+    @property
+    def made_up(self) -> bool:
+        """Whether a step failed and another really gained, so that supply did not fall; as the verdict judges it."""
+        gains = (n for n in STEPS if self.part(n) >= MATERIAL and self._beyond(n))
+        return self.step in STEPS and not self.fell and any(gains)
+
+    @property
+    def beside_step(self) -> str:
+        """What became of supply where a step failed and supply did not fall."""
+        if self.step not in STEPS or self.fell:
+            return ""
+        return "made up for" if self.made_up else "supply rose" if self.beyond_noise else "supply within noise"
 
     @cached_property
     def step(self) -> str:
