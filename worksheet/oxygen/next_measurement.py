@@ -14,6 +14,7 @@ from .speech import PLAIN, Speech, age
 from .uncertainty import Budget, budget
 
 WORTH_SAYING = 0.10  # share of the variance; less is not worth a needle
+REPEAT = "a repeat, averaged with the first"  # the mean of two has 0.71 of the scatter of one
 LABELS = {
     "flow": "cardiac output", "hb": "haemoglobin", "co_oximetry": "co-oximetry", "po2": "arterial gas",
     "venous": "venous saturation",
@@ -141,7 +142,7 @@ def _candidates(
             result.append((name, removed, reason))
     result.append(_co_oximetry(rows, row, found, target, variance, settings))
     if "so2_venous" in variance:
-        result.append(("venous", 0.5 * variance["so2_venous"], "a repeat halves its scatter"))
+        result.append(("venous", 0.5 * variance["so2_venous"], REPEAT))
     return [one for i, one in enumerate(result) if one[0] not in {other[0] for other in result[:i]}]
 
 
@@ -155,7 +156,7 @@ def _fresh(
     now = random + systematic + growth
     if growth > 0.0:
         return variance * growth / now, f"carried, {age(hours)} old" if hours > 0.0 else f"read {age(hours)} later"
-    return variance * 0.5 * random / now, "a repeat halves its scatter"
+    return variance * 0.5 * random / now, REPEAT
 
 
 def _co_oximetry(
@@ -177,7 +178,7 @@ def _co_oximetry(
         reasons.append("saturation not measured in the sample")
     if not reasons:
         share = settings.random.get("so2", 1.0) ** 2
-        return "co_oximetry", 0.5 * share * variance.get("so2", 0.0), "a repeat halves its scatter"
+        return "co_oximetry", 0.5 * share * variance.get("so2", 0.0), REPEAT
     return "co_oximetry", removed, " and ".join(reasons)
 
 
@@ -194,7 +195,7 @@ def _words(found: NextMeasurement, derived: Derived, row: int, speech: Speech, s
         before, after = (speech.number(half, 0 if halves[0] - halves[1] >= 1.0 else 1) for half in halves)
         said = (
             f"Most telling next: {best.label} ({best.reason}); it would narrow the 95 % interval from ± {before} "
-            f"to ± {after} %."
+            f"to ± {after} % of its value."
         )
     if found.target == "cao2":
         said = f"{said} {_without_flow(found, value, speech, settings)}".strip()
