@@ -26,7 +26,7 @@ _WORDS = {
     "so2_calculated": "as the analyser calculated it",
     "spo2": "on the finger",
     "so2_from_po2": "by the curve, from this PO2, pH and PCO2",
-    "predicted_spo2": "what a two-wavelength finger probe would show with this blood",
+    "predicted_spo2": "what a two-wavelength probe's formula gives for this blood; it reads high where oxygen is low",
 }
 _ABOUT = (  # codes of findings that speak of saturations
     "gap-reading-false", "gap-dyshaemoglobin", "gap-send-co-oximetry", "cohb-hidden", "hypoxaemia-agreed",
