@@ -10,6 +10,8 @@ from django.urls import reverse
 from django.utils import timezone
 
 from tests.review.wards import add_gas, counted, fill, make_stay, make_unit, make_user
+from worksheet.oxygen.readings import Event
+from worksheet.ward import record
 from worksheet.ward.models import Entry, ReviewMark, Role
 
 pytestmark = pytest.mark.django_db
@@ -200,3 +202,17 @@ def test_made_up_for_only_where_another_step_really_gained(ward):
     assert "made up for" not in bed(text, "W-02")
     assert ">haemoglobin</strong>" in bed(text, "W-02")
     assert "supply within noise" in bed(text, "W-02")
+
+
+def test_a_transfusion_after_the_gas_is_told_and_haemoglobin_asked_for(ward):
+    unit, nurse, client = ward
+    before, after = make_stay(unit, 1), make_stay(unit, 2)
+    for stay, ago in ((before, 3), (after, 0.2)):
+        add_gas(stay, nurse, 10)
+        add_gas(stay, nurse, 0.5, hb=7.0)
+        record.record(stay, nurse, record.NewEntry(timezone.now() - timedelta(hours=ago), event=Event.TRANSFUSION,
+                                                   event_amount=1.0))  # fmt: skip
+    text = page(client, unit, "?window=12")
+    assert "After the gas" not in bed(text, "W-01")
+    assert re.search(r"After the gas</b> transfusion \d\d:\d\d: not in these numbers", bed(text, "W-02"))
+    assert re.search(r"Measure next</b> haemoglobin \(transfusion \d\d:\d\d, after the gas\)", bed(text, "W-02"))

@@ -26,6 +26,7 @@ from worksheet.ward.sheet import Sheet
 
 from . import words
 from .bar_svg import bar_svg
+from .since_gas import since_gas
 from .window import Window
 
 STALE_HOURS = 6.0  # a gas older than this is called stale on the page; common practice
@@ -393,6 +394,11 @@ class BedRow:
                     seen.setdefault(finding.code, finding)
         return tuple(sorted(seen.values(), key=lambda f: f.severity == "note"))
 
+    @cached_property
+    def since_gas(self) -> str:
+        """What happened after the newest gas that its numbers do not hold."""
+        return since_gas(self.sheet, self.rows, self.last, self.display)
+
     def show(self, name: str, value: float) -> str:
         """A number inside the words of a finding."""
         return self.display.value(name, value, with_unit=True) if math.isfinite(value) else "not measured"
@@ -424,6 +430,8 @@ class BedRow:
         """The same in a few words; what is missing altogether comes first."""
         if "haemoglobin" in self.missing:
             return "haemoglobin (none to carry)"
+        if self.since_gas:
+            return f"haemoglobin ({self.since_gas}, after the gas)"
         best = self.next.best if self.next else None
         if best is not None:
             return f"{best.label} ({best.reason})"
