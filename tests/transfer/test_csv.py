@@ -41,7 +41,7 @@ def test_one_audit_event_tells_of_a_batch(bring):
     bring(GOOD + "A-1,2026-02-11T06:40:00+01:00,arterial,7.2,40,90,6.9,97,50\n")
     event = AuditEvent.objects.get(action="imported")
     assert event.detail["rows"] == {"new": 2}
-    assert event.detail["entries"] == {"new": 2, "new stays": 1}
+    assert event.detail["entries"] == {"new": 2, "stays made": 1}
 
 
 def test_a_dry_run_stores_nothing(bring):
@@ -103,7 +103,7 @@ def test_bad_rows_name_row_field_and_reason_and_harm_no_other(bring, what):
     assert reason in bad[0][2]
     assert [f[1] for f in fates] == ["new", "invalid", "new"]
     assert Entry.objects.count() == 2
-    assert seen.entries["queued rows"] == 1
+    assert seen.entries["queued"] == 1
 
 
 def test_what_a_refused_row_said_waits_in_the_queue(bring, unit):

@@ -139,7 +139,7 @@ def test_the_command_never_prints_a_traceback(unit, tmp_path, capsys):
         call_command("import_entries", str(path), unit="u7", zone="Nowhere")
     report = tmp_path / "report.json"
     call_command("import_entries", str(path), unit="u7", report=report)
-    assert "1 rows (1 new); stored: 1 new, 1 new stays." in capsys.readouterr().out
+    assert "1 rows (1 new); stored: 1 new, 1 stays made." in capsys.readouterr().out
     assert json.loads(report.read_text())["fates"] == {"new": 1}
     call_command("import_entries", str(path), unit="u7", dry_run=True)
     assert "1 same" in capsys.readouterr().out

@@ -110,6 +110,8 @@ def _resources(documents: list[Any]) -> Iterator[tuple[str, dict[str, Any]]]:
 def _observation(reader: _Reader, number: int, item: dict[str, Any]) -> list[Row]:
     """The rows of one Observation: its own value, and one for each component."""
     base = _base(reader, number, item)
+    if isinstance(item.get("hasMember"), list) and not any(k.startswith(("value", "component")) for k in item):
+        return []  # a panel: its members are rows of their own
     parts = item.get("component")
     parts = [p for p in parts if isinstance(p, dict)] if isinstance(parts, list) else []
     rows = []

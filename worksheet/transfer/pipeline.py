@@ -64,7 +64,7 @@ def preview(
     """Every row's fate, without storing anything."""
     drafts = drafts_of(parsed.rows, observations=parsed.format in ("fhir", "hl7v2"))
     found = match(drafts, unit, stays.StayFinder(unit, options.create), overwrite=options.overwrite)
-    seen = Preview(unit.name, name, parsed, drafts, list(found.finder.made))
+    seen = Preview(unit.name, name, parsed, drafts, [s.reference for s in found.finder.made.values()])
     if with_findings:
         seen.findings = assess(drafts, unit)
     return seen, found
@@ -96,7 +96,7 @@ def _store(unit: Unit, user: User, seen: Preview, found: Matched, queue: bool) -
     changing = [d for d in found.drafts if d.replaces or d.after]
     changes = list(commit.correct(changing, user, kind))
     queued = waiting.put(seen.waiting(), unit, seen.source) if queue else 0
-    seen.entries = Counter({"new": new, "corrected": len(changes), "new stays": made, "queued rows": queued})
+    seen.entries = Counter({"new": new, "corrected": len(changes), "stays made": made, "queued": queued})
     seen.entries = Counter({k: v for k, v in seen.entries.items() if v})
     if seen.entries:
         audit.write(user.username, "imported", unit=unit.name, subject=seen.source[:120], format=kind,

@@ -172,7 +172,7 @@ class Preview:
     source: str
     parsed: Parsed
     drafts: list[DraftEntry]
-    new_stays: list[PatientRef] = field(default_factory=list)
+    new_stays: list[str] = field(default_factory=list)
     findings: Counter[str] = field(default_factory=Counter)
     stored: bool = False
     entries: Counter[str] = field(default_factory=Counter)
@@ -208,7 +208,7 @@ class Preview:
             "rows": len(self.rows),
             "fates": self.counts(),
             "entries": dict(self.entries),
-            "new_stays": [ref.identifier for ref in self.new_stays],
+            "new_stays": self.new_stays,
             "columns": self.parsed.columns,
             "questions": self.parsed.questions,
             "notes": self.parsed.notes,

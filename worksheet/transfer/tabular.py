@@ -123,7 +123,7 @@ class _TableReader:
         return [row for _, row in out]
 
     def _row(self, line: int, fate: Fate | None = None, reason: str = "") -> Row:
-        row = Row(self.table.place(line))
+        row = Row(self.table.place(line), quiet=fate is Fate.NOT_UNDERSTOOD)  # a footer is nobody's work
         if fate is not None:
             row.settle(fate, reason)
         return row
