@@ -1,5 +1,6 @@
 """Levers and what to measure next."""
 
+import re
 from dataclasses import replace
 
 import numpy as np
@@ -7,6 +8,7 @@ import pytest
 
 from tests.oxygen.change_world import crowd, derived, table
 from worksheet.oxygen import levers, uncertainty
+from worksheet.oxygen import next_measurement as next_measurement_module
 from worksheet.oxygen.constants import DEFAULT
 from worksheet.oxygen.derive import chain_inputs, oxygen_chain
 from worksheet.oxygen.next_measurement import next_measurement
@@ -133,6 +135,16 @@ def test_co_oximetry_is_the_most_telling_where_saturation_is_calculated():
     assert made.best.sd_after == pytest.approx(fresh, rel=0.1)
 
 
+def test_a_repeat_is_averaged_and_says_what_that_gives():
+    """Co-oximetry measured: only a repeat can help, and the mean of two has the random part of the variance halved."""
+    made, _, found = next_of({}, target="cao2")
+    one = next(one for one in made.candidates if one.reason == next_measurement_module.REPEAT)
+    assert one.removed <= 0.5
+    assert one.sd_after >= made.sd * np.sqrt(0.5)
+    assert "halves" not in made.words
+    assert found["cao2"][0] > 0.0
+
+
 def test_flow_dominates_delivery():
     made, _, _ = next_of({})
     assert made.target == "do2i"
@@ -144,6 +156,11 @@ def test_missing_flow_says_what_it_would_add():
     assert made.target == "cao2"
     assert "Flow is not known" in made.words
     assert "± 22 %" in made.words
+
+
+def test_percent_of_the_narrowing_is_said_to_be_of_the_value():
+    made, _, _ = next_of({"so2": None, "po2": 50.0, "cohb": None, "methb": None}, target="cao2")
+    assert re.search(r"from ± \d+ to ± \d+ % of its value\.", made.words)
 
 
 def test_removed_shares_are_shares():
