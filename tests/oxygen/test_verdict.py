@@ -207,3 +207,11 @@ def test_noise_alone_seldom_names_a_step():
     snapshots, found = derived(drawn_pairs(table({}, {}), 2000, np.random.default_rng(8)))
     words = judgement.limiting_steps(snapshots, found, ledger.consecutive(snapshots, found, DEFAULT))[1::2]
     assert np.mean(words == "none") >= 0.95
+
+
+@pytest.mark.parametrize(("doubling", "words"), [(12.0, "doubling in 12 h"), (150.0, "lactate is rising slowly")])
+def test_a_doubling_time_of_days_is_not_told_in_hours(doubling, words):
+    rows = [{"lactate": 2.2 * 2.0 ** (4.0 * n / doubling)} for n in range(8)]
+    said = verdict_of(*rows)
+    assert words in said.text
+    assert "in 150 h" not in said.text

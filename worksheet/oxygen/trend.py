@@ -21,7 +21,7 @@ from .change import Z95, real_change
 from .domain import Floats, floats
 from .measurement import DEFAULT, Uncertainties
 from .readings import Site
-from .slopes import FEWEST_FOR_RANKS, Line, least_squares, robust_slope
+from .slopes import FEWEST_FOR_RANKS, Line, least_squares, robust_slope, turn
 
 __all__ = ["LactateTrend", "lactate_trend", "robust_slope"]
 
@@ -62,6 +62,8 @@ class LactateTrend:
         Arterial and venous samples were taken together.
     after_peak : bool
         Only samples from the peak on were fitted.
+    turned : bool
+        The course turned, and only samples from the last turn on were fitted.
     """
 
     kind: str
@@ -79,6 +81,7 @@ class LactateTrend:
     method: str = ""
     mixed: bool = False
     after_peak: bool = False
+    turned: bool = False
 
     def fitted(self, times: ArrayLike) -> Floats:
         """The fitted course.
@@ -105,7 +108,9 @@ def lactate_trend(
     """The course of lactate in one stay.
 
     Two samples: their change only. Three or four: least squares on ln lactate with a floor on the variance. Five or
-    more: Theil-Sen on ln lactate. A half-time is given only where the interval of the slope excludes a level course.
+    more: Theil-Sen on ln lactate. Where the course turned, only what came after the last turn is fitted: a rise that
+    begins late would else be lost in the level course before. A half-time is given only where the interval of the slope
+    excludes a level course.
 
     Parameters
     ----------
@@ -170,6 +175,12 @@ def _course(time: Floats, value: Floats, found: LactateTrend, settings: Uncertai
         if len(value) < 3:
             return replace(found, kind="refused", reason="a peak inside, fewer than three samples after it")
         found = replace(_outline(time, value, settings), mixed=found.mixed, after_peak=True)
+    last = _last_turn(time, value, settings)
+    if last:
+        time, value = time[last:], value[last:]
+        found = replace(_outline(time, value, settings), mixed=found.mixed, after_peak=found.after_peak, turned=True)
+        if np.all(value < NORMAL):
+            return replace(found, kind="normal", reason="all below 2 mmol/L since the course turned")
     if found.hours < SHORTEST:
         return replace(found, kind="refused", reason="samples span less than 2 h")
     if np.max(np.diff(time)) > LONGEST_GAP:
@@ -195,6 +206,14 @@ def _fitted(time: Floats, value: Floats, found: LactateTrend, settings: Uncertai
 def _log_variance(value: Floats, settings: Uncertainties) -> float:
     """Variance of ln lactate from the measurement alone, ln(1 + CV^2) [1]."""
     return float(np.mean(np.log1p((settings.sd("lactate", value) / value) ** 2)))
+
+
+def _last_turn(time: Floats, value: Floats, settings: Uncertainties) -> int:
+    """Point from which on the course did not turn again; 0 where it never did."""
+    first = 0
+    while found := turn(time[first:], np.log(value[first:]), _log_variance(value[first:], settings)):
+        first += found
+    return first
 
 
 def _peak(value: Floats, settings: Uncertainties) -> int:

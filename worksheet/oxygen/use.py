@@ -14,6 +14,7 @@ from .speech import Speech
 from .trend import NORMAL, LactateTrend, lactate_trend
 from .uncertainty import sds_of_rows
 
+SLOW = 48.0  # h: a half-time or doubling time beyond is not told in hours; working value
 CRITICAL_EXTRACTION = 0.60  # Ronco 1993, JAMA 270:1724
 
 
@@ -93,6 +94,8 @@ def _extraction_words(extraction: RealChange | None, now: float, speech: Speech)
 def _lactate_words(lactate: LactateTrend, speech: Speech) -> str:
     now = speech.value("lactate", lactate.last, with_unit=True)
     if lactate.kind in ("rising", "falling"):
+        if lactate.time > SLOW:
+            return f"lactate is {lactate.kind} slowly ({now})"
         verb = "doubling" if lactate.kind == "rising" else "halving"
         span = f"{speech.number(lactate.time_low, 0)}–{speech.number(lactate.time_high, 0)}"
         return f"lactate is {lactate.kind} ({now}, {verb} in {speech.number(lactate.time, 0)} h, {span})"
