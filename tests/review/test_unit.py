@@ -216,3 +216,23 @@ def test_a_transfusion_after_the_gas_is_told_and_haemoglobin_asked_for(ward):
     assert "After the gas" not in bed(text, "W-01")
     assert re.search(r"After the gas</b> transfusion \d\d:\d\d: not in these numbers", bed(text, "W-02"))
     assert re.search(r"Measure next</b> haemoglobin \(transfusion \d\d:\d\d, after the gas\)", bed(text, "W-02"))
+
+
+def test_a_doubt_about_the_gas_compared_with_leads_though_it_lies_before_the_window(ward):
+    unit, nurse, client = ward
+    stay = make_stay(unit, 1)
+    add_gas(stay, nurse, 14, po2=39.0, so2=0.71, pco2=47.0, spo2=None)
+    add_gas(stay, nurse, 0.5, spo2=0.85)
+    text = bed(page(client, unit, "?window=12"), "W-01")
+    led = r"Contradictory</b> The gas compared with \(\d\d:\d\d\): Labelled arterial, but saturation 71.0 %"
+    assert re.search(led, text)
+
+
+def test_what_the_newest_gas_has_too_is_told_of_the_newest(ward):
+    unit, nurse, client = ward
+    stay = make_stay(unit, 1)
+    for ago, cohb in ((14, 0.14), (0.5, 0.28)):
+        add_gas(stay, nurse, ago, cohb=cohb)
+    text = bed(page(client, unit, "?window=12"), "W-01")
+    assert "COHb 28.0 %: SpO2, PaO2" in text
+    assert "The gas compared with" not in text

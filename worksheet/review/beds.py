@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
@@ -12,6 +12,7 @@ from django.utils.safestring import SafeString
 
 from worksheet.charts.bar import LedgerBar, ledger_bar
 from worksheet.oxygen.change import Z95
+from worksheet.oxygen.doubts import DOUBTS
 from worksheet.oxygen.factors import RowFactors, row_factors
 from worksheet.oxygen.judgement import MATERIAL, Review
 from worksheet.oxygen.ledger_table import STEPS, Level
@@ -381,18 +382,22 @@ class BedRow:
 
     @cached_property
     def findings(self) -> tuple[Finding, ...]:
-        """Findings about the rows of the window and of the gas compared with, newest row first, each kind once."""
-        time, since = self.sheet.readings.time, self.window.since_hours
+        """Findings about the window, newest row first, each kind once; doubts about the gas compared with lead."""
+        time, since, start = self.sheet.readings.time, self.window.since_hours, -1
         if self.level:  # the gas that the comparison starts from may be older than the window
-            since = min(since, float(time[int(self.review.ledger.start_row[self.place])]))
+            start = int(self.review.ledger.start_row[self.place])
+            since = min(since, float(time[start]))
         recent = self.rows[time[self.rows] >= since][::-1]
         recent = recent[self.ward.remarkable[recent]]
-        seen: dict[str, Finding] = {}
+        seen: dict[str, tuple[bool, bool, Finding]] = {}
         for row in recent.tolist():
             for finding in self.sheet.findings.of_row(row, self.show):
-                if finding.code not in _QUIET:
-                    seen.setdefault(finding.code, finding)
-        return tuple(sorted(seen.values(), key=lambda f: f.severity == "note"))
+                if finding.code not in _QUIET and finding.code not in seen:
+                    doubt = row == start and finding.code in DOUBTS
+                    lead = f"The gas compared with ({self.start_clock}): " if doubt else ""
+                    told = replace(finding, sentence=lead + finding.sentence)
+                    seen[finding.code] = finding.severity == "note", not doubt, told
+        return tuple(finding for *_, finding in sorted(seen.values(), key=lambda one: one[:2]))
 
     @cached_property
     def since_gas(self) -> str:
