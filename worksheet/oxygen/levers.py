@@ -28,8 +28,8 @@ _TOO_MUCH_OXYGEN = (
     "Chu 2018 (IOTA), Lancet 391:1693",
 )
 OXYGEN_AGAINST_CO = (
-    "Carbon monoxide: oxygen breathed drives it out, whatever PaO2 is; on 100 % its half-life is about 75 min (SD 25), "
-    "on air about 5 h. The rule against more oxygen than needed does not hold while COHb is raised.",
+    "Carbon monoxide: oxygen breathed drives it out, faster at a higher PaO2; on 100 % its half-life is about 75 min "
+    "(SD 25), on air about 5 h. The rule against more oxygen than needed does not hold while COHb is raised.",
     "Weaver 2000, Chest 117:801; on air Peterson & Stewart 1970, Arch Environ Health 21:165 (from memory)",
 )
 CAUTIONS: tuple[tuple[str, str], ...] = (
