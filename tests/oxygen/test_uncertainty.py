@@ -145,6 +145,21 @@ def test_products_agree_with_the_budget():
         np.testing.assert_allclose(sds[name][there], whole.sd(name)[there], rtol=1e-12)
 
 
+def test_a_measured_vo2_has_its_own_uncertainty():
+    """5 % of the measured value; for the index body surface adds to it (Mosteller: half of each relative SD)."""
+    snapshots, found = derived(table({"vo2_measured": 240.0}))
+    assert found["vo2"][0] == 240.0
+    sds = uncertainty.standard_uncertainties(snapshots, found, DEFAULT)
+    height, weight = (Uncertainties().quantities[name][1] for name in ("height", "weight"))
+    surface = 0.5 * np.hypot(height, weight)
+    assert sds["vo2"][0] == pytest.approx(0.05 * 240.0)
+    assert sds["vo2i"][0] == pytest.approx(found["vo2i"][0] * np.hypot(0.05, surface))
+    venous = {"time": 0.0, "site": Site.MIXED_VENOUS, "so2": 0.65, "po2": 35.0}
+    both, fick = derived(table({"vo2_measured": 240.0}, venous)), derived(table({}, venous))
+    by_fick = [uncertainty.standard_uncertainties(*made, DEFAULT)["vo2"][0] for made in (both, fick)]
+    assert by_fick[0] == by_fick[1]
+
+
 def test_methods_and_devices():
     snapshots, _ = derived(table({}, {"method": FlowMethod.PULSE_CONTOUR}, {"method": FlowMethod.UNKNOWN}))
     flow = uncertainty.input_sds(snapshots)["cardiac_output"] / snapshots["cardiac_output"]

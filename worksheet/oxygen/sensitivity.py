@@ -224,10 +224,28 @@ def flow_variance(rows: RowFactors, sds: Mapping[str, Floats], constants: Consta
     output, index : ndarray
         Relative variance [1].
     """
-    by_height, by_weight = BSA_EXPONENTS[constants.bsa_formula]
-    surface = (by_height * sds["height"]) ** 2 + (by_weight * sds["weight"]) ** 2
+    surface = surface_variance(sds, constants)
     measured = sds["flow"] ** 2
     return measured + np.where(rows.output_own, 0.0, surface), measured + np.where(rows.index_own, 0.0, surface)
+
+
+def surface_variance(sds: Mapping[str, Floats], constants: Constants) -> Floats:
+    """Relative variance of body surface.
+
+    Parameters
+    ----------
+    sds : mapping of str to ndarray
+        1 SD of ``height`` and ``weight``, relative [1].
+    constants : Constants
+        Of which ``bsa_formula``.
+
+    Returns
+    -------
+    ndarray
+        Relative variance [1].
+    """
+    by_height, by_weight = BSA_EXPONENTS[constants.bsa_formula]
+    return np.asarray((by_height * sds["height"]) ** 2 + (by_weight * sds["weight"]) ** 2)
 
 
 def _flow_partials(rows: RowFactors, constants: Constants) -> tuple[Partials, Partials]:
