@@ -1,6 +1,7 @@
 """What the charts say is what the numbers are."""
 
 import itertools
+import re
 from dataclasses import replace
 from datetime import UTC, datetime
 from zoneinfo import ZoneInfo
@@ -139,6 +140,24 @@ def test_ledger_adds_up_to_the_change_of_the_window(gases):
     assert len(last["total"].x) <= 32
     each = {s.name: np.array(s.y) for s in chart.series_of("interval")}
     assert sum(each[step.word] for step in (*STEPS, RESIDUAL)) == pytest.approx(each["total"])
+
+
+def test_the_ledgers_words_give_a_step_the_number_of_the_table():
+    """Function whole, its residual named as a part of it: four steps add up to the total."""
+    rows = [(build.START + 4 * n, 1, {"ph": 7.4, "pco2": 40.0, "po2": 90.0 - 15 * n, "hb": 10.0 - n, "cohb": 0.01,
+                                       "methb": 0.01, "so2": so2, "cardiac_output": 5.0 - 0.2 * n}, 0)
+            for n, so2 in enumerate((0.97, 0.90))]  # fmt: skip
+    sheet = build.sheet_of(build.table(rows))
+    changes = charts.changes_of(sheet, build.rows_of(sheet))
+    chart = charts.change_ledger(changes, build.DISPLAY)
+    told = dict(re.findall(r"(total|lung|haemoglobin|function|flow) ([−+]?\d+)", chart.summary))
+    whole = float(build.DISPLAY.unit("do2i").from_canonical(1.0)) * changes.steps["function"][0]
+    assert float(told["function"].replace("−", "-")) == pytest.approx(whole, abs=0.5)
+    assert "of function measured minus curve" in chart.summary
+    numbers = {name: float(text.replace("−", "-")) for name, text in told.items()}
+    assert sum(numbers[name] for name in ("lung", "haemoglobin", "function", "flow")) == pytest.approx(
+        numbers["total"], abs=2.0
+    )
 
 
 def test_ledger_of_content_where_flow_is_missing():

@@ -157,7 +157,13 @@ def _summary(running: Mapping[str, Floats], display: Display, quantity: str) -> 
     if not len(running["total"]):
         return f"{_NONE}."
     decimals, unit = display.decimals(quantity), display.unit(quantity).label
-    steps = (*STEPS, RESIDUAL)
-    parts = ", ".join(f"{s.word} {display.number(float(running[s.name][-1]), decimals, signed=True)}" for s in steps)
-    total = display.number(float(running["total"][-1]), decimals, signed=True)
-    return f"Window total {total} {unit}: {parts}."
+    last = {name: float(values[-1]) for name, values in running.items()}
+    rest = last["residual"]
+    last["function"] += rest  # the whole step, as every table tells it; the chart draws its two parts
+
+    def said(name: str) -> str:
+        return display.number(last[name], decimals, signed=True)
+
+    parts = ", ".join(f"{step.word} {said(step.name)}" for step in STEPS)
+    inside = f" (of function {RESIDUAL.word} {said('residual')})" if abs(rest) >= 0.5 * 10.0**-decimals else ""
+    return f"Window total {said('total')} {unit}: {parts}{inside}."
