@@ -31,6 +31,7 @@ ADDRESSES: dict[str, Address] = {
     "password_new": Address("everybody"),
     "unit_settings": Address("lead"),
     "trail": Address("lead"),
+    "unit_new": Address("admin"),
     "home": Address("person"),
     "preferences": Address("person"),
     "set_theme": Address("person", "POST"),

@@ -8,16 +8,18 @@ from typing import Any
 from django import forms
 from django.contrib import messages
 from django.core.exceptions import ValidationError
+from django.db import transaction
 from django.http import HttpRequest, HttpResponse
 from django.shortcuts import redirect, render
 
 from worksheet.oxygen.constants import CarryLimits, Constants
 from worksheet.oxygen.quantities import CATALOGUE, measured
-from worksheet.ward import audit
+from worksheet.ward import audit, beds
 from worksheet.ward.access import person, unit_or_404
 from worksheet.ward.models import Role, Unit
 
 from .preferences import choosable
+from .unit_new import bed_names
 
 # Published or usual range of each constant that a site may choose; outside it the form refuses.
 CONSTANTS: dict[str, tuple[str, float, float, str]] = {
@@ -56,6 +58,7 @@ _SHIFTS = re.compile(r"^([01]\d|2[0-3]):[0-5]\d$")
 class UnitForm(forms.ModelForm):  # type: ignore[type-arg]
     """The unit's choices; constants, limits and uncertainties each as one field."""
 
+    beds = forms.CharField(label="Beds, in the order of the round (1-12, or 1, 2, 3a)", max_length=600, required=False)
     shifts = forms.CharField(label="Handovers (like 07:00, 19:00)", max_length=80)
     curve = forms.ChoiceField(
         label="Dissociation curve",
@@ -74,6 +77,7 @@ class UnitForm(forms.ModelForm):  # type: ignore[type-arg]
 
     def __init__(self, *args: Any, **kwargs: Any) -> None:
         super().__init__(*args, **kwargs)
+        self.fields["beds"].initial = ", ".join(self.instance.beds.values_list("name", flat=True))
         self.fields["shifts"].initial = ", ".join(self.instance.shift_starts)
         for name in choosable():
             quantity = CATALOGUE[name]
@@ -117,6 +121,15 @@ class UnitForm(forms.ModelForm):  # type: ignore[type-arg]
             made.append((title, {"rows": rows, "relative": prefix == "sd_"}))
         return made
 
+    def clean_beds(self) -> list[str]:
+        """Names of beds; none with a patient in it may be missing."""
+        text = self.cleaned_data["beds"]
+        names = bed_names(text) if text.strip() else []
+        lost = beds.occupied(self.instance) - set(names)
+        if lost:
+            raise ValidationError(f"There is a patient in bed {', '.join(sorted(lost))}: move the patient first.")
+        return names
+
     def clean_shifts(self) -> list[str]:
         """Times of handover, in order."""
         shifts = [text.strip() for text in self.cleaned_data["shifts"].split(",") if text.strip()]
@@ -136,7 +149,9 @@ class UnitForm(forms.ModelForm):  # type: ignore[type-arg]
         unit.carry = {n: got[f"carry_{n}"] for n in CARRY if abs(got[f"carry_{n}"] - getattr(CarryLimits(), n)) > 1e-3}
         unit.uncertainties = self._uncertainties()
         if commit:
-            unit.save()
+            with transaction.atomic():
+                unit.save()
+                beds.set_beds(unit, got["beds"])
         return unit
 
     def _uncertainties(self) -> dict[str, list[float]]:
@@ -183,4 +198,5 @@ def _stored(unit: Unit) -> dict[str, Any]:
         "carry",
         "uncertainties",
     )
-    return {name: getattr(unit, name) for name in names}
+    stored = {name: getattr(unit, name) for name in names}
+    return stored | {"beds": list(unit.beds.values_list("name", flat=True))}

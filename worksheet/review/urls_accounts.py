@@ -2,7 +2,7 @@
 
 from django.urls import path
 
-from . import account, health, member_account, members, second_factor, session, trail, unit_settings
+from . import account, health, member_account, members, second_factor, session, trail, unit_new, unit_settings
 
 urlpatterns = [
     path("login/", account.LogIn.as_view(), name="login"),
@@ -16,6 +16,7 @@ urlpatterns = [
     path("account/second-factor/remove", second_factor.second_factor_remove, name="second_factor_remove"),
     path("invitation/<str:token>/", members.invitation, name="invitation"),
     path("password/<str:uidb64>/<str:token>/", member_account.NewPassword.as_view(), name="password_new"),
+    path("units/new/", unit_new.unit_new, name="unit_new"),
     path("u/<slug:slug>/members/", members.members, name="members"),
     path("u/<slug:slug>/members/<int:pk>/change", members.member_change, name="member_change"),
     path("u/<slug:slug>/members/<int:pk>/account", member_account.member_account, name="member_account"),
