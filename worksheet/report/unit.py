@@ -113,10 +113,11 @@ def _bar(bar: LedgerBar, words: str) -> dict[str, Any]:
 
 
 def _told(row: BedRow) -> list[str]:
-    told = [f"Missing: {', '.join(row.missing)}."] if row.missing else []
+    told = [f"After the gas: {row.since_gas}, not in these numbers."] if row.since_gas else []
+    told += [f"Missing: {', '.join(row.missing)}."] if row.missing else []
     told += [finding.sentence for finding in row.findings[:_MOST_FINDINGS]]
     more = len(row.findings) - _MOST_FINDINGS
-    return told + ([f"and {more} more findings."] if more > 0 else [])
+    return told + ([f"and {more} more finding{'' if more == 1 else 's'}."] if more > 0 else [])
 
 
 def window_since(unit: Unit, since: datetime, now: datetime) -> Window:
