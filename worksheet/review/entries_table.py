@@ -112,6 +112,7 @@ def _kind(site: int, event: int, about: About) -> str:
     if not event:
         return SITE_WORDS[Site(site)]
     amount, unit = about.get("event_amount"), _AMOUNT.get(Event(event), "")
+    unit = unit.replace("units", "unit") if amount == 1 else unit
     return f"{EVENT_WORDS[Event(event)]}{f', {amount:g} {unit}' if amount else ''}"
 
 

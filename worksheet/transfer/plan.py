@@ -136,7 +136,7 @@ def _contract_column(index: int, quantity: Quantity, texts: list[str], comma: bo
         return Column(
             index, quantity.name, "quantity", quantity, quantity.unit, why=f"values look like {likely}", sure=False
         )
-    return Column(index, quantity.name, "quantity", quantity, quantity.unit, why="column of the batch contract")
+    return Column(index, quantity.name, "quantity", quantity, quantity.unit, why="a column name of the command derive")
 
 
 def _mixed(quantity: Quantity, texts: list[str], comma: bool | None) -> bool:
