@@ -77,6 +77,25 @@ def test_saturations_that_disagree_are_said_in_words(ward):
     assert "MetHb" in part
 
 
+@pytest.mark.parametrize(
+    ("blood", "words"),
+    [
+        ({"methb": 0.22, "so2": 0.95}, r"about 9 points down, to about 86 %, while 73 % of"),
+        ({"cohb": 0.28, "so2": 0.97}, r"about 3 points down, to about 94 %, while 69 % of"),
+        ({"so2": 0.883, "po2": 56.0, "spo2": 0.87}, None),
+    ],
+)
+def test_a_probes_prediction_only_where_there_are_dyshaemoglobins(ward, blood, words):
+    """Without them its formula just reads high: 93 % for blood of 88 %."""
+    unit, nurse, client = ward
+    stay = make_stay(unit, 1)
+    add_gas(stay, nurse, 0.5, **blood)
+    text = page(client, stay)
+    part = text[text.index("Saturations reconciled") : text.index("What to measure next")]
+    assert ("two-wavelength" in part) == (words is not None)
+    assert words is None or re.search(words, part)
+
+
 def test_carried_values_are_marked_with_their_age(ward):
     unit, nurse, client = ward
     stay = make_stay(unit, 1)

@@ -9,6 +9,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from worksheet.oxygen.change import Z95
+from worksheet.oxygen.oximetry import dyshaemoglobin_effect
 from worksheet.oxygen.plausibility import Finding
 from worksheet.oxygen.quantities import CATALOGUE
 from worksheet.oxygen.readings import Flag, Ints
@@ -16,7 +17,7 @@ from worksheet.ward.display import Display, age_words
 from worksheet.ward.sheet import Sheet
 
 _MEASURED = ("so2", "o2hb", "cohb", "methb", "sulfhb", "so2_calculated", "spo2")
-_DERIVED = ("so2_from_po2", "predicted_spo2")
+COHB_CLEAN, METHB_CLEAN = 0.05, 0.03  # co-oximetry counts as clean below, as for the findings
 _WORDS = {
     "so2": "measured in the sample, of haemoglobin that can carry oxygen",
     "o2hb": "measured in the sample, of all haemoglobin",
@@ -26,7 +27,6 @@ _WORDS = {
     "so2_calculated": "as the analyser calculated it",
     "spo2": "on the finger",
     "so2_from_po2": "by the curve, from this PO2, pH and PCO2",
-    "predicted_spo2": "what a two-wavelength probe's formula gives for this blood; it reads high where oxygen is low",
 }
 _ABOUT = (  # codes of findings that speak of saturations
     "gap-reading-false", "gap-dyshaemoglobin", "gap-send-co-oximetry", "cohb-hidden", "hypoxaemia-agreed",
@@ -65,7 +65,8 @@ def reconcile(sheet: Sheet, rows: Ints, display: Display) -> Reconciled | None:
 
     found = tuple(f for f in sheet.findings.of_row(row, show) if f.code in _ABOUT)
     lines = tuple(_lines(sheet, row, display))
-    sentences = (*_compared(sheet, row, display, bool(found)), _used(sheet, row, display))
+    compared = _compared(sheet, row, display, bool(found))
+    sentences = (*compared, _on_a_finger(sheet, row, display), _used(sheet, row, display))
     return Reconciled(display.stamp(float(sheet.readings.time[row])), lines, tuple(filter(None, sentences)), found)
 
 
@@ -79,12 +80,30 @@ def _newest(sheet: Sheet, rows: Ints) -> int:
 
 
 def _lines(sheet: Sheet, row: int, display: Display) -> Iterator[Saturation]:
-    for name in (*_MEASURED, *_DERIVED):
+    for name in (*_MEASURED, "so2_from_po2"):
         table = sheet.derived if CATALOGUE[name].derived else sheet.snapshots
         value = float(table[name][row])
         if math.isfinite(value):
             shown = display.value(name, value, with_unit=True)
             yield Saturation(CATALOGUE[name].symbol, shown, _WORDS[name], _origin(sheet, name, row))
+
+
+def _on_a_finger(sheet: Sheet, row: int, display: Display) -> str:
+    """How far dyshaemoglobins move a reading on the finger, beside what haemoglobin carries; empty without them.
+
+    Their effect alone: without dyshaemoglobins the probe's formula reads high, and that cancels.
+    """
+    snap, saturation = sheet.snapshots, float(sheet.derived.saturation[row])
+    cohb, methb = (float(snap[name][row]) for name in ("cohb", "methb"))
+    effect = float(dyshaemoglobin_effect(saturation, cohb, methb))
+    if not (cohb >= COHB_CLEAN or methb >= METHB_CLEAN) or not math.isfinite(effect):
+        return ""
+    carries = saturation * (1 - float(sheet.derived.inactive[row]))
+    moved, shown, held = (display.number(100 * x, 0) for x in (abs(effect), min(saturation + effect, 1.0), carries))
+    return (
+        f"These dyshaemoglobins alone move a two-wavelength finger probe about {moved} points "
+        f"{'down' if effect < 0 else 'up'}, to about {shown} %, while {held} % of haemoglobin carries oxygen."
+    )
 
 
 def _origin(sheet: Sheet, name: str, row: int) -> str:
