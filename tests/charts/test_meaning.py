@@ -15,7 +15,9 @@ from worksheet.charts.bar import ledger_bar
 from worksheet.charts.maps import path_marks
 from worksheet.charts.scales import Elapsed, WallClock, round_step
 from worksheet.charts.steps import RESIDUAL, STEPS
+from worksheet.charts.words import lactate_words
 from worksheet.oxygen.readings import Event, Site
+from worksheet.oxygen.trend import lactate_trend
 from worksheet.ward.display import Display
 
 
@@ -266,3 +268,10 @@ def test_quantities_on_one_axis_share_its_unit(sheet):
         assert min(by_name[name].y) > 50
     plain = {s.name: s for s in build.strip(sheet).series}
     assert by_name["P/F"].y == plain["P/F"].y
+
+
+def test_a_lactate_that_doubles_in_days_is_told_without_hours():
+    hours = np.arange(0.0, 28.0, 4.0)
+    slow, fast = (lactate_trend(hours, 2.2 * 2.0 ** (hours / doubling)) for doubling in (150.0, 12.0))
+    assert lactate_words(slow, build.DISPLAY) == "rising slowly"
+    assert lactate_words(fast, build.DISPLAY).startswith("doubling in 12 h")

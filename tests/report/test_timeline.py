@@ -16,6 +16,7 @@ from PIL import Image
 
 from tests.report import world
 from worksheet.oxygen.readings import Event, Site
+from worksheet.report.judgement import Judged
 from worksheet.report.printing import TEMPLATES, cleaned
 from worksheet.report.timeline import timeline, timeline_pdf
 from worksheet.report.typeset import compile_document
@@ -396,3 +397,26 @@ class TestDeidentified:
         text = flat(words_of(timeline_pdf(world.order(stay, deidentify=True)), pdftotext))
         assert "Hb 9.2 g/dL → 9.1 g/dL" in text
         assert "withheld" in text
+
+
+def test_a_step_is_judged_with_the_share_that_this_was_concluded_from(stay):
+    judged = Judged(world.order(stay))
+    by_step = {item.step: item for item in judged.verdict.evidence}
+    rows = {row[0]: row for row in judged.ledger_table()["rows"] if isinstance(row[0], str)}
+    for step in ("lung", "haemoglobin", "function"):
+        told = re.fullmatch(r"(no )?loss beyond noise(, below 5 %)? \(([±−+]?\d+) ± (\d+) %\)", rows[step][3])
+        assert told, rows[step][3]
+        assert float(told[3].replace("−", "-").replace("±", "")) == pytest.approx(100 * by_step[step].share, abs=0.5)
+        assert (told[1] is None) == by_step[step].real
+
+
+def test_a_gas_in_doubt_is_told_before_the_verdict():
+    stay = world.make_stay("T-140")
+    venous = {k: v for k, v in world.gas(0, 2).items() if k not in ("spo2", "o2hb")}
+    looks = venous | {"po2": 39.0, "so2": 0.71, "pco2": 47.0, "ph": 7.33}
+    record.record(stay, world.nurse(), record.NewEntry(world.START, Site.ARTERIAL, looks))
+    later = world.START + timedelta(hours=4)
+    record.record(stay, world.nurse(), record.NewEntry(later, Site.ARTERIAL, world.gas(1, 2)))
+    said = Judged(world.order(stay)).sentences()
+    assert len(said) == 3
+    assert "with which the comparison starts, is in doubt (it looks venous" in said[0]

@@ -6,6 +6,7 @@ import numpy as np
 
 from worksheet.oxygen.readings import Floats, Ints, Site
 from worksheet.oxygen.trend import LactateTrend, lactate_trend
+from worksheet.oxygen.use import SLOW
 from worksheet.ward.display import Display
 from worksheet.ward.sheet import Sheet
 
@@ -51,6 +52,8 @@ def lactate_course(sheet: Sheet, rows: Ints) -> LactateTrend:
 
 def lactate_words(found: LactateTrend, display: Display) -> str:
     """The course in a few words: ``doubling in 5 h (3–11)``, or why there is nothing to say."""
+    if found.kind in ("falling", "rising") and found.time > SLOW:
+        return f"{found.kind} slowly"
     if found.kind in ("falling", "rising"):
         verb = "halving" if found.kind == "falling" else "doubling"
         low, high = (display.number(t, 0 if t >= 9.5 else 1) for t in (found.time_low, found.time_high))

@@ -17,7 +17,7 @@ from worksheet.oxygen.finding_kinds import Severity
 from worksheet.oxygen.ledger_table import STEPS, Level
 from worksheet.oxygen.plausibility import Finding
 from worksheet.oxygen.readings import Floats
-from worksheet.ward.display import MISSING
+from worksheet.ward.display import MISSING, Display
 
 from .order import Order
 
@@ -96,7 +96,7 @@ class Judged:
             item = by_step[step]
             change = self._change(name, found.step(step), found.sd[step])
             known = step != "flow" or name != "cao2"
-            yield [step, change, f"{share} %", _judged(item), item.words] if known else [
+            yield [step, change, f"{share} %", _judged(item, display), item.words] if known else [
                 step, MISSING, MISSING, "not known", item.words]  # fmt: skip
         change = self._change(name, found.residual, found.sd["residual"])
         yield [f"in function: {RESIDUAL.word}", change, "", "", "measured saturation beyond the curve"]
@@ -150,8 +150,12 @@ class Judged:
         return ends[0] if len(ends) == 1 else f"{ends[0]} to\n{ends[-1]}\n({len(ends)} entries, the last told)"
 
 
-def _judged(item: verdict.Evidence) -> str:
-    """Whether a step lost supply beyond noise, and whether that matters."""
+def _judged(item: verdict.Evidence, display: Display) -> str:
+    """Whether a step lost supply beyond noise, whether that matters, and the share that this was concluded from."""
+    if not np.isfinite(item.share):
+        return "not known"
+    said = "no loss beyond noise"
     if item.real:
-        return "loss beyond noise" + ("" if item.material else ", below 5 %")
-    return "not known" if not np.isfinite(item.share) else "no loss beyond noise"
+        said = "loss beyond noise" + ("" if item.material else ", below 5 %")
+    half = display.number(100 * Z95 * item.sd_share, 0)
+    return f"{said} ({display.number(100 * item.share, 0, signed=True)} ± {half} %)"
