@@ -236,3 +236,16 @@ def test_what_the_newest_gas_has_too_is_told_of_the_newest(ward):
     text = bed(page(client, unit, "?window=12"), "W-01")
     assert "COHb 28.0 %: SpO2, PaO2" in text
     assert "The gas compared with" not in text
+
+
+def test_a_value_that_is_not_of_the_newest_gas_says_when_it_was_and_another_day_is_named(ward):
+    unit, nurse, client = ward
+    bare, full = make_stay(unit, 1), make_stay(unit, 2)
+    for stay in (bare, full):
+        add_gas(stay, nurse, 47)
+        add_gas(stay, nurse, 26, hb=8.0)
+        add_gas(stay, nurse, 0.5, hb=None if stay is bare else 6.0)
+    text = page(client, unit, "?window=48")
+    assert re.search(r'<strong class="ask">of \d\d \w{3} \d\d:\d\d</strong>', bed(text, "W-01"))
+    assert '<strong class="ask">of ' not in bed(text, "W-02")
+    assert re.search(r"since \d\d \w{3} \d\d:\d\d<", bed(text, "W-02"))

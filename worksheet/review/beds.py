@@ -271,7 +271,18 @@ class BedRow:
     @property
     def start_clock(self) -> str:
         """When the first gas of the comparison was drawn."""
-        return self.display.clock(float(self.sheet.readings.time[int(self.review.ledger.start_row[self.place])]))
+        return self._clock(int(self.review.ledger.start_row[self.place]))
+
+    @property
+    def now_clock(self) -> str:
+        """When the gas of the value was drawn, where that is not the newest gas; else empty."""
+        row = self._end_row()
+        return "" if row in (self.last, -1) else self._clock(row)
+
+    def _clock(self, row: int) -> str:
+        """A row's time of day, with the day where that is not the day on which the window ends."""
+        when, until = (self.display.local(m) for m in (float(self.sheet.readings.time[row]), self.window.until))
+        return f"{when:%H:%M}" if when.date() == until.date() else f"{when:%d %b %H:%M}"
 
     @property
     def change_number(self) -> str:
