@@ -45,8 +45,8 @@ def patient(request: HttpRequest, slug: str, ref: str) -> HttpResponse:
         "charts": draw(story), **neighbours(line, stay), "history": history, "headings": headings(display),
         "lines": entry_lines(sheet, stay, rows, display, about, history, story.span()),
         "may_record": may_record(user, stay), "day": day_of(stay, window.until_hours),
-        "free_from": f"{display.local(window.since):%Y-%m-%dT%H:%M}",
-        "free_to": f"{display.local(window.until):%Y-%m-%dT%H:%M}",
+        "free_from": f"{display.local(window.since):%Y-%m-%d %H:%M}",
+        "free_to": f"{display.local(window.until):%Y-%m-%d %H:%M}",
         "change_base": reverse("entry_correct", args=[slug, stay.reference, 0]).removesuffix("0/correct"),
         "zone": f"{display.local(window.until):%Z}",
     }  # fmt: skip
