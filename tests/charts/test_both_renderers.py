@@ -16,6 +16,7 @@ from worksheet.charts import plotly as page_renderer
 from worksheet.charts import table
 from worksheet.charts.printed import printed
 from worksheet.charts.steps import DARK, LIGHT, recolouring
+from worksheet.oxygen.readings import Event, Site
 
 CASES = {
     "full": build.readings(),
@@ -186,3 +187,14 @@ def test_colours_keep_contrast_with_their_background():
         for role in ("lung", "haemoglobin", "function", "flow", "use", "residual", "ink", "soft", "contour"):
             pair = sorted((luminance(theme[role]), luminance(theme["paper"])), reverse=True)
             assert (pair[0] + 0.05) / (pair[1] + 0.05) >= 3, role
+
+
+def test_the_time_axis_lies_under_the_last_panel_even_where_that_is_empty():
+    """Plotly knows no axis without a line on it: anchored there, the times went under the first panel."""
+    got = build.table([(build.START + 2 * n, Site.ARTERIAL, {"ph": 7.4, "pco2": 40.0, "po2": 90.0, "hb": 10.0},
+                        Event.NONE) for n in range(3)])  # fmt: skip
+    without, full = (build.strip(build.sheet_of(r)) for r in (got, build.readings()))
+    bare, axis = (page_renderer.figure(chart)["layout"]["xaxis"] for chart in (without, full))
+    assert bare["anchor"] == "free"
+    assert bare["position"] == pytest.approx(without.y[-1].domain[0])
+    assert axis["anchor"] == f"y{len(full.y)}"

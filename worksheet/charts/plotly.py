@@ -178,7 +178,7 @@ def _layout(chart: Chart, places: dict[str, str], theme: str) -> dict[str, Any]:
         "hoverlabel": {"bgcolor": colour("paper", theme), "bordercolor": colour("soft", theme)},
         "dragmode": "zoom" if chart.clock else False,
         "barmode": "overlay",
-        "xaxis": _x_axis(chart, theme, list(places.values())[-1] if places else "y"),
+        "xaxis": _x_axis(chart, theme) | _x_place(chart, places),
         "annotations": _annotations(chart, places, theme),
         "shapes": _shapes(chart, places, theme),
     }
@@ -203,7 +203,14 @@ def _legends(chart: Chart, places: dict[str, str]) -> dict[str, Any]:
     return {places[axis.key].replace("y", "legend"): beside | {"y": round(axis.domain[1], 6)} for axis in chart.y}
 
 
-def _x_axis(chart: Chart, theme: str, anchor: str) -> dict[str, Any]:
+def _x_place(chart: Chart, places: dict[str, str]) -> dict[str, Any]:
+    """Under the last panel. Without a line there, its axis is none to Plotly, which would go to the first panel."""
+    if chart.y and not any(series.axis == chart.y[-1].key for series in chart.series):
+        return {"anchor": "free", "position": round(chart.y[-1].domain[0], 6)}
+    return {"anchor": list(places.values())[-1] if places else "y"}
+
+
+def _x_axis(chart: Chart, theme: str) -> dict[str, Any]:
     axis = {
         "title": {"text": chart.x.title, "standoff": 8},
         "range": [round(chart.x.low, 6), round(chart.x.high, 6)],
@@ -214,7 +221,6 @@ def _x_axis(chart: Chart, theme: str, anchor: str) -> dict[str, Any]:
         "zeroline": False,
         "ticklabeloverflow": "allow",
         "tickangle": 0,
-        "anchor": anchor,
         "fixedrange": chart.clock is None,
     }
     if chart.clock or chart.x_words:
