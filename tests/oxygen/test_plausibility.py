@@ -12,7 +12,7 @@ from worksheet.oxygen.plausibility import check_value, findings, without_impossi
 from worksheet.oxygen.quantities import CATALOGUE, MEASURED
 from worksheet.oxygen.readings import Device, Event, Readings, Site
 
-from .builders import codes, readings
+from .builders import codes, readings, snapshots
 
 MIXED = Site.MIXED_VENOUS
 GAS = {"ph": 7.40, "pco2": 40.0, "po2": 90.0}
@@ -58,6 +58,7 @@ CASES = {
         [GAS | {"o2hb": 0.72, "cohb": 0.01, "methb": 0.25, "spo2": 0.86}], [GAS | CO_OXIMETRY | {"spo2": 0.86}],
     ),
     "gap-send-co-oximetry": ([GAS | {"spo2": 0.85}], [GAS | {"spo2": 0.93}]),
+    "gap-beyond-methb": ([GAS | {"spo2": 0.68}], [GAS | {"spo2": 0.85}]),
     "cohb-hidden": ([GAS | {"cohb": 0.20, "spo2": 0.97}], [GAS | {"cohb": 0.04, "spo2": 0.97}]),
     "hypoxaemia-agreed": (
         [GAS | {"po2": 50.0, "so2": 0.84, "spo2": 0.85}], [GAS | {"po2": 62.0, "so2": 0.91, "spo2": 0.89}],
@@ -123,6 +124,17 @@ def test_a_near_miss_does_not(code):
 )
 def test_what_is_no_reason_to_ask(code, rows):
     assert code not in codes(*rows)
+
+
+def test_a_methb_that_would_explain_is_told_in_whole_percent_or_not_at_all():
+    """Barker, Tremper & Hyatt 1989: a MetHb of 35 % reads about 85 %; nothing of MetHb alone reads 68 %."""
+    table = snapshots(GAS | {"spo2": 0.85}, GAS | {"spo2": 0.68, "stay": 2})
+    found = findings(table, derive(table))
+    told = [next(f for f in found.of_row(row) if f.code.startswith("gap-")) for row in (0, 1)]
+    assert re.search(r"a MetHb of about \d\d % would", told[0].sentence)
+    assert told[1].code == "gap-beyond-methb"
+    assert "no share of MetHb alone would explain it" in told[1].sentence
+    assert "not measured" not in told[0].sentence + told[1].sentence
 
 
 def test_a_clean_pair_has_no_finding_at_all():

@@ -126,8 +126,12 @@ _GAPS = (
           "Repeat co-oximetry; content uses O2Hb.", "Barker, Tremper & Hyatt 1989"),
     _kind("gap-send-co-oximetry", _U,
           "SpO2 {spo2} is below the calculated {calculated} and there is no co-oximetry: a false reading, or for "
-          "example a MetHb of {methb} would explain it.",
+          "example a MetHb of about {methb} % would explain it.",
           _CO_OXIMETRY.capitalize() + ".", "Zijlstra 2000; Barker, Tremper & Hyatt 1989"),
+    _kind("gap-beyond-methb", _U,
+          "SpO2 {spo2} is below the calculated {calculated}, there is no co-oximetry, and no share of MetHb alone "
+          "would explain it: a false reading, SulfHb, or a sample that is not of the same blood and time.",
+          "Move or change the probe; " + _CO_OXIMETRY + ".", "Zijlstra 2000; Barker, Tremper & Hyatt 1989"),
     _kind("cohb-hidden", _U,
           "COHb {cohb}: SpO2, PaO2 and a calculated saturation all miss it. Content uses O2Hb.",
           "Repeat co-oximetry; look for the source.", "Barker & Tremper 1987"),

@@ -48,9 +48,24 @@ def _gap_dyshaemoglobin(case: Case) -> Hit:
 @rule("gap-send-co-oximetry")
 def _gap_send_co_oximetry(case: Case) -> Hit:
     """The same gap with MetHb not measured; the MetHb that would explain it is stated, never concluded."""
-    methb = oximetry.methb_explaining(case.known("spo2"), either(case.so2(), case.calculated()))
-    where = _gap(case) & np.isnan(case.known("methb")) & ~RULES["arterial-looks-venous"](case).where
-    return Hit(where, _gap_numbers(case) | {"methb": ("methb", methb)})
+    methb = _explaining(case)
+    return Hit(_unexplained(case) & ~np.isnan(methb), _gap_numbers(case) | {"methb": ("", 100.0 * methb)})
+
+
+@rule("gap-beyond-methb")
+def _gap_beyond_methb(case: Case) -> Hit:
+    """The same where no share of MetHb gives so low a reading: a probe that sees MetHb alone shows about 85 %."""
+    return Hit(_unexplained(case) & np.isnan(_explaining(case)), _gap_numbers(case))
+
+
+def _unexplained(case: Case) -> Bools:
+    """A gap with MetHb not measured, in a sample that does not look venous."""
+    venous = RULES["arterial-looks-venous"](case).where
+    return np.asarray(_gap(case) & np.isnan(case.known("methb")) & ~venous)
+
+
+def _explaining(case: Case) -> Floats:
+    return oximetry.methb_explaining(case.known("spo2"), either(case.so2(), case.calculated()))
 
 
 @rule("cohb-hidden")

@@ -29,8 +29,9 @@ _WORDS = {
     "so2_from_po2": "by the curve, from this PO2, pH and PCO2",
 }
 _ABOUT = (  # codes of findings that speak of saturations
-    "gap-reading-false", "gap-dyshaemoglobin", "gap-send-co-oximetry", "cohb-hidden", "hypoxaemia-agreed",
-    "hypoxaemia-occult", "so2-against-curve", "arterial-looks-venous", "calculated-as-measured", "fractions-do-not-add",
+    "gap-reading-false", "gap-dyshaemoglobin", "gap-send-co-oximetry", "gap-beyond-methb", "cohb-hidden",
+    "hypoxaemia-agreed", "hypoxaemia-occult", "so2-against-curve", "arterial-looks-venous", "calculated-as-measured",
+    "fractions-do-not-add",
 )  # fmt: skip
 
 
