@@ -246,6 +246,6 @@ def test_a_value_that_is_not_of_the_newest_gas_says_when_it_was_and_another_day_
         add_gas(stay, nurse, 26, hb=8.0)
         add_gas(stay, nurse, 0.5, hb=None if stay is bare else 6.0)
     text = page(client, unit, "?window=48")
-    assert re.search(r'<strong class="ask">of \d\d \w{3} \d\d:\d\d</strong>', bed(text, "W-01"))
-    assert '<strong class="ask">of ' not in bed(text, "W-02")
+    assert re.search(r'<b class="ask">of \d\d \w{3} \d\d:\d\d</b>', bed(text, "W-01"))
+    assert '<b class="ask">of ' not in bed(text, "W-02")
     assert re.search(r"since \d\d \w{3} \d\d:\d\d<", bed(text, "W-02"))
