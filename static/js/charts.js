@@ -84,7 +84,10 @@
       return whole && all.length <= most ? all : timeTicks(figure.clock, range[0], range[1], most);
     }
     const widest = Math.max(1, ...own.ticktext.map((text) => text.length)) * LETTER_PX + 12;
-    const every = Math.ceil((all.length * widest) / length);
+    // By the room between two of them: few bars stand close together on an axis that is made for more.
+    const span = Math.abs(range[1] - range[0]);
+    const gap = all.length > 1 ? (Math.abs(all.at(-1)[0] - all[0][0]) / (all.length - 1) / span) * length : length;
+    const every = Math.max(1, Math.ceil(widest / gap));
     return all.filter((_, i) => (all.length - 1 - i) % every === 0);
   }
 
