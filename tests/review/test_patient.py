@@ -10,7 +10,9 @@ from django.urls import reverse
 
 from tests.review.wards import add_gas, counted, fill, make_stay, make_unit, make_user
 from worksheet.oxygen.readings import Event, Site
+from worksheet.review.words import plus_minus
 from worksheet.ward import record
+from worksheet.ward.display import Display
 from worksheet.ward.models import AuditEvent, ReviewMark, Role, Stay
 
 pytestmark = pytest.mark.django_db
@@ -94,6 +96,22 @@ def test_a_probes_prediction_only_where_there_are_dyshaemoglobins(ward, blood, w
     part = text[text.index("Saturations reconciled") : text.index("What to measure next")]
     assert ("two-wavelength" in part) == (words is not None)
     assert words is None or re.search(words, part)
+
+
+def test_a_gas_in_doubt_is_told_before_the_verdict(ward):
+    unit, nurse, client = ward
+    stay = make_stay(unit, 1)
+    add_gas(stay, nurse, 10, po2=39.0, so2=0.71, pco2=47.0, ph=7.33, spo2=None)
+    add_gas(stay, nurse, 0.5)
+    text = page(client, stay, "?window=12")
+    assert text.index("with which the comparison starts, is in doubt (it looks venous)") < text.index("Delivery rose")
+
+
+def test_the_headline_has_the_number_of_every_table(ward):
+    """485 ± 110, not 480: only the half width is told in two figures."""
+    unit, nurse, _client = ward
+    display = Display.of(nurse, unit)
+    assert plus_minus(display, "do2i", 485.0, 56.0) == f"{display.value('do2i', 485.0)} ± 110" == "485 ± 110"
 
 
 def test_carried_values_are_marked_with_their_age(ward):

@@ -71,6 +71,11 @@ class Story:
 
     row: BedRow
 
+    @property
+    def telling(self) -> words.Telling:
+        """How the engine's sentences say numbers and times."""
+        return words.Telling(self.row.display, self.row.window.until)
+
     @cached_property
     def verdict(self) -> Verdict | None:
         """The verdict of the window; None without an entry."""
@@ -78,7 +83,14 @@ class Story:
         if row.place < 0:
             return None
         return made_verdict(
-            sheet.snapshots, sheet.derived, row.review, row.stay.pk, sheet.constants, sheet.settings, row.display
+            sheet.snapshots,
+            sheet.derived,
+            row.review,
+            row.stay.pk,
+            sheet.constants,
+            sheet.settings,
+            self.telling,
+            sheet.findings,
         )
 
     @property
@@ -147,7 +159,7 @@ class Story:
             return None
         start = int(row.review.ledger.start_row[row.place]) if row.level else None
         return made_levers(
-            sheet.snapshots, sheet.derived, row.last, sheet.constants, start_row=start, speech=row.display
+            sheet.snapshots, sheet.derived, row.last, sheet.constants, start_row=start, speech=self.telling
         )
 
     @property

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import math
+from dataclasses import dataclass
+from datetime import datetime
 
 from worksheet.oxygen.readings import Site
 from worksheet.oxygen.trend import LactateTrend
@@ -32,7 +34,8 @@ def plus_minus(
     if not math.isfinite(half) or half <= 0:
         return display.value(name, value, signed=signed).replace("±", "") + tail
     decimals = supported(half, display.decimals(name))
-    return f"{rounded(display, number, decimals, signed)} ± {rounded(display, half, decimals)}{tail}"
+    # the value as everywhere else on the page; only its half width in two figures
+    return f"{rounded(display, number, max(0, decimals), signed)} ± {rounded(display, half, decimals)}{tail}"
 
 
 def supported(half: float, most: int) -> int:
@@ -61,8 +64,10 @@ def lactate_course(trend: LactateTrend, display: Display) -> str:
         if trend.time > SLOW:
             return f"{trend.kind} slowly"
         verb = "halving" if trend.kind == "falling" else "doubling"
-        low, high = (hours(display, t) for t in (trend.time_low, trend.time_high))
-        return f"{verb} in {hours(display, trend.time)} h ({low}–{high})"
+        low = hours(display, trend.time_low)
+        if trend.time_high > 2 * SLOW:
+            return f"{verb} in {hours(display, trend.time)} h (at least {low})"
+        return f"{verb} in {hours(display, trend.time)} h ({low}–{hours(display, trend.time_high)})"
     if trend.kind == "change":
         beyond = "beyond noise" if trend.beyond_noise else "within noise"
         return f"{percent(display, -trend.decrease)} in {age_words(trend.hours)}, {beyond}"
@@ -71,3 +76,25 @@ def lactate_course(trend: LactateTrend, display: Display) -> str:
     if trend.kind == "unclear":
         return "no clear course"
     return "" if trend.reason in ("no lactate", "a single lactate") else f"no course: {trend.reason}"
+
+
+@dataclass(frozen=True)
+class Telling:
+    """How sentences of the engine say numbers and times here: no sign before zero, the day where it is another one."""
+
+    display: Display
+    until: datetime
+
+    def value(self, name: str, canonical: float | None, signed: bool = False, with_unit: bool = False) -> str:
+        """A value in the reader's unit."""
+        return self.display.value(name, canonical, signed, with_unit).replace("±", "")
+
+    def number(self, value: float, decimals: int, signed: bool = False) -> str:
+        """A number with the reader's decimal sign."""
+        return self.display.number(value, decimals, signed).replace("±", "")
+
+    def clock(self, moment: float) -> str:
+        """A time of day."""
+        when = self.display.local(moment)
+        same = when.date() == self.display.local(self.until).date()
+        return f"{when:%H:%M}" if same else f"{when:%d %b %H:%M}"
