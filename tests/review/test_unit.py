@@ -249,3 +249,14 @@ def test_a_value_that_is_not_of_the_newest_gas_says_when_it_was_and_another_day_
     assert re.search(r'<b class="ask">of \d\d \w{3} \d\d:\d\d</b>', bed(text, "W-01"))
     assert '<b class="ask">of ' not in bed(text, "W-02")
     assert re.search(r"since \d\d \w{3} \d\d:\d\d<", bed(text, "W-02"))
+
+
+def test_the_count_says_that_a_failed_step_counts_too(ward):
+    """A step that failed beyond noise while delivery is within: counted, and the count says so."""
+    unit, nurse, client = ward
+    stay = make_stay(unit, 1)
+    add_gas(stay, nurse, 10)
+    add_gas(stay, nurse, 0.5, hb=9.3)
+    text = page(client, unit, "?window=12")
+    assert "within noise" in bed(text, "W-01")
+    assert re.search(r"1 worse beyond noise</strong> \(supply, or a step of it\)", text)

@@ -5,7 +5,8 @@ References
 .. [1] Theil H. A rank-invariant method of linear and polynomial regression analysis. Proc K Ned Akad Wet 1950;53.
 .. [2] Sen PK. Estimates of the regression coefficient based on Kendall's tau. J Am Stat Assoc 1968;63:1379-1389.
 .. [3] Hollander M, Wolfe DA. Nonparametric statistical methods. Wiley (the interval by Kendall's exact distribution).
-.. [4] Hudson DJ. Fitting segmented curves whose join points have to be estimated. J Am Stat Assoc 1966;61:1097-1129.
+.. [4] Hudson DJ. Fitting segmented curves whose join points have to be estimated. J Am Stat Assoc 1966;61:1097-1129
+   (from memory).
 """
 
 from __future__ import annotations

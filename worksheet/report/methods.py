@@ -52,7 +52,9 @@ METHODS = (
     "function its dyshaemoglobins, the shift of its curve and what was measured beyond the curve; flow cardiac output "
     "or index.",
     "Uncertainty: first order (JCGM 100:2008) from the standard uncertainties of each measurement; a carried value "
-    "grows more uncertain with its age. Bands and ± are 95 %. Lactate: fitted on its logarithm.",
+    "grows more uncertain with its age. Bands and ± are 95 %. Lactate: fitted on its "
+    "logarithm, from its last turn on (two joined lines, Hudson 1966). Extraction from central venous blood: ± leaves "
+    "out how far it stands from mixed venous blood.",
 )
 CAUTIONS = (
     "For use by clinicians who check each number against its source; local protocols and licensed practice decide.",

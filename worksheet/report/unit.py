@@ -59,7 +59,9 @@ def unit_review(unit: Unit, window: Window, display: Display, printed_by: str) -
 def _counts(rows: list[BedRow]) -> str:
     worse, stale = sum(row.worse for row in rows), sum(row.stale for row in rows)
     odd = sum(row.contradictory for row in rows)
-    return f"{len(rows)} beds · {worse} worse beyond noise · {stale} stale · {odd} contradictory"
+    return (
+        f"{len(rows)} beds · {worse} worse beyond noise (supply, or a step of it) · {stale} stale · {odd} contradictory"
+    )
 
 
 def _row(row: BedRow, display: Display) -> list[Any]:

@@ -12,6 +12,8 @@ _CONTENT = (
     (Flag.HB_CARRIED, "haemoglobin carried from an earlier sample"),
     (Flag.DISSOLVED_NOT_COUNTED, "no PO2: dissolved oxygen is not counted"),
 )
+# Chawla 2004, Chest 126:1891: 5.2 points, SD 5.1; Varpula 2006, Intensive Care Med 32:1336: 4.2, SD 6.3 (pages and the
+# second from memory)
 _CENTRAL = (
     "central venous blood, an estimate of mixed venous: ± leaves out how far the two stand apart; in the ill the "
     "central saturation read 4 to 5 points higher, SD 5 to 6 (Chawla 2004; Varpula 2006)"
