@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 from django.db.models import OuterRef, Subquery
 from django.http import Http404, HttpRequest
 
@@ -21,12 +23,12 @@ def with_reviews(stays: StayQuerySet, user: User) -> StayQuerySet:
     )
 
 
-def present(unit: Unit, user: User) -> list[Stay]:
+def present(unit: Unit, user: User) -> list[Any]:
     """The stays of a unit that this person may see, in the order of the round."""
     return present_at(unit.slug, user, unit)
 
 
-def present_at(slug: str, user: User, unit: Unit | None = None) -> list[Stay]:
+def present_at(slug: str, user: User, unit: Unit | None = None) -> list[Any]:
     """The same by the unit's short name, the unit read along with them: one query for all."""
     own = Stay.objects.visible_to(user).filter(unit__slug=slug).present().in_bed_order()
     newest = Entry.objects.order_by("-pk").values("pk")[:1]

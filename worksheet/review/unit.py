@@ -10,9 +10,9 @@ from django.shortcuts import render
 from django.utils.cache import patch_vary_headers
 
 from worksheet.oxygen.ledger_table import STEPS
-from worksheet.ward.access import person, unit_or_404
+from worksheet.ward.access import person, role_in, unit_or_404
 from worksheet.ward.display import Display
-from worksheet.ward.models import Stay, Unit
+from worksheet.ward.models import Role, Stay, Unit
 from worksheet.ward.sheet import Sheet, open_sheet
 
 from .beds import STALE_HOURS, BedRow, bed_rows
@@ -32,7 +32,11 @@ def unit_review(request: HttpRequest, slug: str) -> HttpResponse:
         return HttpResponseNotModified(headers={"ETag": mark})
     rows = bed_rows(open_sheet(unit, stays, entries_in_reach(unit, [s.pk for s in stays], window)), window, display)
     template = "review/_beds.html" if live else "review/unit.html"
-    response = render(request, template, _context(unit, window, rows, request.GET.get("step", ""), mark, display))
+    role = Role.LEAD if user.is_superuser else stays[0].my_role if stays else role_in(user, unit)
+    about = {"may_record": (role or 0) >= Role.RECORDER, "leads": role == Role.LEAD}
+    response = render(
+        request, template, about | _context(unit, window, rows, request.GET.get("step", ""), mark, display)
+    )
     response.headers["ETag"] = mark
     patch_vary_headers(response, ["HX-Request"])
     return response
@@ -54,7 +58,7 @@ def _context(unit: Unit, window: Window, rows: list[BedRow], step: str, mark: st
 
 def _local(moment: datetime, display: Display) -> str:
     """A moment as a date-and-time field takes it."""
-    return f"{display.local(moment):%Y-%m-%dT%H:%M}"
+    return f"{display.local(moment):%Y-%m-%d %H:%M}"
 
 
 def counts(rows: list[BedRow]) -> dict[str, int]:
