@@ -68,3 +68,11 @@ def _emptying_between_tests():
     patch.setattr(operations, "execute_sql_flush", emptied)
     yield
     patch.undo()
+
+
+@pytest.fixture(autouse=True)
+def _nothing_drawn_for_another_test():
+    """Rows are kept under a mark of numbers that a rolled-back database gives again to the next test."""
+    from worksheet.review import live
+
+    live._drawn.clear()

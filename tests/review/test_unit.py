@@ -260,3 +260,16 @@ def test_the_count_says_that_a_failed_step_counts_too(ward):
     text = page(client, unit, "?window=12")
     assert "within noise" in bed(text, "W-01")
     assert re.search(r"1 worse beyond noise</strong> \(supply, or a step of it\)", text)
+
+
+def test_rows_are_drawn_once_for_all_who_watch():
+    from worksheet.review import live
+
+    calls = []
+    assert live.drawn("a", lambda: calls.append(1) or b"rows") == b"rows"
+    assert live.drawn("a", lambda: calls.append(1) or b"other") == b"rows"
+    assert live.drawn("b", lambda: calls.append(1) or b"other") == b"other"
+    assert len(calls) == 2
+    for number in range(200):
+        live.drawn(f"mark-{number}", lambda: b"")
+    assert len(live._drawn) <= 64

@@ -7,16 +7,17 @@ from typing import Any
 
 from django.http import HttpRequest, HttpResponse, HttpResponseNotModified
 from django.shortcuts import render
+from django.template.loader import render_to_string
 from django.utils.cache import patch_vary_headers
 
 from worksheet.oxygen.ledger_table import STEPS
 from worksheet.ward.access import person, role_in, unit_or_404
 from worksheet.ward.display import Display
-from worksheet.ward.models import Role, Stay, Unit
+from worksheet.ward.models import Role, Stay, Unit, User
 from worksheet.ward.sheet import Sheet, open_sheet
 
 from .beds import STALE_HOURS, BedRow, bed_rows
-from .live import mark_of
+from .live import drawn, mark_of
 from .reach import entries_in_reach
 from .stays_here import present
 from .window import HOURS, Window, window_of
@@ -30,16 +31,25 @@ def unit_review(request: HttpRequest, slug: str) -> HttpResponse:
     live = bool(getattr(request, "htmx", False))
     if live and request.headers.get("If-None-Match") == mark:
         return HttpResponseNotModified(headers={"ETag": mark})
-    rows = bed_rows(open_sheet(unit, stays, entries_in_reach(unit, [s.pk for s in stays], window)), window, display)
-    template = "review/_beds.html" if live else "review/unit.html"
-    role = Role.LEAD if user.is_superuser else stays[0].my_role if stays else role_in(user, unit)
-    about = {"may_record": (role or 0) >= Role.RECORDER, "leads": role == Role.LEAD}
-    response = render(
-        request, template, about | _context(unit, window, rows, request.GET.get("step", ""), mark, display)
-    )
+
+    def context() -> dict[str, Any]:
+        sheet = open_sheet(unit, stays, entries_in_reach(unit, [s.pk for s in stays], window))
+        return _context(unit, window, bed_rows(sheet, window, display), request.GET.get("step", ""), mark, display)
+
+    if live:
+        rows = drawn(mark, lambda: render_to_string("review/_beds.html", context()).encode())
+        response = HttpResponse(rows)
+    else:
+        response = render(request, "review/unit.html", _rights(user, unit, stays) | context())
     response.headers["ETag"] = mark
     patch_vary_headers(response, ["HX-Request"])
     return response
+
+
+def _rights(user: User, unit: Unit, stays: list[Any]) -> dict[str, bool]:
+    """What of the page's links this person may use."""
+    role = Role.LEAD if user.is_superuser else stays[0].my_role if stays else role_in(user, unit)
+    return {"may_record": (role or 0) >= Role.RECORDER, "leads": role == Role.LEAD}
 
 
 def _context(unit: Unit, window: Window, rows: list[BedRow], step: str, mark: str, display: Display) -> dict[str, Any]:

@@ -81,6 +81,7 @@ def record(stay: Stay, user: User, new: NewEntry) -> tuple[Entry, bool]:
 
 def _insert(stay: Stay, user: User, new: NewEntry) -> tuple[Entry, bool]:
     with transaction.atomic():
+        audit.one_at_a_time()  # entries get their numbers in the order in which they are committed
         known = Entry.objects.filter(key=new.key).first()
         if known:
             return known, False
@@ -113,6 +114,7 @@ def _replace(entry: Entry, user: User, new: NewEntry, reason: str, *, struck: bo
         raise ValueError("A reason is needed.")
     try:
         with transaction.atomic():
+            audit.one_at_a_time()
             known = Entry.objects.filter(key=new.key).first()
             if known:
                 return known
