@@ -238,3 +238,22 @@ def test_nothing_typed_runs_as_markup(ward):
     raw = client.get(reverse("patient", args=[unit.slug, stay.reference]) + "?window=6").content.decode()
     assert "<img src=x" not in raw
     assert "<script>alert" not in raw
+
+
+def test_levers_say_that_a_transfusion_came_after_the_gas(client, db):
+    from datetime import timedelta
+
+    from django.utils import timezone
+
+    from worksheet.oxygen.readings import Event
+    from worksheet.ward import demo, record
+    from worksheet.ward.models import Stay, User
+
+    demo.make(timezone.now(), "invented-password-1")
+    nurse, stay = User.objects.get(username="nurse"), Stay.objects.get(reference="K-2041")
+    client.force_login(nurse)
+    assert "came after this gas" not in client.get("/u/demo/stay/K-2041/?window=12").content.decode()
+    new = record.NewEntry(timezone.now() - timedelta(minutes=2), event=Event.TRANSFUSION, event_amount=1)
+    record.record(stay, nurse, new)
+    levers = client.get("/u/demo/stay/K-2041/?window=12").content.decode().split('id="levers-title"')[1]
+    assert "came after this gas" in levers.split("</section>")[0]
