@@ -147,7 +147,7 @@ def use_is_worse(snapshots: Snapshots, derived: Derived, ledger: Ledger, setting
     Returns
     -------
     ndarray of bool
-        For each comparison; False where neither is known at both ends.
+        For each comparison; False where neither is known at both ends [bool].
     """
     there = np.flatnonzero(ledger.level > Level.NONE)
     worse = np.zeros(len(ledger), dtype=np.bool_)
@@ -176,7 +176,8 @@ def limiting_steps(snapshots: Snapshots, derived: Derived, ledger: Ledger, setti
     Returns
     -------
     ndarray of str
-        ``lung``, ``haemoglobin``, ``function``, ``flow``, ``none``, ``undetermined``; empty without a comparison.
+        ``lung``, ``haemoglobin``, ``function``, ``flow``, ``none``, ``undetermined``; empty without a
+        comparison [word].
     """
     return judge(snapshots, derived, ledger, settings).step
 
@@ -196,7 +197,7 @@ def judge(snapshots: Snapshots, derived: Derived, ledger: Ledger, settings: Unce
     Returns
     -------
     Judgement
-        One row for each comparison.
+        One row for each comparison [share of the supply at the start].
     """
     part, sd = relative_parts(ledger)
     return conclude(part, sd, np.isnan(part["flow"]) & use_is_worse(snapshots, derived, ledger, settings))

@@ -110,7 +110,7 @@ def consecutive(
     Returns
     -------
     Ledger
-        Row i belongs to snapshot i; NaN for rows that are not arterial or have none before them.
+        Row i belongs to snapshot i; NaN for rows that are not arterial or have none before them [unit of the level].
     """
     return between(snapshots, derived, snapshots.previous, np.arange(len(snapshots)), constants, settings)
 

@@ -770,10 +770,22 @@ WITH_SD: tuple[str, ...] = ("cao2", "do2", "do2i", "o2er", "pf_ratio", "shunt_fr
 
 
 def measured() -> Iterator[Quantity]:
-    """The measured quantities in the order of a gas slip."""
+    """The measured quantities in the order of a gas slip.
+
+    Returns
+    -------
+    iterator of Quantity
+        Catalogue rows of what is measured [each its canonical unit].
+    """
     return iter(_MEASURED)
 
 
 def derived() -> Iterator[Quantity]:
-    """The derived quantities in the order of the batch contract."""
+    """The derived quantities in the order of the batch contract.
+
+    Returns
+    -------
+    iterator of Quantity
+        Catalogue rows of what is derived [each its canonical unit].
+    """
     return iter(_DERIVED)

@@ -220,7 +220,7 @@ def budget(snapshots: Snapshots, derived: Derived, constants: Constants, setting
     Returns
     -------
     Budget
-        Derivatives and standard uncertainties.
+        Derivatives and standard uncertainties [canonical units].
     """
     rows = row_factors(snapshots, derived)
     slopes = Slopes.of(snapshots, rows, derived, constants)
