@@ -20,7 +20,7 @@ from dataclasses import dataclass, field
 from hashlib import blake2b
 from importlib import import_module
 from multiprocessing import get_context
-from signal import SIGTERM, default_int_handler, signal
+from signal import SIGINT, SIGTERM, default_int_handler, signal
 from threading import current_thread, main_thread
 from typing import BinaryIO
 
@@ -118,6 +118,23 @@ def _stopping_clears_up() -> Iterator[None]:
         yield
     finally:
         signal(SIGTERM, before)
+
+
+@contextmanager
+def _held() -> Iterator[None]:
+    """Hold a request to stop while a worker is started: one that is left half-started would complain on its own."""
+    if current_thread() is not main_thread():
+        yield
+        return
+    asked: list[int] = []
+    before = {number: signal(number, lambda got, _: asked.append(got)) for number in (SIGINT, SIGTERM)}
+    try:
+        yield
+    finally:
+        for number, handler in before.items():
+            signal(number, handler)
+    if asked:
+        raise KeyboardInterrupt
 
 
 @dataclass
@@ -233,7 +250,8 @@ def _in_order(pool: Executor | None, header: Header, work: Iterable[Piece]) -> I
         return
     waiting: deque[Future[Derivation | BatchError]] = deque()
     for piece in work:
-        waiting.append(pool.submit(attempt, header, piece))
+        with _held():
+            waiting.append(pool.submit(attempt, header, piece))
         if len(waiting) > 4:
             yield waiting.popleft().result()
     while waiting:
