@@ -6,6 +6,7 @@ import random
 import statistics
 import time
 import urllib.parse
+import uuid
 from datetime import UTC, datetime, timedelta
 
 import pytest
@@ -13,6 +14,7 @@ import pytest
 from tests.serving import Person, Server, Site
 
 VIEWERS, RECORDERS, SECONDS = 200, 20, 60
+RUN = uuid.uuid4().hex[:8]  # the PostgreSQL of the environment may remember an earlier run
 EVERY, PAUSE = 5.0, 30.0  # s between polls; s that a slip takes to type
 pytestmark = [pytest.mark.bench, pytest.mark.slow]
 
@@ -64,7 +66,7 @@ async def type_slips(wire, person, until, times, statuses, number):
     count = 0
     while time.monotonic() < until:
         at = datetime.now(UTC) - timedelta(minutes=1)
-        fields = {"date": f"{at:%Y-%m-%d}", "clock": f"{at:%H:%M}", "site": "0", "key": f"load-{number}-{count}",
+        fields = {"date": f"{at:%Y-%m-%d}", "clock": f"{at:%H:%M}", "site": "0", "key": f"load-{RUN}-{number}-{count}",
                   "begun_by": "nurse", "spo2": "96", "heart_rate": "88", "mean_arterial_pressure": "74",
                   "csrfmiddlewaretoken": person.token}  # fmt: skip
         path = "/u/demo/stay/K-2080/entry/new"
